@@ -125,8 +125,9 @@ func (l Line) Fixed() bool {
 }
 
 // Trace is the published description of one trace: centre line, sigma of the plotted statistic and lines, all at the
-// nominal subgroup size and rounded to the published decimals where those are set. Centre and Sigma are nil where a
-// trace has only fixed lines.
+// nominal subgroup size. Centre and lines are rounded to the published decimals where those are set. Sigma follows from
+// the published process sigma and is not rounded again, so that the lines can be drawn anew from centre and sigma.
+// Centre and Sigma are nil where a trace has only fixed lines.
 type Trace struct {
 	Centre       *float64 `json:"centre"`
 	Sigma        *float64 `json:"sigma"`

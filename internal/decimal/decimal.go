@@ -33,6 +33,11 @@ func Round(x float64, places int) float64 {
 	if r, ok := quick(x, math.Abs(x)*ulp, places); ok {
 		return r
 	}
+	if w, scale, ok := wholeOf(x, 0); ok {
+		if r, ok := wholeRatio(w, scale, 1, places); ok {
+			return r
+		}
+	}
 	return exact(x).round(places)
 }
 
@@ -50,6 +55,11 @@ func Mean(xs []float64, places int) float64 {
 	if r, ok := quick(sum/n, size*ulp*2, places); ok {
 		return r
 	}
+	if w, scale, ok := wholeSum(xs); ok {
+		if r, ok := wholeRatio(w, scale, int64(len(xs)), places); ok {
+			return r
+		}
+	}
 	total := exact(xs[0])
 	for _, x := range xs[1:] {
 		total = total.add(exact(x))
@@ -61,6 +71,12 @@ func Mean(xs []float64, places int) float64 {
 func Difference(a, b float64, places int) float64 {
 	if r, ok := quick(a-b, (math.Abs(a)+math.Abs(b))*ulp, places); ok {
 		return r
+	}
+	terms := [2]float64{a, -b}
+	if w, scale, ok := wholeSum(terms[:]); ok {
+		if r, ok := wholeRatio(w, scale, 1, places); ok {
+			return r
+		}
 	}
 	return exact(a).add(exact(-b)).round(places)
 }

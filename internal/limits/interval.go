@@ -1,0 +1,93 @@
+package limits
+
+import (
+	"math"
+
+	"gonum.org/v1/gonum/stat/distuv"
+
+	"limitary/internal/chart"
+)
+
+// Confidence is the level of every interval.
+const Confidence = 0.95
+
+// Interval is a two-sided confidence interval, unrounded.
+type Interval struct{ Lower, Upper float64 }
+
+// Intervals tell how far the figures of a result are known from its basis, if readings are independent and normal with
+// one mean and one sigma. Where subgroup means vary more than the scatter within explains, the intervals of the location
+// trace are too narrow. A figure that is given, fixed or absent has none.
+type Intervals struct {
+	// Sigma is the process sigma: with ν effective degrees of freedom, σ̂·c4(ν+1)·√(ν/χ²) at both quantiles of χ².
+	Sigma *Interval
+	// Centre is the location centre: Student's t at ν degrees of freedom, or the normal quantile where sigma is given.
+	Centre *Interval
+	// LowerAction and UpperAction are the action lines by trace. Those of the location trace combine the two intervals
+	// above by the square-root rule of Donner and Zou (2012, Statistical Methods in Medical Research 21, 347-359; from
+	// memory), which keeps the skewness of sigma's. Those of the dispersion trace are multiples of sigma.
+	LowerAction, UpperAction [chart.Roles]*Interval
+}
+
+func (res *Result) intervals() Intervals {
+	var in Intervals
+	spread := distuv.UnitNormal.Quantile((1 + Confidence) / 2)
+	sigma := res.SigmaUnrounded
+	if e := res.chosen(); e != nil {
+		in.Sigma = chiInterval(e.Sigma, e.DegreesOfFreedom)
+		spread = distuv.StudentsT{Mu: 0, Sigma: 1, Nu: e.DegreesOfFreedom}.Quantile((1+Confidence)/2) * chiMean(e.DegreesOfFreedom)
+	}
+	if res.CentreOrigin == Estimated {
+		half := spread * sigma * res.standardError()
+		in.Centre = &Interval{res.CentreUnrounded - half, res.CentreUnrounded + half}
+	}
+	scale, _ := At(res.Kind, 1, res.SubgroupSize)
+	in.LowerAction[chart.Location] = in.line(res, res.Location.LowerAction, -chart.ActionMultiple*scale.LocationSigma)
+	in.UpperAction[chart.Location] = in.line(res, res.Location.UpperAction, chart.ActionMultiple*scale.LocationSigma)
+	reach := chart.ActionMultiple * scale.DispersionSigma
+	in.LowerAction[chart.Dispersion] = in.multiple(res.Dispersion.LowerAction, scale.DispersionCentre-reach)
+	in.UpperAction[chart.Dispersion] = in.multiple(res.Dispersion.UpperAction, scale.DispersionCentre+reach)
+	return in
+}
+
+func (res *Result) chosen() *Estimate {
+	for i := range res.Estimates {
+		if res.Estimates[i].Chosen {
+			return &res.Estimates[i]
+		}
+	}
+	return nil
+}
+
+// chiInterval turns an unbiased estimate back into the root of a mean square before it is set against χ².
+func chiInterval(sigma, freedom float64) *Interval {
+	root := sigma * chiMean(freedom) * math.Sqrt(freedom)
+	chi := distuv.ChiSquared{K: freedom}
+	tail := (1 - Confidence) / 2
+	return &Interval{root / math.Sqrt(chi.Quantile(1-tail)), root / math.Sqrt(chi.Quantile(tail))}
+}
+
+// line gives the interval of centre + z·sigma, z being in process sigmas.
+func (in *Intervals) line(res *Result, line chart.Line, z float64) *Interval {
+	if line.Basis != chart.SigmaMultiple || in.Centre == nil && in.Sigma == nil {
+		return nil
+	}
+	var centreDown, centreUp, sigmaDown, sigmaUp float64
+	if in.Centre != nil {
+		centreDown, centreUp = res.CentreUnrounded-in.Centre.Lower, in.Centre.Upper-res.CentreUnrounded
+	}
+	if in.Sigma != nil {
+		sigmaDown, sigmaUp = math.Abs(z)*(res.SigmaUnrounded-in.Sigma.Lower), math.Abs(z)*(in.Sigma.Upper-res.SigmaUnrounded)
+	}
+	if z < 0 { // a larger sigma lowers the line
+		sigmaDown, sigmaUp = sigmaUp, sigmaDown
+	}
+	at := res.CentreUnrounded + z*res.SigmaUnrounded
+	return &Interval{at - math.Hypot(centreDown, sigmaDown), at + math.Hypot(centreUp, sigmaUp)}
+}
+
+func (in *Intervals) multiple(line chart.Line, z float64) *Interval {
+	if line.Basis != chart.SigmaMultiple || in.Sigma == nil {
+		return nil
+	}
+	return &Interval{z * in.Sigma.Lower, z * in.Sigma.Upper}
+}
