@@ -1,0 +1,161 @@
+package store
+
+import (
+	"bytes"
+	"context"
+	"slices"
+
+	"github.com/jackc/pgx/v5"
+
+	"limitary/internal/track"
+)
+
+// begin opens the transaction, locks tracks and chains in the order of their ids, and only then reads: charts, clock,
+// what is stored under the rows' natural keys, and what lies just before the first new place of each track. All of it
+// travels in one batch; every statement sees what was committed before it began.
+func (p *posting) begin(ctx context.Context, conn *pgx.Conn) error {
+	trackIDs, lowest := p.lockOrder()
+	var chartIDs []int64
+	byID := map[int64]*postChart{}
+	for _, c := range p.charts {
+		chartIDs = append(chartIDs, c.ID)
+		byID[c.ID] = c
+	}
+	slices.Sort(chartIDs)
+	var b pgx.Batch
+	b.Queue(`BEGIN ISOLATION LEVEL READ COMMITTED`)
+	b.Queue(`SELECT track_id, results, open_signals, coalesce(occurrence, 0), hold_since, last_recorded_at
+		FROM tracks WHERE track_id = ANY($1) ORDER BY track_id FOR UPDATE`, trackIDs).Query(p.readTracks)
+	b.Queue(`SELECT chain_id, entry, hash FROM chain_heads WHERE chain_id = ANY($1) ORDER BY chain_id FOR UPDATE`, chartIDs).Query(func(rows pgx.Rows) error {
+		var id int64
+		var head chainHead
+		_, err := pgx.ForEachRow(rows, []any{&id, &head.entry, &head.hash}, func() error {
+			byID[id].head = chainHead{head.entry, bytes.Clone(head.hash)}
+			return nil
+		})
+		return err
+	})
+	b.Queue(`SELECT clock_timestamp()`).QueryRow(func(row pgx.Row) error { return row.Scan(&p.now) })
+	b.Queue(`SELECT chart_id, archived, labels, timeline FROM charts WHERE chart_id = ANY($1) ORDER BY chart_id`, chartIDs).Query(func(rows pgx.Rows) error {
+		for rows.Next() {
+			var id, timeline int64
+			var archived bool
+			var labels map[string]string
+			if err := rows.Scan(&id, &archived, &labels, &timeline); err != nil {
+				return err
+			}
+			byID[id].Archived, byID[id].Labels, byID[id].Timeline = archived, labels, timeline
+		}
+		return rows.Err()
+	})
+	p.queueStored(&b)
+	b.Queue(`SELECT nextval('result_ids') FROM generate_series(1, $1)`, len(p.results)).Query(func(rows pgx.Rows) (err error) {
+		p.ids, err = pgx.CollectRows(rows, pgx.RowTo[int64])
+		return err
+	})
+	p.queueNeighbours(&b, trackIDs, lowest)
+	return conn.SendBatch(ctx, &b).Close()
+}
+
+// lockOrder lists the tracks in the order they are locked, and the first place the post could take on each.
+func (p *posting) lockOrder() (ids []int64, lowest [][]byte) {
+	for id := range p.tracks {
+		ids = append(ids, id)
+	}
+	slices.Sort(ids)
+	for _, id := range ids {
+		lowest = append(lowest, p.tracks[id].lowest)
+	}
+	return ids, lowest
+}
+
+func (p *posting) readTracks(rows pgx.Rows) error {
+	for rows.Next() {
+		var id int64
+		var t Track
+		var hold, last nullableTime
+		if err := rows.Scan(&id, &t.Results, &t.OpenSignals, &t.Occurrence, &hold, &last); err != nil {
+			return err
+		}
+		into := p.tracks[id]
+		into.Results, into.OpenSignals, into.Occurrence = t.Results, t.OpenSignals, t.Occurrence
+		into.HoldSince, into.LastRecordedAt = hold.time(), last.time()
+	}
+	return rows.Err()
+}
+
+// queueStored asks for what is stored under the natural keys of the rows.
+func (p *posting) queueStored(b *pgx.Batch) {
+	p.stored = map[int]*storedRow{}
+	var at []int32
+	var charts []int64
+	var sources, ids []string
+	for i := range p.results {
+		if p.rows[i].Outcome == 0 {
+			at, charts = append(at, int32(i)), append(charts, p.charts[p.results[i].Chart].ID)
+			sources, ids = append(sources, p.results[i].Source), append(ids, p.results[i].SourceID)
+		}
+	}
+	b.Queue(`SELECT u.i, r.result_id, r.track_id, r.digest, coalesce(v.digest, r.digest), r.content, r.version, r.verdict, r.recorded_at,
+			p.version, p.verdict
+		FROM unnest($1::int[], $2::bigint[], $3::text[], $4::text[]) AS u (i, chart_id, source, source_id)
+		JOIN results r USING (chart_id, source, source_id)
+		JOIN places p ON p.chart_id = r.chart_id AND p.result_id = r.result_id
+		LEFT JOIN result_revisions v ON v.chart_id = r.chart_id AND v.result_id = r.result_id AND v.revision = p.revision`,
+		at, charts, sources, ids).Query(func(rows pgx.Rows) error {
+		for rows.Next() {
+			var i int
+			st := &storedRow{}
+			if err := rows.Scan(&i, &st.id, &st.trackID, &st.digest, &st.currentDigest, &st.content, &st.firstVersion, &st.firstVerdict,
+				&st.recordedAt, &st.version, &st.verdict); err != nil {
+				return err
+			}
+			p.stored[i] = st
+		}
+		return rows.Err()
+	})
+}
+
+// queueNeighbours asks, for each track, for the place just before the first new one and whether anything lies after it.
+func (p *posting) queueNeighbours(b *pgx.Batch, trackIDs []int64, lowest [][]byte) {
+	b.Queue(`SELECT u.track_id, p.order_key, p.result_id, p.revision, p.voided, p.version, p.point, p.verdict, p.state
+		FROM unnest($1::bigint[], $2::bytea[]) AS u (track_id, lowest)
+		CROSS JOIN LATERAL (SELECT * FROM places p WHERE p.track_id = u.track_id AND p.order_key < u.lowest ORDER BY p.order_key DESC LIMIT 1) p`,
+		trackIDs, lowest).Query(func(rows pgx.Rows) error {
+		for rows.Next() {
+			var id int64
+			it, err := scanPlace(prefixed{rows, &id})
+			if err != nil {
+				return err
+			}
+			p.tracks[id].before = it
+		}
+		return rows.Err()
+	})
+	b.Queue(`SELECT u.track_id FROM unnest($1::bigint[], $2::bytea[]) AS u (track_id, lowest)
+		WHERE NOT EXISTS (SELECT FROM places p WHERE p.track_id = u.track_id AND p.order_key >= u.lowest)`,
+		trackIDs, lowest).Query(func(rows pgx.Rows) error {
+		var id int64
+		_, err := pgx.ForEachRow(rows, []any{&id}, func() error {
+			p.tracks[id].tail = true
+			return nil
+		})
+		return err
+	})
+}
+
+// prefixed scans a leading column before those of a place.
+type prefixed struct {
+	pgx.Rows
+	id *int64
+}
+
+func (r prefixed) Scan(dest ...any) error { return r.Rows.Scan(append([]any{r.id}, dest...)...) }
+
+var _ pgx.CollectableRow = prefixed{}
+
+// neighbours is what a post already knows of the places around its first new one.
+type neighbours struct {
+	before *track.Item
+	tail   bool
+}
