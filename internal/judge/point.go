@@ -145,11 +145,21 @@ func (j *Judge) Judge(st *State, pt Point, v *Verdict) {
 		j.point(st, chart.Dispersion, x, scale, v)
 	}
 	st.prev, st.hasPrev = pt.Readings[0], true
-	if !v.Traces[chart.Location].Point && !v.Traces[chart.Dispersion].Point {
+	if !j.watched(v) {
 		v.Reason = TooFewReadings
 		return
 	}
 	j.conclude(v)
+}
+
+// watched reports whether a trace that has a point here has rules: where nothing looked, nothing is clear.
+func (j *Judge) watched(v *Verdict) bool {
+	for role, t := range v.Traces {
+		if t.Point && len(j.plans[role].Specs()) > 0 {
+			return true
+		}
+	}
+	return false
 }
 
 // Aside gives the verdict a repeat would have as the next point, and leaves the state as it is.

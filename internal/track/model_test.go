@@ -35,7 +35,9 @@ type model struct {
 	// agreed counts the regions of all operations that ended before their segment did.
 	agreed int
 	// checked has every region compared with the rules of identity.
-	checked  bool
+	checked bool
+	// watch, where set, is shown every region.
+	watch    func(*trackModel, stir, *track.Region)
 	problems []string
 }
 

@@ -47,8 +47,9 @@ type Removed struct {
 // Then it goes on until verdict and state agree with what is stored and no window can reach a changed item any more.
 func JudgeRegion(r *Runner, until []byte, next func() (*Item, error)) (*Region, error) {
 	reg := &Region{Resumed: r.last}
+	// since counts the points of a trace behind the latest one that differs, dirty is set where there is one.
 	var since [chart.Roles]int
-	dirty := [chart.Roles]bool{true, true}
+	var dirty [chart.Roles]bool
 	for {
 		it, err := next()
 		if err != nil || it == nil {
@@ -62,10 +63,13 @@ func JudgeRegion(r *Runner, until []byte, next func() (*Item, error)) (*Region, 
 		if err != nil {
 			return nil, err
 		}
+		if len(reg.Items) == 0 && !within && !it.Force {
+			dirty = [chart.Roles]bool{true, true} // what changed is that a result before this one left
+		}
 		reg.Items = append(reg.Items, j)
 		for role := range since {
-			switch {
-			case within || j.differs(chart.Role(role)):
+			switch role := chart.Role(role); {
+			case j.counts(role) && (within || j.differs(role)):
 				since[role], dirty[role] = 0, true
 			case j.Traces[role].Point && !it.Repeat:
 				since[role]++
@@ -102,6 +106,17 @@ func (j *Judged) differs(role chart.Role) bool {
 		return true
 	}
 	return j.was != nil && j.was.Traces[role] != j.Traces[role]
+}
+
+// counts reports whether the item is or was a point of a trace, which later hits could refer to.
+func (j *Judged) counts(role chart.Role) bool {
+	is := j.Traces[role].Point
+	was := is
+	if j.was != nil {
+		was = j.was.Traces[role].Point
+	}
+	s := j.Item.Stored
+	return is && !j.Item.Repeat || s != nil && was && !s.Repeat
 }
 
 // oldHits are the stored hits of the item.

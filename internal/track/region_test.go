@@ -59,11 +59,14 @@ func (m *model) judge(t *trackModel, st stir) {
 			return
 		}
 		m.judged += len(reg.Items)
-		m.changes = append(m.changes, changes...)
 		if reg.Agrees {
 			m.agreed++
 		}
+		if m.watch != nil {
+			m.watch(t, st, reg)
+		}
 		m.keep(t, st, reg, changes)
+		m.changes = append(m.changes, changes...)
 		from = st.pass(reg)
 	}
 }
