@@ -62,11 +62,19 @@ func (s *Store) DecideChange(ctx context.Context, a Actor, req Request, id int64
 	if err != nil {
 		return ch, nil, err
 	}
-	decided, err := s.readChange(ctx, s.pool, id)
+	err = s.read(ctx, func(ctx context.Context, tx pgx.Tx) error {
+		decided, err := s.readChange(ctx, tx, id)
+		if err != nil {
+			return err
+		}
+		ch = *decided
+		_, err = chartByName(ctx, tx, a, ch.Chart)
+		return unseenChange(err, id)
+	})
 	if err != nil {
-		return ch, nil, err
+		return Change{}, nil, err
 	}
-	return *decided, updates, nil
+	return ch, updates, nil
 }
 
 // changeDecided is what the audit entry of a decision says.

@@ -33,14 +33,18 @@ func scanPlace(row pgx.CollectableRow) (*track.Item, error) {
 	if err := row.Scan(&it.Key, &it.ID, &it.Revision, &it.Voided, &stored.Version, &point, &stored.Verdict, &stored.State); err != nil {
 		return nil, err
 	}
-	var err error
+	return placed(&it, stored, point)
+}
+
+// placed completes an item from the columns of its place.
+func placed(it *track.Item, stored track.Stored, point []byte) (_ *track.Item, err error) {
 	if it.Point, it.Repeat, err = decodePoint(point); err != nil {
 		return nil, err
 	}
 	it.Ref = refOf(it.ID, it.Key)
 	stored.Key, stored.Repeat = it.Key, it.Repeat
 	it.Stored = &stored
-	return &it, nil
+	return it, nil
 }
 
 // placeBefore gives the place just before a key, nil where there is none.

@@ -35,13 +35,12 @@ func (p *posting) begin(ctx context.Context, conn *pgx.Conn) error {
 		})
 		return err
 	})
-	b.Queue(`SELECT clock_timestamp()`).QueryRow(func(row pgx.Row) error { return row.Scan(&p.now) })
-	b.Queue(`SELECT chart_id, archived, labels, timeline FROM charts WHERE chart_id = ANY($1) ORDER BY chart_id`, chartIDs).Query(func(rows pgx.Rows) error {
+	b.Queue(`SELECT chart_id, archived, labels, timeline, clock_timestamp() FROM charts WHERE chart_id = ANY($1) ORDER BY chart_id`, chartIDs).Query(func(rows pgx.Rows) error {
 		for rows.Next() {
 			var id, timeline int64
 			var archived bool
 			var labels map[string]string
-			if err := rows.Scan(&id, &archived, &labels, &timeline); err != nil {
+			if err := rows.Scan(&id, &archived, &labels, &timeline, &p.now); err != nil {
 				return err
 			}
 			byID[id].Archived, byID[id].Labels, byID[id].Timeline = archived, labels, timeline
@@ -118,41 +117,44 @@ func (p *posting) queueStored(b *pgx.Batch) {
 
 // queueNeighbours asks, for each track, for the place just before the first new one and whether anything lies after it.
 func (p *posting) queueNeighbours(b *pgx.Batch, trackIDs []int64, lowest [][]byte) {
-	b.Queue(`SELECT u.track_id, p.order_key, p.result_id, p.revision, p.voided, p.version, p.point, p.verdict, p.state
+	b.Queue(`SELECT u.track_id, NOT EXISTS (SELECT FROM places a WHERE a.track_id = u.track_id AND a.order_key >= u.lowest), p.order_key IS NOT NULL,
+			coalesce(p.order_key, ''), coalesce(p.result_id, 0), coalesce(p.revision, 0), coalesce(p.voided, false), coalesce(p.version, 0),
+			coalesce(p.point, '\x00'), coalesce(p.verdict, ''), coalesce(p.state, '')
 		FROM unnest($1::bigint[], $2::bytea[]) AS u (track_id, lowest)
-		CROSS JOIN LATERAL (SELECT * FROM places p WHERE p.track_id = u.track_id AND p.order_key < u.lowest ORDER BY p.order_key DESC LIMIT 1) p`,
+		LEFT JOIN LATERAL (SELECT * FROM places p WHERE p.track_id = u.track_id AND p.order_key < u.lowest ORDER BY p.order_key DESC LIMIT 1) p ON true`,
 		trackIDs, lowest).Query(func(rows pgx.Rows) error {
 		for rows.Next() {
 			var id int64
-			it, err := scanPlace(prefixed{rows, &id})
+			var tail, found bool
+			it, err := scanNeighbour(prefixed{rows, []any{&id, &tail, &found}}, &found)
 			if err != nil {
 				return err
 			}
-			p.tracks[id].before = it
+			p.tracks[id].before, p.tracks[id].tail = it, tail
 		}
 		return rows.Err()
 	})
-	b.Queue(`SELECT u.track_id FROM unnest($1::bigint[], $2::bytea[]) AS u (track_id, lowest)
-		WHERE NOT EXISTS (SELECT FROM places p WHERE p.track_id = u.track_id AND p.order_key >= u.lowest)`,
-		trackIDs, lowest).Query(func(rows pgx.Rows) error {
-		var id int64
-		_, err := pgx.ForEachRow(rows, []any{&id}, func() error {
-			p.tracks[id].tail = true
-			return nil
-		})
-		return err
-	})
 }
 
-// prefixed scans a leading column before those of a place.
+// scanNeighbour scans a place that may not be there.
+func scanNeighbour(row pgx.CollectableRow, found *bool) (*track.Item, error) {
+	var it track.Item
+	var stored track.Stored
+	var point []byte
+	err := row.Scan(&it.Key, &it.ID, &it.Revision, &it.Voided, &stored.Version, &point, &stored.Verdict, &stored.State)
+	if err != nil || !*found {
+		return nil, err
+	}
+	return placed(&it, stored, point)
+}
+
+// prefixed scans leading columns before those of a place.
 type prefixed struct {
 	pgx.Rows
-	id *int64
+	first []any
 }
 
-func (r prefixed) Scan(dest ...any) error { return r.Rows.Scan(append([]any{r.id}, dest...)...) }
-
-var _ pgx.CollectableRow = prefixed{}
+func (r prefixed) Scan(dest ...any) error { return r.Rows.Scan(append(r.first, dest...)...) }
 
 // neighbours is what a post already knows of the places around its first new one.
 type neighbours struct {

@@ -112,9 +112,9 @@ func (p *posting) seal(b *pgx.Batch) {
 			panic(err)
 		}
 		hash := auditHash(c.head.hash, payload)
-		b.Queue(`INSERT INTO audit (chain_id, entry, kind, principal, payload, previous, hash, recorded_at) VALUES ($1, $2, 'POST_RESULTS', $3, $4, $5, $6, $7)`,
+		b.Queue(`WITH moved AS (UPDATE chain_heads SET entry = $2, hash = $6 WHERE chain_id = $1)
+			INSERT INTO audit (chain_id, entry, kind, principal, payload, previous, hash, recorded_at) VALUES ($1, $2, 'POST_RESULTS', $3, $4, $5, $6, $7)`,
 			c.ID, entry, p.actor.Principal, payload, c.head.hash, hash, p.now)
-		b.Queue(`UPDATE chain_heads SET entry = $2, hash = $3 WHERE chain_id = $1`, c.ID, entry, hash)
 	}
 }
 
