@@ -54,13 +54,18 @@ type Result struct {
 	Labels       map[string]string `json:"labels,omitempty"`
 }
 
-// Digest is SHA-256 over the content. Two posts with equal digests are the same content.
-func (r Result) Digest() []byte {
+// Canonical gives the content as the bytes its digest covers. Equal contents have equal bytes.
+func (r *Result) Canonical() []byte {
 	b, err := json.Marshal(r)
 	if err != nil {
 		panic(err) // strings, times and numbers always encode
 	}
-	sum := sha256.Sum256(b)
+	return b
+}
+
+// Digest is SHA-256 over the content. Two posts with equal digests are the same content.
+func (r Result) Digest() []byte {
+	sum := sha256.Sum256(r.Canonical())
 	return sum[:]
 }
 

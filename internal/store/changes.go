@@ -103,7 +103,8 @@ func (s *Store) applyRevision(ctx context.Context, w *work, c *chartRow, tracks 
 	item := &track.Item{Ref: track.Ref{ID: cur.id, Key: key, At: r.content.MeasuredAt}, Revision: cur.revision + 1, Point: pt,
 		Repeat: r.content.Role == definition.Repeat, Voided: r.voided, Stored: cur.item.Stored, Force: true}
 	l := &ledger{now: w.now, principal: w.actor.Principal}
-	l.revisions = []revisionRow{{c.ID, cur.id, dest.ID, item.Revision, r.content, encodeContent(r.content), r.content.Digest(), r.voided,
+	content, digest := encodeContent(&r.content)
+	l.revisions = []revisionRow{{c.ID, cur.id, dest.ID, item.Revision, r.content, content, digest, r.voided,
 		r.author, r.confirmedBy, r.changeID, r.reasonCode, r.reason, entry}}
 	gone := map[int64]bool{cur.id: true}
 	stirOf := func(t *trackRow, st stir) (TrackUpdate, error) {
@@ -224,7 +225,8 @@ func (s *Store) AmendResult(ctx context.Context, a Actor, req Request, content d
 		if kept {
 			return changeAnswer{}, w.seal(ctx, c.ID, entry, "AMEND_RESULT", revisionSaid{cur.id, cur.revision + 1, content.Digest(), 0})
 		}
-		id, err := s.ask(ctx, w, c, entry, asked{"AMEND_RESULT", &cur.id, nil, cur.revision, encodeContent(content), reasonCode, reason}, updates)
+		form, _ := encodeContent(&content)
+		id, err := s.ask(ctx, w, c, entry, asked{"AMEND_RESULT", &cur.id, nil, cur.revision, form, reasonCode, reason}, updates)
 		if err != nil {
 			return nil, err
 		}

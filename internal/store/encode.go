@@ -1,6 +1,7 @@
 package store
 
 import (
+	"crypto/sha256"
 	"encoding/binary"
 	"encoding/json"
 	"errors"
@@ -19,12 +20,18 @@ type contentForm struct {
 	MeasuredText string `json:"measured_text"`
 }
 
-func encodeContent(r definition.Result) []byte {
-	b, err := json.Marshal(contentForm{r, r.MeasuredText})
+// encodeContent gives the stored form of a result, and its digest, from one encoding: the canonical object with the time
+// as posted added at its end.
+func encodeContent(r *definition.Result) (content, digest []byte) {
+	canonical := r.Canonical()
+	sum := sha256.Sum256(canonical)
+	text, err := json.Marshal(r.MeasuredText)
 	if err != nil {
-		panic(err) // strings, times and numbers always encode
+		panic(err) // a text always encodes
 	}
-	return b
+	content = append(canonical[:len(canonical)-1], `,"measured_text":`...)
+	content = append(append(content, text...), '}')
+	return content, sum[:]
 }
 
 func decodeContent(b []byte) (definition.Result, error) {

@@ -33,7 +33,7 @@ type placeKey struct {
 
 type resultRow struct {
 	chartID, resultID, trackID int64
-	result                     definition.Result
+	result                     *definition.Result
 	content, digest, verdict   []byte
 	version                    int
 	entry                      int64

@@ -24,7 +24,7 @@ func (s *Store) judgePosted(ctx context.Context, conn *pgx.Conn, p *posting) err
 			p.now = after
 		}
 	}
-	p.ledger = &ledger{now: p.now, principal: p.actor.Principal}
+	p.ledger = &ledger{now: p.now, principal: p.actor.Principal, results: make([]resultRow, 0, len(p.results)), places: make([]placeRow, 0, len(p.results))}
 	p.outcomes, p.rowOf = map[int64]*track.Judged{}, map[int64]int{}
 	trackIDs, _ := p.lockOrder()
 	for _, id := range trackIDs {
@@ -63,9 +63,9 @@ func (p *posting) judgeTrack(ctx context.Context, conn *pgx.Conn, c *postChart, 
 	}
 	p.updates = append(p.updates, update)
 	for _, i := range c.accepted[t.ID] {
-		r := &p.results[i]
 		j := p.outcomes[p.ids[i]]
-		p.ledger.results = append(p.ledger.results, resultRow{c.ID, p.ids[i], t.ID, *r, encodeContent(*r), r.Digest(), j.Verdict, j.Version, c.head.entry + 1})
+		content, digest := encodeContent(&p.results[i])
+		p.ledger.results = append(p.ledger.results, resultRow{c.ID, p.ids[i], t.ID, &p.results[i], content, digest, j.Verdict, j.Version, c.head.entry + 1})
 	}
 	return nil
 }
@@ -97,9 +97,9 @@ type postedRows struct {
 // seal adds the audit entries of the post, one a chart, and the new heads of their chains.
 func (p *posting) seal(b *pgx.Batch) {
 	for _, c := range p.charts {
-		var rows []resultRow
-		for _, r := range p.ledger.results {
-			if r.chartID == c.ID {
+		var rows []*resultRow
+		for i := range p.ledger.results {
+			if r := &p.ledger.results[i]; r.chartID == c.ID {
 				rows = append(rows, r)
 			}
 		}
@@ -119,8 +119,8 @@ func (p *posting) seal(b *pgx.Batch) {
 }
 
 // digestRows gives the digest of result rows as written: id, content digest, version and verdict of each, by id.
-func digestRows(rows []resultRow) string {
-	slices.SortFunc(rows, func(a, b resultRow) int { return int(a.resultID - b.resultID) })
+func digestRows(rows []*resultRow) string {
+	slices.SortFunc(rows, func(a, b *resultRow) int { return int(a.resultID - b.resultID) })
 	h := sha256.New()
 	for _, r := range rows {
 		var fixed [16]byte
