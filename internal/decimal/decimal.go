@@ -86,6 +86,11 @@ func Line(centre, z, sigma float64, places int) float64 {
 	if r, ok := quick(centre+z*sigma, (math.Abs(centre)+2*math.Abs(z*sigma))*ulp, places); ok {
 		return r
 	}
+	if w, scale, ok := wholeLine(centre, z, sigma); ok {
+		if r, ok := wholeRatio(w, scale, 1, places); ok {
+			return r
+		}
+	}
 	return exact(centre).add(exact(z).times(exact(sigma))).round(places)
 }
 

@@ -71,3 +71,39 @@ func wholeRatio(sum int64, scale int, n int64, places int) (rounded float64, ok 
 	}
 	return math.Copysign(float64(whole)/pow10[places], float64(sum)), true
 }
+
+// wholeLine gives centre + z·sigma exactly as a whole number of 10^-scale.
+func wholeLine(centre, z, sigma float64) (sum int64, scale int, ok bool) {
+	c, cScale, ok1 := wholeOf(centre, 0)
+	a, aScale, ok2 := wholeOf(z, 0)
+	b, bScale, ok3 := wholeOf(sigma, 0)
+	scale = aScale + bScale
+	if !ok1 || !ok2 || !ok3 || max(scale, cScale) >= len(pow10) {
+		return 0, 0, false
+	}
+	high, product := bits.Mul64(uint64(max(a, -a)), uint64(max(b, -b)))
+	if high != 0 || product > wholeSumMax {
+		return 0, 0, false
+	}
+	sum = int64(product)
+	if (a < 0) != (b < 0) {
+		sum = -sum
+	}
+	if cScale > scale {
+		sum, scale, ok = shifted(sum, cScale-scale), cScale, fits(sum, cScale-scale)
+	} else {
+		c, ok = shifted(c, scale-cScale), fits(c, scale-cScale)
+	}
+	return sum + c, scale, ok
+}
+
+// wholeSumMax leaves room for one addition in an int64.
+const wholeSumMax = 1 << 61
+
+// shifted gives w·10^n; fits says whether that is exact.
+func shifted(w int64, n int) int64 { return w * int64(pow10[n]) }
+
+func fits(w int64, n int) bool {
+	high, low := bits.Mul64(uint64(max(w, -w)), uint64(pow10[n]))
+	return high == 0 && low <= wholeSumMax
+}

@@ -45,7 +45,7 @@ type Key struct {
 	Roles     []Permission
 	// Labels limit the key to charts that have all of them.
 	Labels map[string]string
-	// Sources the key may post as; none means any that no other principal has posted as on the chart.
+	// Sources the key may post as; none means any.
 	Sources   []string
 	CreatedAt time.Time
 	ExpiresAt time.Time

@@ -96,7 +96,8 @@ func (p *posting) queueStored(b *pgx.Batch) {
 		}
 	}
 	b.Queue(`SELECT u.i, r.result_id, r.track_id, r.digest, coalesce(v.digest, r.digest), r.content, r.version, r.verdict, r.recorded_at,
-			p.version, p.verdict
+			p.version, p.verdict, coalesce((SELECT j.recorded_at FROM verdicts j WHERE j.chart_id = r.chart_id AND j.result_id = r.result_id
+				ORDER BY j.entry DESC LIMIT 1), r.recorded_at)
 		FROM unnest($1::int[], $2::bigint[], $3::text[], $4::text[]) AS u (i, chart_id, source, source_id)
 		JOIN results r USING (chart_id, source, source_id)
 		JOIN places p ON p.chart_id = r.chart_id AND p.result_id = r.result_id
@@ -106,9 +107,10 @@ func (p *posting) queueStored(b *pgx.Batch) {
 			var i int
 			st := &storedRow{}
 			if err := rows.Scan(&i, &st.id, &st.trackID, &st.digest, &st.currentDigest, &st.content, &st.firstVersion, &st.firstVerdict,
-				&st.recordedAt, &st.version, &st.verdict); err != nil {
+				&st.recordedAt, &st.version, &st.verdict, &st.currentRecorded); err != nil {
 				return err
 			}
+			st.recordedAt, st.currentRecorded = st.recordedAt.UTC(), st.currentRecorded.UTC()
 			p.stored[i] = st
 		}
 		return rows.Err()
