@@ -191,10 +191,10 @@ func (s *Store) answerStored(ctx context.Context, v *verdictReader, p *posting, 
 	}
 	if row.Outcome == Conflict {
 		var err error
-		row.Stored, err = decodeContent(st.content)
-		return err
-	}
-	if err := v.stored(ctx, c.ID, &row.First, st.firstVersion, st.firstVerdict, st.recordedAt); err != nil {
+		if row.Stored, err = decodeContent(st.content); err != nil {
+			return err
+		}
+	} else if err := v.stored(ctx, c.ID, &row.First, st.firstVersion, st.firstVerdict, st.recordedAt); err != nil {
 		return err
 	}
 	return v.stored(ctx, c.ID, &row.Current, st.version, st.verdict, st.currentRecorded)

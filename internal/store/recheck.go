@@ -236,7 +236,7 @@ func (k *trackCheck) missing(ctx context.Context, tx pgx.Tx, places int) error {
 }
 
 func (k *trackCheck) compareEpisodes(ctx context.Context, tx pgx.Tx) error {
-	rows, err := tx.Query(ctx, `SELECT trace, rule, side, version, first_point_result, first_hit, first_hit_result, last_hit, last_hit_result, status = 'OPEN'
+	rows, err := tx.Query(ctx, `SELECT trace, rule, side, version, first_point, first_point_result, first_hit, first_hit_result, last_hit, last_hit_result, status = 'OPEN'
 		FROM signals WHERE track_id = $1 AND status IN ('OPEN', 'CLOSED')`, k.track.ID)
 	if err != nil {
 		return err
@@ -246,7 +246,7 @@ func (k *trackCheck) compareEpisodes(ctx context.Context, tx pgx.Tx) error {
 	var trace, side int16
 	var e track.Episode
 	var isOpen bool
-	_, err = pgx.ForEachRow(rows, []any{&trace, &e.Rule, &side, &e.Version, &e.FirstPoint.ID, &e.FirstHit.Key, &e.FirstHit.ID, &e.LastHit.Key, &e.LastHit.ID, &isOpen}, func() error {
+	_, err = pgx.ForEachRow(rows, []any{&trace, &e.Rule, &side, &e.Version, &e.FirstPoint.Key, &e.FirstPoint.ID, &e.FirstHit.Key, &e.FirstHit.ID, &e.LastHit.Key, &e.LastHit.ID, &isOpen}, func() error {
 		e.Role, e.Side = chart.Role(trace), rules.Side(side)
 		stored = append(stored, episodeText(&e))
 		if isOpen {
@@ -284,5 +284,6 @@ func (k *trackCheck) compareEpisodes(ctx context.Context, tx pgx.Tx) error {
 }
 
 func episodeText(e *track.Episode) string {
-	return fmt.Sprintf("%s %s %s of version %d, first point %d, hits %d to %d (%x to %x)", e.Role, e.Rule, e.Side, e.Version, e.FirstPoint.ID, e.FirstHit.ID, e.LastHit.ID, e.FirstHit.Key, e.LastHit.Key)
+	return fmt.Sprintf("%s %s %s of version %d, first point %d, hits %d to %d (%x, %x to %x)",
+		e.Role, e.Rule, e.Side, e.Version, e.FirstPoint.ID, e.FirstHit.ID, e.LastHit.ID, e.FirstPoint.Key, e.FirstHit.Key, e.LastHit.Key)
 }

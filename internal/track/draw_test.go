@@ -30,10 +30,12 @@ type drawer struct {
 	now, level int
 	lots       []string
 	posted     []int
+	// restless schedules have many versions and marks.
+	restless bool
 }
 
 func drawSchedule(d dice, opsMax int) *schedule {
-	w := &drawer{dice: d, schedule: &schedule{}, lots: []string{""}}
+	w := &drawer{dice: d, schedule: &schedule{}, lots: []string{""}, restless: d.oneIn(3)}
 	w.kind = pick(d, chart.Individuals, chart.Individuals, chart.XbarR, chart.XbarS)
 	if w.size = 1; w.kind != chart.Individuals {
 		w.size = 2 + d(3)
@@ -128,26 +130,30 @@ func (w *drawer) rules(window func(least int) int) (specs []rules.Spec) {
 
 func (w *drawer) op() op {
 	o := op{minute: w.minute()}
-	switch k := w.dice(40); {
+	k := w.dice(40)
+	if w.restless && w.oneIn(3) {
+		k = 33 + w.dice(7)
+	}
+	switch {
 	case k < 20 || len(w.posted) == 0:
 		o.rows = w.rows()
 		return o
+	case k < 22:
+		o.kind, o.n = closeSignal, w.dice(8)
 	case k < 33:
 		o.kind = pick(w.dice, amendReadings, amendReadings, amendTime, amendTime, amendTime, amendRole, amendRole, amendLot, void, void)
 		o.n = w.posted[w.dice(len(w.posted))]
 		o.row = w.row(o.n, w.minute())
 	case k < 35:
-		o.kind, o.template = approve, w.dice(len(w.templates))
+		o.kind, o.template = approve, pick(w.dice, 0, 0, 1, 2)
 		o.lot = w.forLots()
 	case k < 36:
 		o.kind, o.n = withdraw, w.dice(4)
 	case k < 38:
 		o.kind, o.isBreak, o.restart = addMark, w.oneIn(2), w.oneIn(2)
 		o.lot = w.forLots()
-	case k < 39:
-		o.kind, o.n = voidMark, w.dice(4)
 	default:
-		o.kind, o.n = closeSignal, w.dice(8)
+		o.kind, o.n = voidMark, w.dice(4)
 	}
 	return o
 }

@@ -143,17 +143,20 @@ func (m *model) apply(o op) {
 	}
 }
 
+// close closes one of the open signals.
 func (m *model) close(n int) {
+	var open []*signal
 	for _, lot := range m.lots() {
 		signals := m.tracks[lot].signals
 		for _, id := range slices.Sorted(maps.Keys(signals)) {
 			if s := signals[id]; s.status == "OPEN" {
-				if n == 0 {
-					s.status, s.Closed = "CLOSED", true
-				}
-				n--
+				open = append(open, s)
 			}
 		}
+	}
+	if len(open) > 0 {
+		s := open[n%len(open)]
+		s.status, s.Closed = "CLOSED", true
 	}
 }
 

@@ -152,6 +152,32 @@ func TestRegionsStopWithoutPoints(t *testing.T) {
 	}
 }
 
+// TestSumsReachBackAsFarAsTheyBegan has sums that begin hundreds of points before the change, two of them at different
+// points, behind more quiet results than a run keeps in mind.
+func TestSumsReachBackAsFarAsTheyBegan(t *testing.T) {
+	b := newBench(t, location(
+		rules.Spec{ID: "late", Kind: rules.CUSUM, Reference: 0.5, Interval: 20, Consequence: rules.Act},
+		rules.Spec{ID: "early", Kind: rules.CUSUM, Interval: 30, Consequence: rules.Act}))
+	var rows []row
+	for _, part := range []struct {
+		n       int
+		reading string
+	}{{1500, "10"}, {150, "10.3"}, {150, "11"}} {
+		for range part.n {
+			rows = append(rows, b.row(b.n+1, part.reading))
+		}
+	}
+	b.do(op{kind: post, rows: rows})
+	b.wantSignals("1 OPEN 1501: 1601-1800", "2 OPEN 1651: 1691-1800")
+	b.do(op{kind: amendReadings, n: 1780, row: row{readings: []string{"10.9"}}})
+	if b.judged != 21 {
+		t.Errorf("judged %d results, want 21", b.judged)
+	}
+	b.do(op{kind: amendReadings, n: 1640, row: row{readings: []string{"-90"}}})
+	b.do(op{kind: void, n: 1640})
+	b.series(1801, "11", "11")
+}
+
 // wantAtOnce compares with the same results, versions and marks judged from the first result on.
 func wantAtOnce(t *testing.T, m *model) {
 	t.Helper()

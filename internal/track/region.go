@@ -137,8 +137,13 @@ func (r *Runner) beginsSegment(it *Item, until []byte) bool {
 	if span == r.span {
 		return false
 	}
-	isBreak, _ := r.timeline.boundary(r.span, span)
-	return isBreak && bytes.Compare(until, definition.KeyTime(r.timeline.Spans[span].From)) <= 0
+	if isBreak, _ := r.timeline.boundary(r.span, span); !isBreak {
+		return false
+	}
+	for !r.timeline.Spans[span].Break {
+		span-- // a version of the same numbers only continues the segment
+	}
+	return bytes.Compare(until, definition.KeyTime(r.timeline.Spans[span].From)) <= 0
 }
 
 // settled reports whether no coming hit can refer to a changed point.

@@ -42,6 +42,15 @@ func TestSegments(t *testing.T) {
 		b.series(80, "11")
 		b.wantSignals("1 OPEN 1: 3-8")
 	})
+	t.Run("a result leaves the start of a segment that such a version continues", func(t *testing.T) {
+		b := newBench(t, location(threeOnASide))
+		b.do(op{kind: addMark, minute: 30, isBreak: true})
+		b.series(30, "11", "11", "11")
+		b.do(op{kind: approve, minute: 35})
+		b.wantSignals("1 OPEN 1: 3-3")
+		b.do(op{kind: amendTime, n: 1, row: row{minute: 20}})
+		b.wantSignals("1 RETRACTED")
+	})
 	t.Run("a version of other numbers ends the segment", func(t *testing.T) {
 		look := threeOnASide
 		look.Consequence = rules.Look
@@ -167,6 +176,19 @@ func TestPoints(t *testing.T) {
 		b.wantSignals("1 RETRACTED", "2 OPEN 5: 3-4")
 		if o, _ := b.verdict(1); o.Traces[chart.Dispersion].Point {
 			t.Error("the first result of a segment has a moving range")
+		}
+	})
+	t.Run("a result that leaves or moves among equal ones changes the windows behind a void", func(t *testing.T) {
+		for _, o := range []op{{kind: amendLot, n: 4, row: row{lot: "other"}}, {kind: amendTime, n: 4, row: row{minute: 5}}} {
+			// What is remembered after the void is the same with 4 and without it; the window of 6 is not.
+			b := newBench(t, location(threeOnASide))
+			b.series(10, "11", "11", "11", "11", "11")
+			b.do(op{kind: void, n: 5})
+			b.series(60, "11")
+			b.do(o)
+			if verdict, _ := b.verdict(6); len(verdict.Hits) != 1 || verdict.Hits[0].WindowFirst.ID != 2 {
+				t.Errorf("after %s result 6 has hits %+v, want one with a window from 2", o, verdict.Hits)
+			}
 		}
 	})
 	t.Run("a less-than result takes its moving range and the next one away", func(t *testing.T) {
