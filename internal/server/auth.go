@@ -104,6 +104,7 @@ var permissions = map[string][]definition.Permission{
 	pb.SignalService_ReleaseTrack_FullMethodName:    {definition.Reviewer},
 
 	pb.RuleService_ListRules_FullMethodName: {},
+	pb.RuleService_RunLength_FullMethodName: {},
 
 	pb.KeyService_CreateKey_FullMethodName: {definition.Admin},
 	pb.KeyService_ListKeys_FullMethodName:  {definition.Admin},

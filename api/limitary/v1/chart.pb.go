@@ -876,7 +876,7 @@ type TrackStatus struct {
 	// Empty where lots are not tracks.
 	Lot   string     `protobuf:"bytes,2,opt,name=lot,proto3" json:"lot,omitempty"`
 	State TrackState `protobuf:"varint,3,opt,name=state,proto3,enum=limitary.v1.TrackState" json:"state,omitempty"`
-	// When the STOP was recorded, for HOLD.
+	// When the latest STOP was recorded, for HOLD.
 	HoldSince   *timestamppb.Timestamp `protobuf:"bytes,4,opt,name=hold_since,json=holdSince,proto3" json:"hold_since,omitempty"`
 	OpenSignals int32                  `protobuf:"varint,5,opt,name=open_signals,json=openSignals,proto3" json:"open_signals,omitempty"`
 	// The version in force now; 0 is none.
@@ -884,8 +884,10 @@ type TrackStatus struct {
 	// Results on the track, voided ones not counted.
 	Results        int64                  `protobuf:"varint,7,opt,name=results,proto3" json:"results,omitempty"`
 	LastMeasuredAt *timestamppb.Timestamp `protobuf:"bytes,8,opt,name=last_measured_at,json=lastMeasuredAt,proto3" json:"last_measured_at,omitempty"`
-	unknownFields  protoimpl.UnknownFields
-	sizeCache      protoimpl.SizeCache
+	// The occurrence its open signals belong to; 0 is none.
+	Occurrence    int64 `protobuf:"varint,9,opt,name=occurrence,proto3" json:"occurrence,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
 }
 
 func (x *TrackStatus) Reset() {
@@ -972,6 +974,13 @@ func (x *TrackStatus) GetLastMeasuredAt() *timestamppb.Timestamp {
 		return x.LastMeasuredAt
 	}
 	return nil
+}
+
+func (x *TrackStatus) GetOccurrence() int64 {
+	if x != nil {
+		return x.Occurrence
+	}
+	return 0
 }
 
 type ListTracksRequest struct {
@@ -1769,7 +1778,7 @@ const file_limitary_v1_chart_proto_rawDesc = "" +
 	"\x11expected_revision\x18\x03 \x01(\x03R\x10expectedRevision\x12\x16\n" +
 	"\x06reason\x18\x04 \x01(\tR\x06reason\"@\n" +
 	"\x14ArchiveChartResponse\x12(\n" +
-	"\x05chart\x18\x01 \x01(\v2\x12.limitary.v1.ChartR\x05chart\"\xbc\x02\n" +
+	"\x05chart\x18\x01 \x01(\v2\x12.limitary.v1.ChartR\x05chart\"\xdc\x02\n" +
 	"\vTrackStatus\x12\x14\n" +
 	"\x05chart\x18\x01 \x01(\tR\x05chart\x12\x10\n" +
 	"\x03lot\x18\x02 \x01(\tR\x03lot\x12-\n" +
@@ -1779,7 +1788,10 @@ const file_limitary_v1_chart_proto_rawDesc = "" +
 	"\fopen_signals\x18\x05 \x01(\x05R\vopenSignals\x12\x18\n" +
 	"\aversion\x18\x06 \x01(\x05R\aversion\x12\x18\n" +
 	"\aresults\x18\a \x01(\x03R\aresults\x12D\n" +
-	"\x10last_measured_at\x18\b \x01(\v2\x1a.google.protobuf.TimestampR\x0elastMeasuredAt\"e\n" +
+	"\x10last_measured_at\x18\b \x01(\v2\x1a.google.protobuf.TimestampR\x0elastMeasuredAt\x12\x1e\n" +
+	"\n" +
+	"occurrence\x18\t \x01(\x03R\n" +
+	"occurrence\"e\n" +
 	"\x11ListTracksRequest\x12\x14\n" +
 	"\x05chart\x18\x01 \x01(\tR\x05chart\x12\x1b\n" +
 	"\tpage_size\x18\x02 \x01(\x05R\bpageSize\x12\x1d\n" +

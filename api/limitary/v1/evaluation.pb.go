@@ -96,7 +96,8 @@ const (
 	NotJudgedReason_NOT_JUDGED_REASON_NO_VERSION_IN_FORCE NotJudgedReason = 2
 	// Fewer readings than any trace needs.
 	NotJudgedReason_NOT_JUDGED_REASON_TOO_FEW_READINGS NotJudgedReason = 3
-	// A less-than or greater-than result whose bound proves nothing.
+	// A less-than or greater-than result whose bound proves nothing, or which no rule of the location trace can look at:
+	// trends, alternations, EWMA and CUSUM need values.
 	NotJudgedReason_NOT_JUDGED_REASON_BOUND_PROVES_NOTHING NotJudgedReason = 4
 	// The result was voided.
 	NotJudgedReason_NOT_JUDGED_REASON_VOIDED NotJudgedReason = 5

@@ -93,7 +93,8 @@ type Key struct {
 	Roles     []Role `protobuf:"varint,3,rep,packed,name=roles,proto3,enum=limitary.v1.Role" json:"roles,omitempty"`
 	// The key sees only charts that have all of these labels.
 	Labels map[string]string `protobuf:"bytes,4,rep,name=labels,proto3" json:"labels,omitempty" protobuf_key:"bytes,1,opt,name=key" protobuf_val:"bytes,2,opt,name=value"`
-	// The sources this key may post as; empty, any that no other principal has posted as on the chart.
+	// The sources this key may post as; empty, any. A source named here counts as the key's own when a change of its
+	// results is asked for, whoever posted them.
 	Sources       []string               `protobuf:"bytes,5,rep,name=sources,proto3" json:"sources,omitempty"`
 	CreateTime    *timestamppb.Timestamp `protobuf:"bytes,6,opt,name=create_time,json=createTime,proto3" json:"create_time,omitempty"`
 	ExpireTime    *timestamppb.Timestamp `protobuf:"bytes,7,opt,name=expire_time,json=expireTime,proto3" json:"expire_time,omitempty"`

@@ -885,13 +885,14 @@ type ComputeLimitsRequest struct {
 	PublishedDecimals *int32    `protobuf:"varint,5,opt,name=published_decimals,json=publishedDecimals,proto3,oneof" json:"published_decimals,omitempty"`
 	Estimator         Estimator `protobuf:"varint,6,opt,name=estimator,proto3,enum=limitary.v1.Estimator" json:"estimator,omitempty"`
 	// Given instead of estimated, in the chart's unit.
-	Centre          *float64     `protobuf:"fixed64,7,opt,name=centre,proto3,oneof" json:"centre,omitempty"`
-	ProcessSigma    *float64     `protobuf:"fixed64,8,opt,name=process_sigma,json=processSigma,proto3,oneof" json:"process_sigma,omitempty"`
-	LocationLines   *FixedLines  `protobuf:"bytes,9,opt,name=location_lines,json=locationLines,proto3" json:"location_lines,omitempty"`
-	DispersionLines *FixedLines  `protobuf:"bytes,10,opt,name=dispersion_lines,json=dispersionLines,proto3" json:"dispersion_lines,omitempty"`
-	Exclusions      []*Exclusion `protobuf:"bytes,11,rep,name=exclusions,proto3" json:"exclusions,omitempty"`
-	unknownFields   protoimpl.UnknownFields
-	sizeCache       protoimpl.SizeCache
+	Centre          *float64    `protobuf:"fixed64,7,opt,name=centre,proto3,oneof" json:"centre,omitempty"`
+	ProcessSigma    *float64    `protobuf:"fixed64,8,opt,name=process_sigma,json=processSigma,proto3,oneof" json:"process_sigma,omitempty"`
+	LocationLines   *FixedLines `protobuf:"bytes,9,opt,name=location_lines,json=locationLines,proto3" json:"location_lines,omitempty"`
+	DispersionLines *FixedLines `protobuf:"bytes,10,opt,name=dispersion_lines,json=dispersionLines,proto3" json:"dispersion_lines,omitempty"`
+	// At most 2,000.
+	Exclusions    []*Exclusion `protobuf:"bytes,11,rep,name=exclusions,proto3" json:"exclusions,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
 }
 
 func (x *ComputeLimitsRequest) Reset() {

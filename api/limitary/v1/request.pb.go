@@ -27,11 +27,12 @@ const (
 type ChangeKind int32
 
 const (
-	ChangeKind_CHANGE_KIND_UNSPECIFIED  ChangeKind = 0
-	ChangeKind_CHANGE_KIND_VOID_RESULT  ChangeKind = 1
-	ChangeKind_CHANGE_KIND_AMEND_RESULT ChangeKind = 2
-	ChangeKind_CHANGE_KIND_ADD_MARK     ChangeKind = 3
-	ChangeKind_CHANGE_KIND_VOID_MARK    ChangeKind = 4
+	ChangeKind_CHANGE_KIND_UNSPECIFIED      ChangeKind = 0
+	ChangeKind_CHANGE_KIND_VOID_RESULT      ChangeKind = 1
+	ChangeKind_CHANGE_KIND_AMEND_RESULT     ChangeKind = 2
+	ChangeKind_CHANGE_KIND_ADD_MARK         ChangeKind = 3
+	ChangeKind_CHANGE_KIND_VOID_MARK        ChangeKind = 4
+	ChangeKind_CHANGE_KIND_WITHDRAW_VERSION ChangeKind = 5
 )
 
 // Enum value maps for ChangeKind.
@@ -42,13 +43,15 @@ var (
 		2: "CHANGE_KIND_AMEND_RESULT",
 		3: "CHANGE_KIND_ADD_MARK",
 		4: "CHANGE_KIND_VOID_MARK",
+		5: "CHANGE_KIND_WITHDRAW_VERSION",
 	}
 	ChangeKind_value = map[string]int32{
-		"CHANGE_KIND_UNSPECIFIED":  0,
-		"CHANGE_KIND_VOID_RESULT":  1,
-		"CHANGE_KIND_AMEND_RESULT": 2,
-		"CHANGE_KIND_ADD_MARK":     3,
-		"CHANGE_KIND_VOID_MARK":    4,
+		"CHANGE_KIND_UNSPECIFIED":      0,
+		"CHANGE_KIND_VOID_RESULT":      1,
+		"CHANGE_KIND_AMEND_RESULT":     2,
+		"CHANGE_KIND_ADD_MARK":         3,
+		"CHANGE_KIND_VOID_MARK":        4,
+		"CHANGE_KIND_WITHDRAW_VERSION": 5,
 	}
 )
 
@@ -131,6 +134,68 @@ func (ChangeStatus) EnumDescriptor() ([]byte, []int) {
 	return file_limitary_v1_request_proto_rawDescGZIP(), []int{1}
 }
 
+// One thing a change would set, in the contract's words.
+type FieldChange struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	Field string                 `protobuf:"bytes,1,opt,name=field,proto3" json:"field,omitempty"`
+	// As it is now; empty where there is nothing yet.
+	From          string `protobuf:"bytes,2,opt,name=from,proto3" json:"from,omitempty"`
+	To            string `protobuf:"bytes,3,opt,name=to,proto3" json:"to,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *FieldChange) Reset() {
+	*x = FieldChange{}
+	mi := &file_limitary_v1_request_proto_msgTypes[0]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *FieldChange) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*FieldChange) ProtoMessage() {}
+
+func (x *FieldChange) ProtoReflect() protoreflect.Message {
+	mi := &file_limitary_v1_request_proto_msgTypes[0]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use FieldChange.ProtoReflect.Descriptor instead.
+func (*FieldChange) Descriptor() ([]byte, []int) {
+	return file_limitary_v1_request_proto_rawDescGZIP(), []int{0}
+}
+
+func (x *FieldChange) GetField() string {
+	if x != nil {
+		return x.Field
+	}
+	return ""
+}
+
+func (x *FieldChange) GetFrom() string {
+	if x != nil {
+		return x.From
+	}
+	return ""
+}
+
+func (x *FieldChange) GetTo() string {
+	if x != nil {
+		return x.To
+	}
+	return ""
+}
+
 // A change waiting for, or decided by, a second principal. Until it is confirmed it changes nothing.
 type ChangeRequest struct {
 	state    protoimpl.MessageState `protogen:"open.v1"`
@@ -152,13 +217,17 @@ type ChangeRequest struct {
 	// What it would have done when it was made.
 	VerdictsChanged int32   `protobuf:"varint,15,opt,name=verdicts_changed,json=verdictsChanged,proto3" json:"verdicts_changed,omitempty"`
 	SignalsEnded    []int64 `protobuf:"varint,16,rep,packed,name=signals_ended,json=signalsEnded,proto3" json:"signals_ended,omitempty"`
-	unknownFields   protoimpl.UnknownFields
-	sizeCache       protoimpl.SizeCache
+	// The number of the version to withdraw.
+	Version int32 `protobuf:"varint,17,opt,name=version,proto3" json:"version,omitempty"`
+	// What it would set, against what stands now.
+	FieldChanges  []*FieldChange `protobuf:"bytes,18,rep,name=field_changes,json=fieldChanges,proto3" json:"field_changes,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
 }
 
 func (x *ChangeRequest) Reset() {
 	*x = ChangeRequest{}
-	mi := &file_limitary_v1_request_proto_msgTypes[0]
+	mi := &file_limitary_v1_request_proto_msgTypes[1]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -170,7 +239,7 @@ func (x *ChangeRequest) String() string {
 func (*ChangeRequest) ProtoMessage() {}
 
 func (x *ChangeRequest) ProtoReflect() protoreflect.Message {
-	mi := &file_limitary_v1_request_proto_msgTypes[0]
+	mi := &file_limitary_v1_request_proto_msgTypes[1]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -183,7 +252,7 @@ func (x *ChangeRequest) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use ChangeRequest.ProtoReflect.Descriptor instead.
 func (*ChangeRequest) Descriptor() ([]byte, []int) {
-	return file_limitary_v1_request_proto_rawDescGZIP(), []int{0}
+	return file_limitary_v1_request_proto_rawDescGZIP(), []int{1}
 }
 
 func (x *ChangeRequest) GetId() int64 {
@@ -298,11 +367,29 @@ func (x *ChangeRequest) GetSignalsEnded() []int64 {
 	return nil
 }
 
+func (x *ChangeRequest) GetVersion() int32 {
+	if x != nil {
+		return x.Version
+	}
+	return 0
+}
+
+func (x *ChangeRequest) GetFieldChanges() []*FieldChange {
+	if x != nil {
+		return x.FieldChanges
+	}
+	return nil
+}
+
 var File_limitary_v1_request_proto protoreflect.FileDescriptor
 
 const file_limitary_v1_request_proto_rawDesc = "" +
 	"\n" +
-	"\x19limitary/v1/request.proto\x12\vlimitary.v1\x1a\x1fgoogle/protobuf/timestamp.proto\"\xc1\x04\n" +
+	"\x19limitary/v1/request.proto\x12\vlimitary.v1\x1a\x1fgoogle/protobuf/timestamp.proto\"G\n" +
+	"\vFieldChange\x12\x14\n" +
+	"\x05field\x18\x01 \x01(\tR\x05field\x12\x12\n" +
+	"\x04from\x18\x02 \x01(\tR\x04from\x12\x0e\n" +
+	"\x02to\x18\x03 \x01(\tR\x02to\"\x9a\x05\n" +
 	"\rChangeRequest\x12\x0e\n" +
 	"\x02id\x18\x01 \x01(\x03R\x02id\x12+\n" +
 	"\x04kind\x18\x02 \x01(\x0e2\x17.limitary.v1.ChangeKindR\x04kind\x121\n" +
@@ -324,14 +411,17 @@ const file_limitary_v1_request_proto_rawDesc = "" +
 	"decideTime\x12'\n" +
 	"\x0fdecision_reason\x18\x0e \x01(\tR\x0edecisionReason\x12)\n" +
 	"\x10verdicts_changed\x18\x0f \x01(\x05R\x0fverdictsChanged\x12#\n" +
-	"\rsignals_ended\x18\x10 \x03(\x03R\fsignalsEnded*\x99\x01\n" +
+	"\rsignals_ended\x18\x10 \x03(\x03R\fsignalsEnded\x12\x18\n" +
+	"\aversion\x18\x11 \x01(\x05R\aversion\x12=\n" +
+	"\rfield_changes\x18\x12 \x03(\v2\x18.limitary.v1.FieldChangeR\ffieldChanges*\xbb\x01\n" +
 	"\n" +
 	"ChangeKind\x12\x1b\n" +
 	"\x17CHANGE_KIND_UNSPECIFIED\x10\x00\x12\x1b\n" +
 	"\x17CHANGE_KIND_VOID_RESULT\x10\x01\x12\x1c\n" +
 	"\x18CHANGE_KIND_AMEND_RESULT\x10\x02\x12\x18\n" +
 	"\x14CHANGE_KIND_ADD_MARK\x10\x03\x12\x19\n" +
-	"\x15CHANGE_KIND_VOID_MARK\x10\x04*\x81\x01\n" +
+	"\x15CHANGE_KIND_VOID_MARK\x10\x04\x12 \n" +
+	"\x1cCHANGE_KIND_WITHDRAW_VERSION\x10\x05*\x81\x01\n" +
 	"\fChangeStatus\x12\x1d\n" +
 	"\x19CHANGE_STATUS_UNSPECIFIED\x10\x00\x12\x19\n" +
 	"\x15CHANGE_STATUS_PENDING\x10\x01\x12\x1b\n" +
@@ -351,23 +441,25 @@ func file_limitary_v1_request_proto_rawDescGZIP() []byte {
 }
 
 var file_limitary_v1_request_proto_enumTypes = make([]protoimpl.EnumInfo, 2)
-var file_limitary_v1_request_proto_msgTypes = make([]protoimpl.MessageInfo, 1)
+var file_limitary_v1_request_proto_msgTypes = make([]protoimpl.MessageInfo, 2)
 var file_limitary_v1_request_proto_goTypes = []any{
 	(ChangeKind)(0),               // 0: limitary.v1.ChangeKind
 	(ChangeStatus)(0),             // 1: limitary.v1.ChangeStatus
-	(*ChangeRequest)(nil),         // 2: limitary.v1.ChangeRequest
-	(*timestamppb.Timestamp)(nil), // 3: google.protobuf.Timestamp
+	(*FieldChange)(nil),           // 2: limitary.v1.FieldChange
+	(*ChangeRequest)(nil),         // 3: limitary.v1.ChangeRequest
+	(*timestamppb.Timestamp)(nil), // 4: google.protobuf.Timestamp
 }
 var file_limitary_v1_request_proto_depIdxs = []int32{
 	0, // 0: limitary.v1.ChangeRequest.kind:type_name -> limitary.v1.ChangeKind
 	1, // 1: limitary.v1.ChangeRequest.status:type_name -> limitary.v1.ChangeStatus
-	3, // 2: limitary.v1.ChangeRequest.create_time:type_name -> google.protobuf.Timestamp
-	3, // 3: limitary.v1.ChangeRequest.decide_time:type_name -> google.protobuf.Timestamp
-	4, // [4:4] is the sub-list for method output_type
-	4, // [4:4] is the sub-list for method input_type
-	4, // [4:4] is the sub-list for extension type_name
-	4, // [4:4] is the sub-list for extension extendee
-	0, // [0:4] is the sub-list for field type_name
+	4, // 2: limitary.v1.ChangeRequest.create_time:type_name -> google.protobuf.Timestamp
+	4, // 3: limitary.v1.ChangeRequest.decide_time:type_name -> google.protobuf.Timestamp
+	2, // 4: limitary.v1.ChangeRequest.field_changes:type_name -> limitary.v1.FieldChange
+	5, // [5:5] is the sub-list for method output_type
+	5, // [5:5] is the sub-list for method input_type
+	5, // [5:5] is the sub-list for extension type_name
+	5, // [5:5] is the sub-list for extension extendee
+	0, // [0:5] is the sub-list for field type_name
 }
 
 func init() { file_limitary_v1_request_proto_init() }
@@ -381,7 +473,7 @@ func file_limitary_v1_request_proto_init() {
 			GoPackagePath: reflect.TypeOf(x{}).PkgPath(),
 			RawDescriptor: unsafe.Slice(unsafe.StringData(file_limitary_v1_request_proto_rawDesc), len(file_limitary_v1_request_proto_rawDesc)),
 			NumEnums:      2,
-			NumMessages:   1,
+			NumMessages:   2,
 			NumExtensions: 0,
 			NumServices:   0,
 		},

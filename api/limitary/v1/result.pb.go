@@ -2259,10 +2259,12 @@ func (x *VoidResultResponse) GetRequest() *ChangeRequest {
 type ConfirmRequestRequest struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
 	// Id of the change request.
-	Change        int64    `protobuf:"varint,1,opt,name=change,proto3" json:"change,omitempty"`
-	RequestId     string   `protobuf:"bytes,2,opt,name=request_id,json=requestId,proto3" json:"request_id,omitempty"`
-	Decision      Decision `protobuf:"varint,3,opt,name=decision,proto3,enum=limitary.v1.Decision" json:"decision,omitempty"`
-	Reason        string   `protobuf:"bytes,4,opt,name=reason,proto3" json:"reason,omitempty"`
+	Change    int64    `protobuf:"varint,1,opt,name=change,proto3" json:"change,omitempty"`
+	RequestId string   `protobuf:"bytes,2,opt,name=request_id,json=requestId,proto3" json:"request_id,omitempty"`
+	Decision  Decision `protobuf:"varint,3,opt,name=decision,proto3,enum=limitary.v1.Decision" json:"decision,omitempty"`
+	Reason    string   `protobuf:"bytes,4,opt,name=reason,proto3" json:"reason,omitempty"`
+	// Signals that have come to be ended by the change since it was asked for, and that the confirmer has looked at.
+	SignalsEnded  []int64 `protobuf:"varint,5,rep,packed,name=signals_ended,json=signalsEnded,proto3" json:"signals_ended,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -2323,6 +2325,13 @@ func (x *ConfirmRequestRequest) GetReason() string {
 		return x.Reason
 	}
 	return ""
+}
+
+func (x *ConfirmRequestRequest) GetSignalsEnded() []int64 {
+	if x != nil {
+		return x.SignalsEnded
+	}
+	return nil
 }
 
 type ConfirmRequestResponse struct {
@@ -2687,13 +2696,14 @@ const file_limitary_v1_result_proto_rawDesc = "" +
 	"reasonCode\x12\x16\n" +
 	"\x06reason\x18\a \x01(\tR\x06reason\"J\n" +
 	"\x12VoidResultResponse\x124\n" +
-	"\arequest\x18\x01 \x01(\v2\x1a.limitary.v1.ChangeRequestR\arequest\"\x99\x01\n" +
+	"\arequest\x18\x01 \x01(\v2\x1a.limitary.v1.ChangeRequestR\arequest\"\xbe\x01\n" +
 	"\x15ConfirmRequestRequest\x12\x16\n" +
 	"\x06change\x18\x01 \x01(\x03R\x06change\x12\x1d\n" +
 	"\n" +
 	"request_id\x18\x02 \x01(\tR\trequestId\x121\n" +
 	"\bdecision\x18\x03 \x01(\x0e2\x15.limitary.v1.DecisionR\bdecision\x12\x16\n" +
-	"\x06reason\x18\x04 \x01(\tR\x06reason\"\x80\x01\n" +
+	"\x06reason\x18\x04 \x01(\tR\x06reason\x12#\n" +
+	"\rsignals_ended\x18\x05 \x03(\x03R\fsignalsEnded\"\x80\x01\n" +
 	"\x16ConfirmRequestResponse\x124\n" +
 	"\arequest\x18\x01 \x01(\v2\x1a.limitary.v1.ChangeRequestR\arequest\x120\n" +
 	"\x06tracks\x18\x02 \x03(\v2\x18.limitary.v1.TrackUpdateR\x06tracks\"\x9a\x01\n" +

@@ -4,7 +4,7 @@
 // 	protoc        (unknown)
 // source: limitary/v1/rule_service.proto
 
-// The catalogue of rules.
+// The catalogue of rules, and what rules cost.
 
 package limitaryv1
 
@@ -269,7 +269,7 @@ var File_limitary_v1_rule_service_proto protoreflect.FileDescriptor
 
 const file_limitary_v1_rule_service_proto_rawDesc = "" +
 	"\n" +
-	"\x1elimitary/v1/rule_service.proto\x12\vlimitary.v1\x1a\x17limitary/v1/rules.proto\"\x12\n" +
+	"\x1elimitary/v1/rule_service.proto\x12\vlimitary.v1\x1a\x17limitary/v1/rules.proto\x1a\x1climitary/v1/run_length.proto\"\x12\n" +
 	"\x10ListRulesRequest\"^\n" +
 	"\x11ListRulesResponse\x121\n" +
 	"\trule_sets\x18\x01 \x03(\v2\x14.limitary.v1.RuleSetR\bruleSets\x12\x16\n" +
@@ -288,9 +288,10 @@ const file_limitary_v1_rule_service_proto_rawDesc = "" +
 	"\vdescription\x18\x02 \x01(\tR\vdescription\x12\x14\n" +
 	"\x05means\x18\x03 \x01(\tR\x05means\x12\x1d\n" +
 	"\n" +
-	"look_first\x18\x04 \x01(\tR\tlookFirst2Y\n" +
+	"look_first\x18\x04 \x01(\tR\tlookFirst2\xa5\x01\n" +
 	"\vRuleService\x12J\n" +
-	"\tListRules\x12\x1d.limitary.v1.ListRulesRequest\x1a\x1e.limitary.v1.ListRulesResponseB%Z#limitary/api/limitary/v1;limitaryv1b\x06proto3"
+	"\tListRules\x12\x1d.limitary.v1.ListRulesRequest\x1a\x1e.limitary.v1.ListRulesResponse\x12J\n" +
+	"\tRunLength\x12\x1d.limitary.v1.RunLengthRequest\x1a\x1e.limitary.v1.RunLengthResponseB%Z#limitary/api/limitary/v1;limitaryv1b\x06proto3"
 
 var (
 	file_limitary_v1_rule_service_proto_rawDescOnce sync.Once
@@ -311,15 +312,19 @@ var file_limitary_v1_rule_service_proto_goTypes = []any{
 	(*RuleSet)(nil),           // 2: limitary.v1.RuleSet
 	(*CatalogueRule)(nil),     // 3: limitary.v1.CatalogueRule
 	(*RuleSpec)(nil),          // 4: limitary.v1.RuleSpec
+	(*RunLengthRequest)(nil),  // 5: limitary.v1.RunLengthRequest
+	(*RunLengthResponse)(nil), // 6: limitary.v1.RunLengthResponse
 }
 var file_limitary_v1_rule_service_proto_depIdxs = []int32{
 	2, // 0: limitary.v1.ListRulesResponse.rule_sets:type_name -> limitary.v1.RuleSet
 	3, // 1: limitary.v1.RuleSet.rules:type_name -> limitary.v1.CatalogueRule
 	4, // 2: limitary.v1.CatalogueRule.spec:type_name -> limitary.v1.RuleSpec
 	0, // 3: limitary.v1.RuleService.ListRules:input_type -> limitary.v1.ListRulesRequest
-	1, // 4: limitary.v1.RuleService.ListRules:output_type -> limitary.v1.ListRulesResponse
-	4, // [4:5] is the sub-list for method output_type
-	3, // [3:4] is the sub-list for method input_type
+	5, // 4: limitary.v1.RuleService.RunLength:input_type -> limitary.v1.RunLengthRequest
+	1, // 5: limitary.v1.RuleService.ListRules:output_type -> limitary.v1.ListRulesResponse
+	6, // 6: limitary.v1.RuleService.RunLength:output_type -> limitary.v1.RunLengthResponse
+	5, // [5:7] is the sub-list for method output_type
+	3, // [3:5] is the sub-list for method input_type
 	3, // [3:3] is the sub-list for extension type_name
 	3, // [3:3] is the sub-list for extension extendee
 	0, // [0:3] is the sub-list for field type_name
@@ -331,6 +336,7 @@ func file_limitary_v1_rule_service_proto_init() {
 		return
 	}
 	file_limitary_v1_rules_proto_init()
+	file_limitary_v1_run_length_proto_init()
 	type x struct{}
 	out := protoimpl.TypeBuilder{
 		File: protoimpl.DescBuilder{

@@ -4,7 +4,7 @@
 // - protoc             (unknown)
 // source: limitary/v1/rule_service.proto
 
-// The catalogue of rules.
+// The catalogue of rules, and what rules cost.
 
 package limitaryv1
 
@@ -22,6 +22,7 @@ const _ = grpc.SupportPackageIsVersion9
 
 const (
 	RuleService_ListRules_FullMethodName = "/limitary.v1.RuleService/ListRules"
+	RuleService_RunLength_FullMethodName = "/limitary.v1.RuleService/RunLength"
 )
 
 // RuleServiceClient is the client API for RuleService service.
@@ -30,6 +31,8 @@ const (
 type RuleServiceClient interface {
 	// ListRules gives the published sets. Role: any.
 	ListRules(ctx context.Context, in *ListRulesRequest, opts ...grpc.CallOption) (*ListRulesResponse, error)
+	// RunLength tells what rules cost in false alarms and what they catch. It stores nothing. Role: any.
+	RunLength(ctx context.Context, in *RunLengthRequest, opts ...grpc.CallOption) (*RunLengthResponse, error)
 }
 
 type ruleServiceClient struct {
@@ -50,12 +53,24 @@ func (c *ruleServiceClient) ListRules(ctx context.Context, in *ListRulesRequest,
 	return out, nil
 }
 
+func (c *ruleServiceClient) RunLength(ctx context.Context, in *RunLengthRequest, opts ...grpc.CallOption) (*RunLengthResponse, error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	out := new(RunLengthResponse)
+	err := c.cc.Invoke(ctx, RuleService_RunLength_FullMethodName, in, out, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	return out, nil
+}
+
 // RuleServiceServer is the server API for RuleService service.
 // All implementations must embed UnimplementedRuleServiceServer
 // for forward compatibility.
 type RuleServiceServer interface {
 	// ListRules gives the published sets. Role: any.
 	ListRules(context.Context, *ListRulesRequest) (*ListRulesResponse, error)
+	// RunLength tells what rules cost in false alarms and what they catch. It stores nothing. Role: any.
+	RunLength(context.Context, *RunLengthRequest) (*RunLengthResponse, error)
 	mustEmbedUnimplementedRuleServiceServer()
 }
 
@@ -68,6 +83,9 @@ type UnimplementedRuleServiceServer struct{}
 
 func (UnimplementedRuleServiceServer) ListRules(context.Context, *ListRulesRequest) (*ListRulesResponse, error) {
 	return nil, status.Error(codes.Unimplemented, "method ListRules not implemented")
+}
+func (UnimplementedRuleServiceServer) RunLength(context.Context, *RunLengthRequest) (*RunLengthResponse, error) {
+	return nil, status.Error(codes.Unimplemented, "method RunLength not implemented")
 }
 func (UnimplementedRuleServiceServer) mustEmbedUnimplementedRuleServiceServer() {}
 func (UnimplementedRuleServiceServer) testEmbeddedByValue()                     {}
@@ -108,6 +126,24 @@ func _RuleService_ListRules_Handler(srv interface{}, ctx context.Context, dec fu
 	return interceptor(ctx, in, info, handler)
 }
 
+func _RuleService_RunLength_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
+	in := new(RunLengthRequest)
+	if err := dec(in); err != nil {
+		return nil, err
+	}
+	if interceptor == nil {
+		return srv.(RuleServiceServer).RunLength(ctx, in)
+	}
+	info := &grpc.UnaryServerInfo{
+		Server:     srv,
+		FullMethod: RuleService_RunLength_FullMethodName,
+	}
+	handler := func(ctx context.Context, req interface{}) (interface{}, error) {
+		return srv.(RuleServiceServer).RunLength(ctx, req.(*RunLengthRequest))
+	}
+	return interceptor(ctx, in, info, handler)
+}
+
 // RuleService_ServiceDesc is the grpc.ServiceDesc for RuleService service.
 // It's only intended for direct use with grpc.RegisterService,
 // and not to be introspected or modified (even as a copy)
@@ -118,6 +154,10 @@ var RuleService_ServiceDesc = grpc.ServiceDesc{
 		{
 			MethodName: "ListRules",
 			Handler:    _RuleService_ListRules_Handler,
+		},
+		{
+			MethodName: "RunLength",
+			Handler:    _RuleService_RunLength_Handler,
 		},
 	},
 	Streams:  []grpc.StreamDesc{},

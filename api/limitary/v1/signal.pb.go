@@ -478,8 +478,10 @@ type QuerySignalsRequest struct {
 	Lot       string                 `protobuf:"bytes,10,opt,name=lot,proto3" json:"lot,omitempty"`
 	// Only signals that changed after they were closed.
 	ChangedAfterClosing bool `protobuf:"varint,11,opt,name=changed_after_closing,json=changedAfterClosing,proto3" json:"changed_after_closing,omitempty"`
-	unknownFields       protoimpl.UnknownFields
-	sizeCache           protoimpl.SizeCache
+	// Only signals of this occurrence.
+	Occurrence    int64 `protobuf:"varint,12,opt,name=occurrence,proto3" json:"occurrence,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
 }
 
 func (x *QuerySignalsRequest) Reset() {
@@ -587,6 +589,13 @@ func (x *QuerySignalsRequest) GetChangedAfterClosing() bool {
 		return x.ChangedAfterClosing
 	}
 	return false
+}
+
+func (x *QuerySignalsRequest) GetOccurrence() int64 {
+	if x != nil {
+		return x.Occurrence
+	}
+	return 0
 }
 
 type QuerySignalsResponse struct {
@@ -1155,7 +1164,7 @@ const file_limitary_v1_signal_proto_rawDesc = "" +
 	"\x06author\x18\x01 \x01(\tR\x06author\x12\x12\n" +
 	"\x04text\x18\x02 \x01(\tR\x04text\x12;\n" +
 	"\vrecorded_at\x18\x03 \x01(\v2\x1a.google.protobuf.TimestampR\n" +
-	"recordedAt\"\xa8\x03\n" +
+	"recordedAt\"\xc8\x03\n" +
 	"\x13QuerySignalsRequest\x12\x14\n" +
 	"\x05chart\x18\x01 \x01(\tR\x05chart\x12\x16\n" +
 	"\x06labels\x18\x02 \x03(\tR\x06labels\x12\x12\n" +
@@ -1169,7 +1178,10 @@ const file_limitary_v1_signal_proto_rawDesc = "" +
 	"page_token\x18\t \x01(\tR\tpageToken\x12\x10\n" +
 	"\x03lot\x18\n" +
 	" \x01(\tR\x03lot\x122\n" +
-	"\x15changed_after_closing\x18\v \x01(\bR\x13changedAfterClosing\"m\n" +
+	"\x15changed_after_closing\x18\v \x01(\bR\x13changedAfterClosing\x12\x1e\n" +
+	"\n" +
+	"occurrence\x18\f \x01(\x03R\n" +
+	"occurrence\"m\n" +
 	"\x14QuerySignalsResponse\x12-\n" +
 	"\asignals\x18\x01 \x03(\v2\x13.limitary.v1.SignalR\asignals\x12&\n" +
 	"\x0fnext_page_token\x18\x02 \x01(\tR\rnextPageToken\"*\n" +

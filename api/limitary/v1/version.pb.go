@@ -134,10 +134,11 @@ func (x *ResultKey) GetSourceId() string {
 
 // Stored results as the basis of an estimate: those of the track measured in [from, to).
 type StoredBasis struct {
-	state         protoimpl.MessageState `protogen:"open.v1"`
-	From          *timestamppb.Timestamp `protobuf:"bytes,1,opt,name=from,proto3" json:"from,omitempty"`
-	To            *timestamppb.Timestamp `protobuf:"bytes,2,opt,name=to,proto3" json:"to,omitempty"`
-	Exclusions    []*StoredExclusion     `protobuf:"bytes,3,rep,name=exclusions,proto3" json:"exclusions,omitempty"`
+	state protoimpl.MessageState `protogen:"open.v1"`
+	From  *timestamppb.Timestamp `protobuf:"bytes,1,opt,name=from,proto3" json:"from,omitempty"`
+	To    *timestamppb.Timestamp `protobuf:"bytes,2,opt,name=to,proto3" json:"to,omitempty"`
+	// At most 2,000.
+	Exclusions    []*StoredExclusion `protobuf:"bytes,3,rep,name=exclusions,proto3" json:"exclusions,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -252,8 +253,9 @@ type SentBasis struct {
 	//
 	//	*SentBasis_Points
 	//	*SentBasis_Series
-	Data       isSentBasis_Data `protobuf_oneof:"data"`
-	Exclusions []*Exclusion     `protobuf:"bytes,3,rep,name=exclusions,proto3" json:"exclusions,omitempty"`
+	Data isSentBasis_Data `protobuf_oneof:"data"`
+	// At most 2,000.
+	Exclusions []*Exclusion `protobuf:"bytes,3,rep,name=exclusions,proto3" json:"exclusions,omitempty"`
 	// Where the data come from, for people.
 	Description   string `protobuf:"bytes,4,opt,name=description,proto3" json:"description,omitempty"`
 	unknownFields protoimpl.UnknownFields
@@ -787,7 +789,8 @@ type Version struct {
 	Intervals    []*Interval      `protobuf:"bytes,19,rep,name=intervals,proto3" json:"intervals,omitempty"`
 	Findings     []*Finding       `protobuf:"bytes,20,rep,name=findings,proto3" json:"findings,omitempty"`
 	// The data and the exclusions behind it.
-	Basis           string                 `protobuf:"bytes,21,opt,name=basis,proto3" json:"basis,omitempty"`
+	Basis string `protobuf:"bytes,21,opt,name=basis,proto3" json:"basis,omitempty"`
+	// ListVersions leaves out excluded_results and excluded_points; GetVersion has them.
 	ExcludedResults []*StoredExclusion     `protobuf:"bytes,22,rep,name=excluded_results,json=excludedResults,proto3" json:"excluded_results,omitempty"`
 	ExcludedPoints  []*Exclusion           `protobuf:"bytes,23,rep,name=excluded_points,json=excludedPoints,proto3" json:"excluded_points,omitempty"`
 	Author          string                 `protobuf:"bytes,24,opt,name=author,proto3" json:"author,omitempty"`
@@ -1413,12 +1416,13 @@ func (x *RejectVersionResponse) GetVersion() *Version {
 }
 
 type WithdrawVersionRequest struct {
-	state         protoimpl.MessageState `protogen:"open.v1"`
-	Chart         string                 `protobuf:"bytes,1,opt,name=chart,proto3" json:"chart,omitempty"`
-	Version       int32                  `protobuf:"varint,2,opt,name=version,proto3" json:"version,omitempty"`
-	RequestId     string                 `protobuf:"bytes,3,opt,name=request_id,json=requestId,proto3" json:"request_id,omitempty"`
-	Rejudge       bool                   `protobuf:"varint,4,opt,name=rejudge,proto3" json:"rejudge,omitempty"`
-	Reason        string                 `protobuf:"bytes,5,opt,name=reason,proto3" json:"reason,omitempty"`
+	state     protoimpl.MessageState `protogen:"open.v1"`
+	Chart     string                 `protobuf:"bytes,1,opt,name=chart,proto3" json:"chart,omitempty"`
+	Version   int32                  `protobuf:"varint,2,opt,name=version,proto3" json:"version,omitempty"`
+	RequestId string                 `protobuf:"bytes,3,opt,name=request_id,json=requestId,proto3" json:"request_id,omitempty"`
+	// Needed, with a reason, where stored results would be judged anew.
+	Rejudge       bool   `protobuf:"varint,4,opt,name=rejudge,proto3" json:"rejudge,omitempty"`
+	Reason        string `protobuf:"bytes,5,opt,name=reason,proto3" json:"reason,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -1489,11 +1493,14 @@ func (x *WithdrawVersionRequest) GetReason() string {
 }
 
 type WithdrawVersionResponse struct {
-	state           protoimpl.MessageState `protogen:"open.v1"`
-	Version         *Version               `protobuf:"bytes,1,opt,name=version,proto3" json:"version,omitempty"`
-	ResultsRejudged int64                  `protobuf:"varint,2,opt,name=results_rejudged,json=resultsRejudged,proto3" json:"results_rejudged,omitempty"`
-	unknownFields   protoimpl.UnknownFields
-	sizeCache       protoimpl.SizeCache
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// As it now stands: still approved where there is a request.
+	Version         *Version `protobuf:"bytes,1,opt,name=version,proto3" json:"version,omitempty"`
+	ResultsRejudged int64    `protobuf:"varint,2,opt,name=results_rejudged,json=resultsRejudged,proto3" json:"results_rejudged,omitempty"`
+	// Set where another principal confirms it first.
+	Request       *ChangeRequest `protobuf:"bytes,3,opt,name=request,proto3" json:"request,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
 }
 
 func (x *WithdrawVersionResponse) Reset() {
@@ -1538,6 +1545,13 @@ func (x *WithdrawVersionResponse) GetResultsRejudged() int64 {
 		return x.ResultsRejudged
 	}
 	return 0
+}
+
+func (x *WithdrawVersionResponse) GetRequest() *ChangeRequest {
+	if x != nil {
+		return x.Request
+	}
+	return nil
 }
 
 type GetVersionRequest struct {
@@ -1752,7 +1766,7 @@ var File_limitary_v1_version_proto protoreflect.FileDescriptor
 
 const file_limitary_v1_version_proto_rawDesc = "" +
 	"\n" +
-	"\x19limitary/v1/version.proto\x12\vlimitary.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x18limitary/v1/limits.proto\x1a\x17limitary/v1/rules.proto\"@\n" +
+	"\x19limitary/v1/version.proto\x12\vlimitary.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x18limitary/v1/limits.proto\x1a\x19limitary/v1/request.proto\x1a\x17limitary/v1/rules.proto\"@\n" +
 	"\tResultKey\x12\x16\n" +
 	"\x06source\x18\x01 \x01(\tR\x06source\x12\x1b\n" +
 	"\tsource_id\x18\x02 \x01(\tR\bsourceId\"\xa7\x01\n" +
@@ -1885,10 +1899,11 @@ const file_limitary_v1_version_proto_rawDesc = "" +
 	"\n" +
 	"request_id\x18\x03 \x01(\tR\trequestId\x12\x18\n" +
 	"\arejudge\x18\x04 \x01(\bR\arejudge\x12\x16\n" +
-	"\x06reason\x18\x05 \x01(\tR\x06reason\"t\n" +
+	"\x06reason\x18\x05 \x01(\tR\x06reason\"\xaa\x01\n" +
 	"\x17WithdrawVersionResponse\x12.\n" +
 	"\aversion\x18\x01 \x01(\v2\x14.limitary.v1.VersionR\aversion\x12)\n" +
-	"\x10results_rejudged\x18\x02 \x01(\x03R\x0fresultsRejudged\"C\n" +
+	"\x10results_rejudged\x18\x02 \x01(\x03R\x0fresultsRejudged\x124\n" +
+	"\arequest\x18\x03 \x01(\v2\x1a.limitary.v1.ChangeRequestR\arequest\"C\n" +
 	"\x11GetVersionRequest\x12\x14\n" +
 	"\x05chart\x18\x01 \x01(\tR\x05chart\x12\x18\n" +
 	"\aversion\x18\x02 \x01(\x05R\aversion\"D\n" +
@@ -1969,8 +1984,9 @@ var file_limitary_v1_version_proto_goTypes = []any{
 	(*SigmaEstimate)(nil),           // 33: limitary.v1.SigmaEstimate
 	(*Interval)(nil),                // 34: limitary.v1.Interval
 	(*Finding)(nil),                 // 35: limitary.v1.Finding
-	(*ComputeLimitsRequest)(nil),    // 36: limitary.v1.ComputeLimitsRequest
-	(*ComputeLimitsResponse)(nil),   // 37: limitary.v1.ComputeLimitsResponse
+	(*ChangeRequest)(nil),           // 36: limitary.v1.ChangeRequest
+	(*ComputeLimitsRequest)(nil),    // 37: limitary.v1.ComputeLimitsRequest
+	(*ComputeLimitsResponse)(nil),   // 38: limitary.v1.ComputeLimitsResponse
 }
 var file_limitary_v1_version_proto_depIdxs = []int32{
 	21, // 0: limitary.v1.StoredBasis.from:type_name -> google.protobuf.Timestamp
@@ -2013,27 +2029,28 @@ var file_limitary_v1_version_proto_depIdxs = []int32{
 	9,  // 37: limitary.v1.ApproveVersionResponse.version:type_name -> limitary.v1.Version
 	9,  // 38: limitary.v1.RejectVersionResponse.version:type_name -> limitary.v1.Version
 	9,  // 39: limitary.v1.WithdrawVersionResponse.version:type_name -> limitary.v1.Version
-	9,  // 40: limitary.v1.GetVersionResponse.version:type_name -> limitary.v1.Version
-	9,  // 41: limitary.v1.ListVersionsResponse.versions:type_name -> limitary.v1.Version
-	36, // 42: limitary.v1.LimitService.ComputeLimits:input_type -> limitary.v1.ComputeLimitsRequest
-	6,  // 43: limitary.v1.LimitService.ProposeVersion:input_type -> limitary.v1.ProposeVersionRequest
-	11, // 44: limitary.v1.LimitService.ApproveVersion:input_type -> limitary.v1.ApproveVersionRequest
-	13, // 45: limitary.v1.LimitService.RejectVersion:input_type -> limitary.v1.RejectVersionRequest
-	15, // 46: limitary.v1.LimitService.WithdrawVersion:input_type -> limitary.v1.WithdrawVersionRequest
-	17, // 47: limitary.v1.LimitService.GetVersion:input_type -> limitary.v1.GetVersionRequest
-	19, // 48: limitary.v1.LimitService.ListVersions:input_type -> limitary.v1.ListVersionsRequest
-	37, // 49: limitary.v1.LimitService.ComputeLimits:output_type -> limitary.v1.ComputeLimitsResponse
-	10, // 50: limitary.v1.LimitService.ProposeVersion:output_type -> limitary.v1.ProposeVersionResponse
-	12, // 51: limitary.v1.LimitService.ApproveVersion:output_type -> limitary.v1.ApproveVersionResponse
-	14, // 52: limitary.v1.LimitService.RejectVersion:output_type -> limitary.v1.RejectVersionResponse
-	16, // 53: limitary.v1.LimitService.WithdrawVersion:output_type -> limitary.v1.WithdrawVersionResponse
-	18, // 54: limitary.v1.LimitService.GetVersion:output_type -> limitary.v1.GetVersionResponse
-	20, // 55: limitary.v1.LimitService.ListVersions:output_type -> limitary.v1.ListVersionsResponse
-	49, // [49:56] is the sub-list for method output_type
-	42, // [42:49] is the sub-list for method input_type
-	42, // [42:42] is the sub-list for extension type_name
-	42, // [42:42] is the sub-list for extension extendee
-	0,  // [0:42] is the sub-list for field type_name
+	36, // 40: limitary.v1.WithdrawVersionResponse.request:type_name -> limitary.v1.ChangeRequest
+	9,  // 41: limitary.v1.GetVersionResponse.version:type_name -> limitary.v1.Version
+	9,  // 42: limitary.v1.ListVersionsResponse.versions:type_name -> limitary.v1.Version
+	37, // 43: limitary.v1.LimitService.ComputeLimits:input_type -> limitary.v1.ComputeLimitsRequest
+	6,  // 44: limitary.v1.LimitService.ProposeVersion:input_type -> limitary.v1.ProposeVersionRequest
+	11, // 45: limitary.v1.LimitService.ApproveVersion:input_type -> limitary.v1.ApproveVersionRequest
+	13, // 46: limitary.v1.LimitService.RejectVersion:input_type -> limitary.v1.RejectVersionRequest
+	15, // 47: limitary.v1.LimitService.WithdrawVersion:input_type -> limitary.v1.WithdrawVersionRequest
+	17, // 48: limitary.v1.LimitService.GetVersion:input_type -> limitary.v1.GetVersionRequest
+	19, // 49: limitary.v1.LimitService.ListVersions:input_type -> limitary.v1.ListVersionsRequest
+	38, // 50: limitary.v1.LimitService.ComputeLimits:output_type -> limitary.v1.ComputeLimitsResponse
+	10, // 51: limitary.v1.LimitService.ProposeVersion:output_type -> limitary.v1.ProposeVersionResponse
+	12, // 52: limitary.v1.LimitService.ApproveVersion:output_type -> limitary.v1.ApproveVersionResponse
+	14, // 53: limitary.v1.LimitService.RejectVersion:output_type -> limitary.v1.RejectVersionResponse
+	16, // 54: limitary.v1.LimitService.WithdrawVersion:output_type -> limitary.v1.WithdrawVersionResponse
+	18, // 55: limitary.v1.LimitService.GetVersion:output_type -> limitary.v1.GetVersionResponse
+	20, // 56: limitary.v1.LimitService.ListVersions:output_type -> limitary.v1.ListVersionsResponse
+	50, // [50:57] is the sub-list for method output_type
+	43, // [43:50] is the sub-list for method input_type
+	43, // [43:43] is the sub-list for extension type_name
+	43, // [43:43] is the sub-list for extension extendee
+	0,  // [0:43] is the sub-list for field type_name
 }
 
 func init() { file_limitary_v1_version_proto_init() }
@@ -2042,6 +2059,7 @@ func file_limitary_v1_version_proto_init() {
 		return
 	}
 	file_limitary_v1_limits_proto_init()
+	file_limitary_v1_request_proto_init()
 	file_limitary_v1_rules_proto_init()
 	file_limitary_v1_version_proto_msgTypes[3].OneofWrappers = []any{
 		(*SentBasis_Points)(nil),

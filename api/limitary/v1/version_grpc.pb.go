@@ -43,7 +43,8 @@ type LimitServiceClient interface {
 	ApproveVersion(ctx context.Context, in *ApproveVersionRequest, opts ...grpc.CallOption) (*ApproveVersionResponse, error)
 	// RejectVersion ends a proposal. Role: approver.
 	RejectVersion(ctx context.Context, in *RejectVersionRequest, opts ...grpc.CallOption) (*RejectVersionResponse, error)
-	// WithdrawVersion takes an approved version out of force; nothing is in force until the next. Role: approver.
+	// WithdrawVersion takes an approved version out of force; nothing is in force until the next. Where stored results would
+	// be judged anew, or the version is the caller's own, it is a request for another principal to confirm. Role: approver.
 	WithdrawVersion(ctx context.Context, in *WithdrawVersionRequest, opts ...grpc.CallOption) (*WithdrawVersionResponse, error)
 	GetVersion(ctx context.Context, in *GetVersionRequest, opts ...grpc.CallOption) (*GetVersionResponse, error)
 	// ListVersions gives the versions of a chart, newest number first.
@@ -141,7 +142,8 @@ type LimitServiceServer interface {
 	ApproveVersion(context.Context, *ApproveVersionRequest) (*ApproveVersionResponse, error)
 	// RejectVersion ends a proposal. Role: approver.
 	RejectVersion(context.Context, *RejectVersionRequest) (*RejectVersionResponse, error)
-	// WithdrawVersion takes an approved version out of force; nothing is in force until the next. Role: approver.
+	// WithdrawVersion takes an approved version out of force; nothing is in force until the next. Where stored results would
+	// be judged anew, or the version is the caller's own, it is a request for another principal to confirm. Role: approver.
 	WithdrawVersion(context.Context, *WithdrawVersionRequest) (*WithdrawVersionResponse, error)
 	GetVersion(context.Context, *GetVersionRequest) (*GetVersionResponse, error)
 	// ListVersions gives the versions of a chart, newest number first.
