@@ -47,6 +47,8 @@ func (e *Error) Error() string { return e.Field + ": " + e.Problem }
 type Judge struct {
 	limits Limits
 	plans  [chart.Roles]*rules.Plan
+	// boundsWatched: a bound can enter a rule of the location trace.
+	boundsWatched bool
 }
 
 // New checks the limits and compiles the rules. Errors are *Error.
@@ -78,6 +80,7 @@ func New(l Limits) (*Judge, error) {
 		}
 		j.plans[role] = plan
 	}
+	j.boundsWatched = watchesBounds(j.plans[chart.Location])
 	return j, nil
 }
 

@@ -1,6 +1,7 @@
 package judge_test
 
 import (
+	"bytes"
 	"errors"
 	"fmt"
 	"math"
@@ -127,6 +128,45 @@ func TestAMovingRangeReachesAcrossNoBreakAndNoBound(t *testing.T) {
 	}
 	if v := verdictsOf(j, j.NewState(), greater(13.01))[0]; v.Standing != judge.ActOn || !v.ByBound || len(v.Hits) != 1 {
 		t.Errorf(">13.01 with an upper line at 13: %+v, want ACT by bound", v)
+	}
+}
+
+// TestABoundIsClearOnlyWhereARuleWatchesIt: a bound enters the rules about its own place and about runs. Where there are
+// no others it is not judged, is no point, and leaves the state as it was.
+func TestABoundIsClearOnlyWhereARuleWatchesIt(t *testing.T) {
+	sums := []rules.Spec{trend(6), {Kind: rules.Alternating, N: 14}, {Kind: rules.EWMA, Lambda: 0.2, Limit: 3}, {Kind: rules.CUSUM, Reference: 0.5, Interval: 5}}
+	for _, tc := range []struct {
+		name  string
+		rules []rules.Spec
+		want  judge.Standing
+	}{
+		{"no rule", nil, judge.NotJudged},
+		{"rules that need values", sums, judge.NotJudged},
+		{"a line", []rules.Spec{{Kind: rules.Beyond, K: 1, M: 1, Z: 3, Sides: rules.UpperOnly}}, judge.Clear},
+		{"a run beside rules that need values", append(slices.Clone(sums), sameSide(8)), judge.Clear},
+		{"a span", []rules.Spec{{Kind: rules.Span, Z: 2}}, judge.Clear},
+		{"points within", []rules.Spec{{Kind: rules.Within, N: 15, Z: 1}}, judge.Clear},
+		{"points outside", []rules.Spec{{Kind: rules.Outside, N: 8, Z: 1}}, judge.Clear},
+	} {
+		t.Run(tc.name, func(t *testing.T) {
+			j := mustNew(t, judge.Limits{Kind: chart.Individuals, SubgroupSize: 1, Places: 2, Traces: [chart.Roles]*judge.Trace{
+				trace(10, 1, tc.rules...), trace(1.13, 0.85, beyond(1, 1, 3))}})
+			st, before := j.NewState(), j.NewState()
+			verdictsOf(j, st, measured(10.2))
+			j.CopyState(before, st)
+			v := verdictsOf(j, st, less(12))[0]
+			if v.Standing != tc.want {
+				t.Fatalf("<12: %v %v, want %v", v.Standing, v.Reason, tc.want)
+			}
+			if tc.want == judge.NotJudged {
+				if v.Reason != judge.BoundProvesNothing || v.ByBound || v.Traces[chart.Location].Point {
+					t.Errorf("<12: %+v, want no point, BOUND_PROVES_NOTHING", v)
+				}
+				if got, want := j.AppendState(nil, st), j.AppendState(nil, before); !bytes.Equal(got, want) {
+					t.Errorf("state %x, before it %x", got, want)
+				}
+			}
+		})
 	}
 }
 

@@ -2,6 +2,7 @@ package judge
 
 import (
 	"math"
+	"slices"
 
 	"limitary/internal/chart"
 	"limitary/internal/decimal"
@@ -53,7 +54,7 @@ const (
 	NoVersion
 	// TooFewReadings: fewer than any trace needs.
 	TooFewReadings
-	// BoundProvesNothing: a less-than or greater-than result that leaves open what it would be.
+	// BoundProvesNothing: a less-than or greater-than result that leaves open what it would be, or that no rule watches.
 	BoundProvesNothing
 	// Voided: the result was voided.
 	Voided
@@ -253,12 +254,24 @@ func held(spread float64) float64 {
 	return math.MaxFloat64 // for infinity, and for what comes of two of them
 }
 
-// judgeBound judges a result of which only a bound is known. It has a location point where the bound proves a verdict,
-// and never one of dispersion.
+// watchesBounds reports whether a bound can enter a rule of the trace. It enters no trend, alternation, EWMA or CUSUM:
+// where a trace has no other rules, nothing looks at a bound, and it is not clear.
+func watchesBounds(p *rules.Plan) bool {
+	return p != nil && slices.ContainsFunc(p.Specs(), func(s rules.Spec) bool {
+		switch s.Kind {
+		case rules.Trend, rules.Alternating, rules.EWMA, rules.CUSUM:
+			return false
+		}
+		return true
+	})
+}
+
+// judgeBound judges a result of which only a bound is known. It has a location point where the bound proves a verdict
+// and a rule watches it, and never one of dispersion.
 func (j *Judge) judgeBound(st *State, pt Point, bound decimal.Bound, v *Verdict) {
 	v.Reason = BoundProvesNothing
 	x, scale, ok := j.location(pt)
-	if !ok || bound == decimal.Measured {
+	if !ok || bound == decimal.Measured || !j.boundsWatched {
 		return
 	}
 	proven := j.plans[chart.Location].JudgeBound(st.traces[chart.Location], x, bound, scale, func(h rules.Hit) {
