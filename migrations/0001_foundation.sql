@@ -18,6 +18,9 @@ CREATE TABLE principals (
   created_at timestamptz NOT NULL DEFAULT clock_timestamp()
 );
 
+-- Ann and ann would pass for one person, and must not be the two that a change needs.
+CREATE UNIQUE INDEX principals_name_fold ON principals (lower(name));
+
 CREATE TABLE keys (
   key_id text COLLATE "C" CONSTRAINT keys_pkey PRIMARY KEY CONSTRAINT keys_id_form CHECK (key_id ~ '^[a-z0-9]{16}$'),
   principal text COLLATE "C" NOT NULL CONSTRAINT keys_principal_fkey REFERENCES principals (name),
@@ -340,9 +343,11 @@ CREATE TABLE track_releases (
 CREATE TABLE changes (
   change_id bigint GENERATED ALWAYS AS IDENTITY CONSTRAINT changes_pkey PRIMARY KEY,
   chart_id bigint NOT NULL CONSTRAINT changes_chart_fkey REFERENCES charts,
-  kind text NOT NULL CONSTRAINT changes_kind CHECK (kind IN ('VOID_RESULT', 'AMEND_RESULT', 'ADD_MARK', 'VOID_MARK')),
+  kind text NOT NULL CONSTRAINT changes_kind CHECK (kind IN ('VOID_RESULT', 'AMEND_RESULT', 'ADD_MARK', 'VOID_MARK', 'WITHDRAW_VERSION')),
   result_id bigint,
   mark_id bigint,
+  -- The version to withdraw.
+  version int,
   expected_revision int,
   -- The new content of an amended result, or the mark to add (JSON).
   content bytea,
@@ -366,7 +371,8 @@ CREATE TABLE change_decisions (
   recorded_at timestamptz NOT NULL,
   entry bigint NOT NULL,
   CONSTRAINT change_decisions_change_fkey FOREIGN KEY (change_id, author) REFERENCES changes (change_id, author),
-  CONSTRAINT change_decisions_second_person CHECK (decided_by <> author)
+  -- Whoever asked may take it back, and may not confirm it.
+  CONSTRAINT change_decisions_second_person CHECK (NOT confirmed OR decided_by <> author)
 );
 
 -- Repeated requests ---------------------------------------------------------------------------------------------------

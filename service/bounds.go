@@ -36,8 +36,12 @@ const (
 	ReasonBytesMax = definition.TextBytesMax
 	// ReasonCodeBytesMax bounds codes from the laboratory's own lists.
 	ReasonCodeBytesMax = 64
-	// SignalsMax bounds the signals named in the closing of one occurrence.
-	SignalsMax = 1_000
+	// SignalsMax bounds the signals named in the closing of one occurrence. They are decided on together, so it is far
+	// above what can be open on a track before anybody looks: about 1 MB.
+	SignalsMax = 100_000
+	// ExclusionsMax bounds what one computation or proposal leaves out of the estimate: each with a reason of its own, kept
+	// and shown with the version.
+	ExclusionsMax = 2_000
 	// PatternsMax bounds the patterns accepted in one approval, and the cautions of one proposal.
 	PatternsMax = 10_000
 )
@@ -121,7 +125,7 @@ func readBetween(from, to *timestamppb.Timestamp) (f, t time.Time, err error) {
 
 // checkName checks a text that names something: a lot, a source, a run.
 func checkName(field, s string, least int) error {
-	return definition.CheckText(field, s, least, definition.NameBytesMax)
+	return definition.CheckName(field, s, least, definition.NameBytesMax)
 }
 
 // checkWhy checks a reason code and a reason; least is 1 where a reason is required.

@@ -89,7 +89,7 @@ func (s *EvaluationService) ConfirmRequest(ctx context.Context, in *pb.ConfirmRe
 	if err := definition.CheckText("reason", in.Reason, least, ReasonBytesMax); err != nil {
 		return nil, err
 	}
-	change, tracks, err := s.store.DecideChange(ctx, who, req, in.Change, in.Decision == pb.Decision_DECISION_CONFIRM, in.Reason)
+	change, tracks, err := s.store.DecideChange(ctx, who, req, in.Change, in.Decision == pb.Decision_DECISION_CONFIRM, in.Reason, in.SignalsEnded)
 	if err != nil {
 		return nil, err
 	}

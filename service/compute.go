@@ -210,6 +210,9 @@ func (s *sent) takePoints(kind chart.Kind, points []*pb.Point) error {
 
 // exclude marks the groups left out of the estimate.
 func (s *sent) exclude(exclusions []*pb.Exclusion) error {
+	if err := tooMany("exclusions", len(exclusions), ExclusionsMax, "exclusions"); err != nil {
+		return err
+	}
 	for i, e := range exclusions {
 		field := func(name string) string { return fmt.Sprintf("exclusions[%d].%s", i, name) }
 		if e.Point < 0 || int(e.Point) >= len(s.of) {

@@ -85,7 +85,7 @@ func trackStateToProto(s store.TrackState) pb.TrackState {
 func trackToProto(t store.Track) *pb.TrackStatus {
 	return &pb.TrackStatus{
 		Chart: t.Chart, Lot: t.Lot, State: trackStateToProto(t.State()), HoldSince: timeToProto(t.HoldSince), OpenSignals: int32(t.OpenSignals),
-		Version: int32(t.Version), Results: t.Results, LastMeasuredAt: timeToProto(t.LastMeasuredAt),
+		Version: int32(t.Version), Results: t.Results, LastMeasuredAt: timeToProto(t.LastMeasuredAt), Occurrence: t.Occurrence,
 	}
 }
 
@@ -113,10 +113,14 @@ func changeToProto(c *store.Change) *pb.ChangeRequest {
 	if c == nil {
 		return nil
 	}
+	fields := make([]*pb.FieldChange, len(c.Fields))
+	for i, f := range c.Fields {
+		fields[i] = &pb.FieldChange{Field: f.Field, From: f.From, To: f.To}
+	}
 	return &pb.ChangeRequest{
 		Id: c.ID, Kind: pb.ChangeKind(pb.ChangeKind_value["CHANGE_KIND_"+c.Kind]), Status: pb.ChangeStatus(pb.ChangeStatus_value["CHANGE_STATUS_"+c.Status]),
-		Chart: c.Chart, Source: c.Source, SourceId: c.SourceID, Mark: c.MarkID, ReasonCode: c.ReasonCode, Reason: c.Reason,
+		Chart: c.Chart, Source: c.Source, SourceId: c.SourceID, Mark: c.MarkID, Version: int32(c.Version), ReasonCode: c.ReasonCode, Reason: c.Reason,
 		Author: c.Author, CreateTime: timeToProto(c.CreatedAt), DecidedBy: c.DecidedBy, DecideTime: timeToProto(c.DecidedAt), DecisionReason: c.DecisionReason,
-		VerdictsChanged: int32(c.VerdictsChanged), SignalsEnded: c.SignalsEnded,
+		VerdictsChanged: int32(c.VerdictsChanged), SignalsEnded: c.SignalsEnded, FieldChanges: fields,
 	}
 }

@@ -200,7 +200,7 @@ func (b *evaluator) byChart(ctx context.Context, in *pb.ByChart) (resolved, erro
 		v, err = b.service.store.VersionInForce(ctx, who, in.Name, in.Lot, at)
 	}
 	if err != nil {
-		return resolved{}, err
+		return resolved{}, chartIsName(err)
 	}
 	j, err := b.service.store.VersionJudge(v)
 	if err != nil {
@@ -212,6 +212,17 @@ func (b *evaluator) byChart(ctx context.Context, in *pb.ByChart) (resolved, erro
 	}
 	b.judges[key] = r
 	return r, nil
+}
+
+// chartIsName gives what the store says of a chart the field that holds its name here.
+func chartIsName(err error) error {
+	var e *definition.Error
+	if !errors.As(err, &e) || e.Field != "chart" {
+		return err
+	}
+	renamed := *e
+	renamed.Field = "name"
+	return &renamed
 }
 
 // inlineJudge builds the judge of limits sent along.

@@ -17,7 +17,7 @@ var notJudgedTexts = map[judge.Reason]string{
 	judge.NoResult:           "There are no readings.",
 	judge.NoVersion:          "No version of limits was in force for this track when it was measured.",
 	judge.TooFewReadings:     "It has fewer readings than any trace of the chart needs.",
-	judge.BoundProvesNothing: "It is a less-than or greater-than result, and its bound leaves open on which side of the lines the value lies.",
+	judge.BoundProvesNothing: "It is a less-than or greater-than result, and its bound leaves open on which side of the lines the value lies, or the chart has no rule that a bound can enter.",
 	judge.Voided:             "It was voided.",
 }
 

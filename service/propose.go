@@ -108,9 +108,10 @@ func (p *proposal) readBasis() error {
 		if p.from.IsZero() || p.to.IsZero() {
 			return definition.Invalid("stored.from", "from and to are both needed")
 		}
-		return tooMany("stored.exclusions", len(b.Stored.GetExclusions()), limits.GroupsMax, "exclusions")
+		return tooMany("stored.exclusions", len(b.Stored.GetExclusions()), ExclusionsMax, "exclusions")
 	case *pb.ProposeVersionRequest_Sent:
-		return definition.CheckText("sent.description", b.Sent.GetDescription(), 0, definition.TextBytesMax)
+		return first(definition.CheckText("sent.description", b.Sent.GetDescription(), 0, definition.TextBytesMax),
+			tooMany("sent.exclusions", len(b.Sent.GetExclusions()), ExclusionsMax, "exclusions"))
 	}
 	return nil
 }

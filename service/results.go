@@ -55,8 +55,8 @@ func (s *EvaluationService) PostResults(ctx context.Context, in *pb.PostResultsR
 	return out, nil
 }
 
-// checkSource refuses a source that the key may not post as. Whether another principal has posted as it only the
-// database knows.
+// checkSource refuses a source that the key may not post as. A key that names no sources may post as any, also as one
+// that another key names: only the sources of its own key bind a caller.
 func checkSource(who store.Actor, source string) error {
 	if len(who.Key.Sources) > 0 && !slices.Contains(who.Key.Sources, source) {
 		return &definition.Error{Reason: definition.SourceNotOwn, Field: "source", Text: fmt.Sprintf("%q is none of the sources of key %s", clip(source), who.Key.ID)}

@@ -41,7 +41,7 @@ func (s *SignalService) QuerySignals(ctx context.Context, in *pb.QuerySignalsReq
 }
 
 func signalFilter(in *pb.QuerySignalsRequest) (store.SignalFilter, error) {
-	f := store.SignalFilter{Chart: in.Chart, Lot: in.Lot, Rule: in.Rule, ChangedAfterClosing: in.ChangedAfterClosing}
+	f := store.SignalFilter{Chart: in.Chart, Lot: in.Lot, Rule: in.Rule, Occurrence: in.Occurrence, ChangedAfterClosing: in.ChangedAfterClosing}
 	if in.Chart != "" {
 		if err := definition.CheckSlug("chart", in.Chart); err != nil {
 			return f, err
@@ -51,6 +51,9 @@ func signalFilter(in *pb.QuerySignalsRequest) (store.SignalFilter, error) {
 		return f, definition.Invalid("consequence", "%d: no such value", in.Consequence)
 	}
 	f.Consequence = rules.Consequence(in.Consequence)
+	if in.Occurrence < 0 {
+		return f, definition.Invalid("occurrence", "%d: want the id of an occurrence, or 0 for any", in.Occurrence)
+	}
 	for i, st := range in.Statuses {
 		if _, known := pb.SignalStatus_name[int32(st)]; !known || st == pb.SignalStatus_SIGNAL_STATUS_UNSPECIFIED {
 			return f, definition.Invalid(fmt.Sprintf("statuses[%d]", i), "%d: want OPEN, CLOSED, MERGED or RETRACTED", st)

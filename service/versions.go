@@ -40,7 +40,7 @@ func (s *LimitService) GetVersion(ctx context.Context, in *pb.GetVersionRequest)
 	return &pb.GetVersionResponse{Version: v}, nil
 }
 
-// ListVersions gives the versions of a chart, newest number first.
+// ListVersions gives the versions of a chart, newest number first, without what each leaves out of its estimate.
 func (s *LimitService) ListVersions(ctx context.Context, in *pb.ListVersionsRequest) (*pb.ListVersionsResponse, error) {
 	who, err := actor(ctx)
 	if err = first(err, definition.CheckSlug("chart", in.Chart)); err != nil {
@@ -66,6 +66,7 @@ func (s *LimitService) ListVersions(ctx context.Context, in *pb.ListVersionsRequ
 	for i, v := range versions {
 		out.Versions[i] = versionToProto(v)
 		out.Versions[i].InForce = inForce[v.Number]
+		out.Versions[i].ExcludedResults, out.Versions[i].ExcludedPoints = nil, nil // up to a megabyte each
 	}
 	return out, nil
 }
@@ -121,13 +122,13 @@ func (s *LimitService) RejectVersion(ctx context.Context, in *pb.RejectVersionRe
 	return &pb.RejectVersionResponse{Version: versionToProto(v)}, nil
 }
 
-// WithdrawVersion takes an approved version out of force.
+// WithdrawVersion takes an approved version out of force, or asks for it where another principal confirms it first.
 func (s *LimitService) WithdrawVersion(ctx context.Context, in *pb.WithdrawVersionRequest) (*pb.WithdrawVersionResponse, error) {
 	who, req, err := writer(ctx, in.RequestId, in)
 	if err = first(err, checkVersion(in.Chart, in.Version), definition.CheckText("reason", in.Reason, 1, ReasonBytesMax)); err != nil {
 		return nil, err
 	}
-	_, rejudged, err := s.store.WithdrawVersion(ctx, who, req, in.Chart, int(in.Version), in.Rejudge, in.Reason)
+	_, rejudged, ch, err := s.store.WithdrawVersion(ctx, who, req, in.Chart, int(in.Version), in.Rejudge, in.Reason)
 	if err != nil {
 		return nil, err
 	}
@@ -135,5 +136,5 @@ func (s *LimitService) WithdrawVersion(ctx context.Context, in *pb.WithdrawVersi
 	if err != nil {
 		return nil, err
 	}
-	return &pb.WithdrawVersionResponse{Version: v, ResultsRejudged: int64(rejudged)}, nil
+	return &pb.WithdrawVersionResponse{Version: v, ResultsRejudged: int64(rejudged), Request: changeToProto(ch)}, nil
 }

@@ -73,12 +73,29 @@ func (d *databaseFlags) open(ctx context.Context, env *environment) (*database, 
 	fmt.Fprintf(env.Stderr, "starting a private PostgreSQL in %s\n", dir)
 	cluster, err := postgres.Start(ctx, postgres.Options{Dir: dir, Durable: true, Log: env.Stderr})
 	if err != nil {
-		return nil, err
+		return nil, d.howToInstall(err)
 	}
 	return &database{
 		serviceURL: cluster.URL(postgres.Database, serviceLogin), ownerURL: cluster.URL(postgres.Database, postgres.Owner),
 		private: true, cluster: cluster,
 	}, nil
+}
+
+// howToInstall gives the lack of PostgreSQL's server programs in the words of this program, which can install them.
+func (d *databaseFlags) howToInstall(err error) error {
+	var none *postgres.NotFoundError
+	if !errors.As(err, &none) {
+		return err
+	}
+	version, command := fmt.Sprintf("%d or newer", postgres.MinimumVersion), "limitary install"
+	if none.Version != 0 { // a directory that is there wants the version that made it
+		version = fmt.Sprint(none.Version)
+		if d.data != "" {
+			command += " --data " + d.data
+		}
+	}
+	return fmt.Errorf("PostgreSQL's server programs, version %s, are not on this machine: run \"%s\" to install them, "+
+		"or use a database that is there with --database URL", version, command)
 }
 
 // migrate brings a private database up to date. One given by its address is left to "limitary migrate".

@@ -55,7 +55,7 @@ func keyCreate(ctx context.Context, env *environment, args []string) int {
 	var labels labelMap
 	f.Var(&labels, "label", "`KEY=VALUE` that a chart must have for the key to see it; may be repeated")
 	var sources listFlag
-	f.Var(&sources, "source", "`SOURCE` the key may post as; may be repeated (default: any that nobody else posts as)")
+	f.Var(&sources, "source", "`SOURCE` the key may post as; may be repeated (default: any); results of a source named here count as the key's own to amend and void")
 	if _, code, done := f.parse(args, 0, 0); done {
 		return code
 	}

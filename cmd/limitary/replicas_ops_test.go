@@ -6,9 +6,11 @@ import (
 	"fmt"
 	"math/rand/v2"
 	"slices"
+	"strconv"
 	"strings"
 	"testing"
 
+	"google.golang.org/genproto/googleapis/rpc/errdetails"
 	"google.golang.org/grpc"
 	"google.golang.org/grpc/credentials/insecure"
 	"google.golang.org/grpc/metadata"
@@ -20,7 +22,7 @@ import (
 	"limitary/service"
 )
 
-// wireClient is one client of one process, that may act as any of three principals.
+// wireClient is one client of one process, that may act as any of four principals.
 type wireClient struct {
 	tokens  map[string]string
 	charts  pb.ChartServiceClient
@@ -39,9 +41,9 @@ func newWireClient(t *testing.T, address string, tokens map[string]string) *wire
 	return &wireClient{tokens, pb.NewChartServiceClient(conn), pb.NewLimitServiceClient(conn), pb.NewEvaluationServiceClient(conn), pb.NewSignalServiceClient(conn)}
 }
 
-// as acts as a principal.
+// as acts as a principal, and no more as another.
 func (c *wireClient) as(ctx context.Context, principal string) context.Context {
-	return metadata.AppendToOutgoingContext(ctx, "authorization", "Bearer "+c.tokens[principal])
+	return metadata.NewOutgoingContext(ctx, metadata.Pairs("authorization", "Bearer "+c.tokens[principal]))
 }
 
 func refusedAs(err error, reason pb.ErrorReason) bool {
@@ -169,12 +171,47 @@ func (s *replicas) void(ctx context.Context, c *wireClient, w *wireWorld, name s
 
 // confirm confirms a change where there is one to confirm.
 func (c *wireClient) confirm(ctx context.Context, change *pb.ChangeRequest) error {
+	return c.confirmAs(ctx, "approver", change)
+}
+
+// confirmAs confirms a change as a principal, again with the signals that it has come to end meanwhile. One that was
+// decided on already is the earlier try of an op that is repeated.
+func (c *wireClient) confirmAs(ctx context.Context, principal string, change *pb.ChangeRequest) error {
 	if change == nil {
 		return nil
 	}
-	_, err := c.results.ConfirmRequest(c.as(ctx, "approver"), &pb.ConfirmRequestRequest{Change: change.Id, RequestId: fmt.Sprint("confirm-", change.Id),
-		Decision: pb.Decision_DECISION_CONFIRM, Reason: "seen"})
-	return err
+	sent := &pb.ConfirmRequestRequest{Change: change.Id, Decision: pb.Decision_DECISION_CONFIRM, Reason: "seen"}
+	for {
+		sent.RequestId = fmt.Sprint("confirm-", change.Id, "-", len(sent.SignalsEnded))
+		_, err := c.results.ConfirmRequest(c.as(ctx, principal), sent)
+		if !refusedAs(err, pb.ErrorReason_ERROR_REASON_WRONG_STATE) {
+			return err
+		}
+		unread := strings.Fields(metaOf(err, "signals"))
+		if len(unread) == 0 {
+			if strings.Contains(err.Error(), "decided on already") {
+				return nil
+			}
+			return err
+		}
+		for _, text := range unread {
+			id, err := strconv.ParseInt(text, 10, 64)
+			if err != nil {
+				return err
+			}
+			sent.SignalsEnded = append(sent.SignalsEnded, id)
+		}
+	}
+}
+
+// metaOf gives what a refusal says under a name.
+func metaOf(err error, name string) string {
+	for _, d := range status.Convert(err).Details() {
+		if info, ok := d.(*errdetails.ErrorInfo); ok {
+			return info.Metadata[name]
+		}
+	}
+	return ""
 }
 
 // approve reads a version and approves it with the patterns that it ends, again where others have come since. Sent holds
@@ -208,8 +245,11 @@ func (c *wireClient) approve(ctx context.Context, w *wireWorld, name string, i i
 	if !w.withdraw[i] {
 		return nil
 	}
-	_, err := c.limits.WithdrawVersion(ctx, &pb.WithdrawVersionRequest{Chart: name, Version: number, RequestId: fmt.Sprint("withdraw-", name, i), Rejudge: true, Reason: "wrong data"})
-	return err
+	out, err := c.limits.WithdrawVersion(ctx, &pb.WithdrawVersionRequest{Chart: name, Version: number, RequestId: fmt.Sprint("withdraw-", name, i), Rejudge: true, Reason: "wrong data"})
+	if err != nil {
+		return err
+	}
+	return c.confirmAs(ctx, "second", out.Request)
 }
 
 func (c *wireClient) mark(ctx context.Context, w *wireWorld, name string, i int) error {

@@ -60,6 +60,14 @@ func (s *serveFlags) check(env *environment) error {
 	return nil
 }
 
+// canListen reports what is wrong with the addresses, or that one of them is taken.
+func (s *serveFlags) canListen() error {
+	if err := s.server.Check(); err != nil {
+		return err
+	}
+	return portsAreFree(s.server.HTTPAddress, s.server.GRPCAddress)
+}
+
 func runServe(ctx context.Context, env *environment, args []string) int {
 	f := newFlags(env, "serve [flags]", serveAbout)
 	var s serveFlags
@@ -69,6 +77,10 @@ func runServe(ctx context.Context, env *environment, args []string) int {
 	}
 	if err := s.check(env); err != nil {
 		return f.wrong("%v", err)
+	}
+	// A database is neither made nor started for a service that could not listen.
+	if err := s.canListen(); err != nil {
+		return fail(env, "%v", err)
 	}
 	db, err := s.database.open(ctx, env)
 	if err != nil {

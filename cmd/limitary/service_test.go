@@ -188,7 +188,7 @@ func TestTheMainJobFromTheShell(t *testing.T) {
 	shell(t, "", "key", "list", "--data", dir).want(t, exitOK, "ann", "author,approver")
 	shell(t, "", "key", "revoke", strings.Split(poster, "_")[1], "--data", dir).want(t, exitOK, "revoked")
 	post(later).want(t, exitFailure, "Unauthenticated")
-	on(approver, "version", "withdraw", "nitrate", "1", "--reason", "wrong material", "--rejudge").want(t, exitOK, "WITHDRAWN", "2 stored results")
+	on(approver, "version", "withdraw", "nitrate", "1", "--reason", "wrong material", "--rejudge").want(t, exitOK, "APPROVED", "waits for another principal", "2 verdicts")
 	on(approver, "version", "reject", "nitrate", "1", "--reason", "x").want(t, exitFailure, "FailedPrecondition")
 	stop().want(t, exitOK, "stopped")
 	on(approver, "chart", "list").want(t, exitFailure, "Unavailable")

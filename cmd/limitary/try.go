@@ -38,7 +38,7 @@ func runTry(ctx context.Context, env *environment, args []string) int {
 	if err := s.check(env); err != nil {
 		return f.wrong("%v", err)
 	}
-	if err := portsAreFree(s.server.HTTPAddress, s.server.GRPCAddress); err != nil {
+	if err := s.canListen(); err != nil {
 		return fail(env, "%v", err)
 	}
 	db, err := openTry(ctx, env, &s.database)
@@ -82,9 +82,7 @@ func portsAreFree(httpAddress, grpcAddress string) error {
 		case err != nil:
 			return fmt.Errorf("%s %s: %w", each.flag, each.address, err)
 		}
-		if err := l.Close(); err != nil {
-			return err
-		}
+		defer l.Close() // held until both are known to be free: they may be one and the same
 	}
 	return nil
 }

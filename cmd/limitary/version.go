@@ -139,8 +139,19 @@ func versionWithdraw(ctx context.Context, env *environment, args []string) int {
 	rejudge := f.Bool("rejudge", false, "stored results may be judged anew")
 	return onVersion(ctx, env, f, args, needs("reason", reason), func(ctx context.Context, c pb.LimitServiceClient, chart string, number int32) (answer, error) {
 		out, err := c.WithdrawVersion(ctx, &pb.WithdrawVersionRequest{Chart: chart, Version: number, RequestId: requestID(), Rejudge: *rejudge, Reason: *reason})
-		return answer{out, func() int { return decided(env, out.GetVersion(), out.GetResultsRejudged()) }}, err
+		return answer{out, func() int { return withdrawn(env, out) }}, err
 	})
+}
+
+func withdrawn(env *environment, out *pb.WithdrawVersionResponse) int {
+	change := out.GetRequest()
+	if change == nil {
+		return decided(env, out.GetVersion(), out.GetResultsRejudged())
+	}
+	v := out.GetVersion()
+	fmt.Fprintf(env.Stdout, "version %d of %s is still %s; its withdrawal, request %d, waits for another principal to confirm it: it would change %d verdicts and end %d signals\n",
+		v.GetNumber(), v.GetChart(), enumWord(v.GetState().String(), "VERSION_STATE_"), change.GetId(), change.GetVerdictsChanged(), len(change.GetSignalsEnded()))
+	return exitOK
 }
 
 func needs(flag string, value *string) func() error {

@@ -6,6 +6,8 @@ package definition
 import (
 	"fmt"
 	"regexp"
+	"strconv"
+	"strings"
 	"time"
 	"unicode"
 	"unicode/utf8"
@@ -105,10 +107,10 @@ func CheckLabels(field string, labels map[string]string) error {
 		return &Error{Reason: TooManyItems, Field: field, Text: fmt.Sprintf("%d labels, the limit is %d", len(labels), LabelsMax)}
 	}
 	for k, v := range labels {
-		if err := CheckText(field, k, 1, LabelKeyBytesMax); err != nil {
+		if err := CheckName(field, k, 1, LabelKeyBytesMax); err != nil {
 			return err
 		}
-		if err := CheckText(fmt.Sprintf("%s[%s]", field, k), v, 0, LabelValueBytesMax); err != nil {
+		if err := CheckName(fmt.Sprintf("%s[%s]", field, k), v, 0, LabelValueBytesMax); err != nil {
 			return err
 		}
 	}
@@ -129,6 +131,23 @@ func CheckText(field, s string, bytesMin, bytesMax int) error {
 	for _, r := range s {
 		if unicode.IsControl(r) && !(bytesMax >= TextBytesMax && (r == '\n' || r == '\t' || r == '\r')) {
 			return Invalid(field, "has the control character %U", r)
+		}
+	}
+	return nil
+}
+
+// CheckName checks a text that tells one thing from another, such as a principal, a source or a lot. Beyond what CheckText
+// asks, two of them that look alike should be alike: no space at either end, and no character that is not seen.
+func CheckName(field, s string, bytesMin, bytesMax int) error {
+	if err := CheckText(field, s, bytesMin, bytesMax); err != nil {
+		return err
+	}
+	if strings.TrimSpace(s) != s {
+		return Invalid(field, "%q: has space at its start or end", clip(s))
+	}
+	for _, r := range s {
+		if unicode.IsControl(r) || r > unicode.MaxASCII && unicode.In(r, unicode.Cf, unicode.Zl, unicode.Zp) {
+			return Invalid(field, "%s: has the invisible character %U", strconv.QuoteToASCII(clip(s)), r)
 		}
 	}
 	return nil

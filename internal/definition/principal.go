@@ -54,7 +54,7 @@ type Key struct {
 
 // Check reports the first thing wrong with a key about to be made.
 func (k Key) Check(now time.Time) error {
-	if err := CheckText("principal", k.Principal, 1, NameBytesMax); err != nil {
+	if err := CheckName("principal", k.Principal, 1, NameBytesMax); err != nil {
 		return err
 	}
 	if len(k.Roles) == 0 {
@@ -69,7 +69,7 @@ func (k Key) Check(now time.Time) error {
 		return &Error{Reason: TooManyItems, Field: "sources", Text: fmt.Sprintf("%d sources, the limit is %d", len(k.Sources), SourcesMax)}
 	}
 	for i, s := range k.Sources {
-		if err := CheckText(fmt.Sprintf("sources[%d]", i), s, 1, NameBytesMax); err != nil {
+		if err := CheckName(fmt.Sprintf("sources[%d]", i), s, 1, NameBytesMax); err != nil {
 			return err
 		}
 	}

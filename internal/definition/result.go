@@ -134,13 +134,14 @@ func (r *Result) checkTexts() error {
 	texts := []struct {
 		field, value string
 		min          int
+		check        func(field, s string, bytesMin, bytesMax int) error
 	}{
-		{"source", r.Source, 1}, {"source_id", r.SourceID, 1}, {"lot", r.Lot, 0}, {"run_id", r.RunID, 0},
-		{"repeat_of", r.RepeatOf, 0}, {"unit", r.Unit, 0}, {"material", r.Material, 0}, {"analyst", r.Analyst, 0},
-		{"instrument", r.Instrument, 0},
+		{"source", r.Source, 1, CheckName}, {"source_id", r.SourceID, 1, CheckName}, {"lot", r.Lot, 0, CheckName},
+		{"run_id", r.RunID, 0, CheckName}, {"repeat_of", r.RepeatOf, 0, CheckName}, {"unit", r.Unit, 0, CheckText},
+		{"material", r.Material, 0, CheckText}, {"analyst", r.Analyst, 0, CheckText}, {"instrument", r.Instrument, 0, CheckText},
 	}
 	for _, t := range texts {
-		if err := CheckText(t.field, t.value, t.min, NameBytesMax); err != nil {
+		if err := t.check(t.field, t.value, t.min, NameBytesMax); err != nil {
 			return err
 		}
 	}

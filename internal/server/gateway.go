@@ -132,6 +132,9 @@ func (s *Server) complete(st *status.Status, r *http.Request) *status.Status {
 	id := r.Header.Get(requestIDHeader)
 	switch st.Code() {
 	case codes.InvalidArgument:
+		if field, problem := parameterProblem(st.Message()); field != "" {
+			return withInfo(status.Newf(codes.InvalidArgument, "%s: %s", field, problem), definition.InvalidField, id, violation(field, problem))
+		}
 		if field := fieldInProblem(st.Message()); field != "" {
 			return withInfo(st, definition.InvalidField, id, violation(field, st.Message()))
 		}

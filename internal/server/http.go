@@ -107,7 +107,8 @@ func (s *Server) identify(next http.Handler) http.Handler {
 }
 
 // bodies lets a request through to the gateway with its whole body in memory. What can be refused without reading the
-// body is refused first: too many at once, no key, too many bytes.
+// body is refused first: too many at once, no key, too many bytes. A body that is long, or does not say how long it is, is
+// read only for a key that is valid; for a short one that is not worth asking the database twice.
 func (s *Server) bodies(next http.Handler) http.Handler {
 	slots := make(chan struct{}, s.options.CallsMax)
 	return http.HandlerFunc(func(w http.ResponseWriter, r *http.Request) {
@@ -120,7 +121,14 @@ func (s *Server) bodies(next http.Handler) http.Handler {
 			s.writeStatus(w, r, busy(cap(slots), id))
 			return
 		}
-		if _, _, err := credentialsOf(r.Header.Get("Authorization")); err != nil {
+		_, _, err := credentialsOf(r.Header.Get("Authorization"))
+		if long := r.ContentLength < 0 || r.ContentLength > firstRead; err == nil && long {
+			_, err = s.calls.keys.actor(r.Context(), r.Header.Get("Authorization"))
+		}
+		if err != nil {
+			if r.ContentLength != 0 {
+				w.Header().Set("Connection", "close") // the body is not going to be read
+			}
 			st, _ := service.ToStatus(err, id)
 			s.writeStatus(w, r, st)
 			return

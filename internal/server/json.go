@@ -88,6 +88,27 @@ func jsonProblem(err error) string {
 	return fmt.Sprintf("the body is not the JSON of this call: %s", text)
 }
 
+// misread are the words of the gateway and of Go about a path or query parameter that has not the form of its type.
+var misread = regexp.MustCompile(`^(?:type mismatch, parameter: ([a-z0-9_.]+), error: )?(?:parsing (?:field|list) "([a-z0-9_]+)": )?` +
+	`strconv\.Parse(Int|Uint|Float|Bool): parsing ("(?:[^"\\]|\\.)*"): (.*)$`)
+
+var wantedForms = map[string]string{"Int": "a whole number", "Uint": "a whole number of at least 0", "Float": "a number", "Bool": "true or false"}
+
+// parameterProblem says what is wrong with a path or query parameter; field is empty where the text is of something else.
+func parameterProblem(text string) (field, problem string) {
+	m := misread.FindStringSubmatch(text)
+	if m == nil {
+		return "", ""
+	}
+	if field = m[1]; field == "" {
+		field = m[2]
+	}
+	if m[5] == "value out of range" {
+		return field, m[4] + ": is too large or too small"
+	}
+	return field, m[4] + ": want " + wantedForms[m[3]]
+}
+
 var unknownField = regexp.MustCompile(`unknown field "([^"]+)"`)
 
 // fieldInProblem names the field that a decoding problem is about, if it says so.

@@ -191,6 +191,13 @@ func listen(address, which string) (net.Listener, error) {
 	return l, nil
 }
 
+// Check reports addresses that cannot be listened on with the TLS there is to be, without listening.
+func (o Options) Check() error {
+	o.fill()
+	_, err := o.transport()
+	return err
+}
+
 // transport checks that nothing travels beyond the machine in clear, unless a proxy is said to see to it.
 func (o *Options) transport() (*tls.Config, error) {
 	if (o.TLSCert == "") != (o.TLSKey == "") {

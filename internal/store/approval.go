@@ -52,7 +52,7 @@ func (s *Store) ApproveVersion(ctx context.Context, a Actor, req Request, chart 
 			return nil, err
 		}
 		made, rejudged, err = s.decide(ctx, w, c, tracks, before, v, decision{definition.Approved, 1, "APPROVE_VERSION", reason, texts(patterns)})
-		return versionAnswer{chart, number, rejudged}, err
+		return versionAnswer{Chart: chart, Number: number, Rejudged: rejudged}, err
 	}, s.replayVersion(a, &made, &rejudged))
 	return made, rejudged, err
 }
@@ -82,22 +82,31 @@ func (s *Store) mayTouch(ctx context.Context, w *work, c *chartRow, tracks []*tr
 	if rejudge && reason != "" {
 		return nil
 	}
-	results := 0
+	results, err := s.touches(ctx, w, c, tracks, before, after)
+	if err != nil || results == 0 {
+		return err
+	}
+	return retroactive(results)
+}
+
+func retroactive(results int) *definition.Error {
+	return &definition.Error{Reason: definition.Retroactive, Meta: map[string]string{"results": strconv.Itoa(results)},
+		Text: fmt.Sprintf("%d stored results would be judged anew; ask for it with rejudge and give a reason", results)}
+}
+
+// touches counts the stored results that a change of the timeline touches.
+func (s *Store) touches(ctx context.Context, w *work, c *chartRow, tracks []*trackRow, before, after *timeline) (results int, err error) {
 	for _, t := range tracks {
 		for _, part := range stretches(before.forTrack(t.Lot), after.forTrack(t.Lot)) {
 			from, to := part.touches()
 			n, err := s.touched(ctx, w, c, t, from, to)
 			if err != nil {
-				return err
+				return 0, err
 			}
 			results += n
 		}
 	}
-	if results == 0 {
-		return nil
-	}
-	return &definition.Error{Reason: definition.Retroactive, Meta: map[string]string{"results": strconv.Itoa(results)},
-		Text: fmt.Sprintf("%d stored results would be judged anew; ask for it with rejudge and give a reason", results)}
+	return results, nil
 }
 
 // decision is what is recorded of a version.
@@ -119,28 +128,30 @@ func (s *Store) decide(ctx context.Context, w *work, c *chartRow, tracks []*trac
 	if d.patterns == nil {
 		d.patterns = []string{}
 	}
-	_, err = w.tx.Exec(ctx, `INSERT INTO version_decisions (chart_id, number, decision, step, author, decided_by, reason, accepted_patterns, recorded_at, entry)
-		VALUES ($1, $2, $3, $4, $5, $6, $7, $8, $9, $10)`,
-		c.ID, v.Number, string(d.state), d.step, v.Author, w.actor.Principal, d.reason, d.patterns, w.now, entry)
+	updates, err := s.carryOutDecision(ctx, w, c, tracks, before, v, d, entry)
 	if err != nil {
 		return fail(err)
 	}
-	rejudged := 0
-	if d.state != definition.Rejected {
-		if err := w.newTimeline(ctx, c); err != nil {
-			return fail(err)
-		}
-		updates, err := s.rejudgeStretches(ctx, w, c, tracks, before, entry)
-		if err != nil {
-			return fail(err)
-		}
-		rejudged, _ = effectOn(updates)
-	}
+	rejudged, _ := effectOn(updates)
 	if err := w.seal(ctx, c.ID, entry, d.kind, versionSaid{v.Number, v.Digest, d.reason, d.patterns, rejudged}); err != nil {
 		return fail(err)
 	}
 	v, err = s.readVersion(ctx, w.tx, c, v.Number)
 	return v, rejudged, err
+}
+
+// carryOutDecision writes a decision under an entry, without sealing it, and judges anew.
+func (s *Store) carryOutDecision(ctx context.Context, w *work, c *chartRow, tracks []*trackRow, before *timeline, v definition.Version, d decision, entry int64) ([]TrackUpdate, error) {
+	_, err := w.tx.Exec(ctx, `INSERT INTO version_decisions (chart_id, number, decision, step, author, decided_by, reason, accepted_patterns, recorded_at, entry)
+		VALUES ($1, $2, $3, $4, $5, $6, $7, $8, $9, $10)`,
+		c.ID, v.Number, string(d.state), d.step, v.Author, w.actor.Principal, d.reason, d.patterns, w.now, entry)
+	if err != nil || d.state == definition.Rejected {
+		return nil, err
+	}
+	if err := w.newTimeline(ctx, c); err != nil {
+		return nil, err
+	}
+	return s.rejudgeStretches(ctx, w, c, tracks, before, entry)
 }
 
 // RejectVersion ends a proposal.
@@ -162,35 +173,6 @@ func (s *Store) RejectVersion(ctx context.Context, a Actor, req Request, chart s
 		return versionAnswer{Chart: chart, Number: number}, err
 	}, s.replayVersion(a, &made, new(int)))
 	return made, err
-}
-
-// WithdrawVersion takes an approved version out of force, for good; nothing is in force in its place until the next
-// version begins. Stored results are touched by the rule of ApproveVersion.
-func (s *Store) WithdrawVersion(ctx context.Context, a Actor, req Request, chart string, number int, rejudge bool, reason string) (made definition.Version, rejudged int, err error) {
-	defer wrap(ctx, &err, "WithdrawVersion")
-	if err := definition.CheckText("reason", reason, 0, definition.TextBytesMax); err != nil {
-		return made, 0, err
-	}
-	err = s.change(ctx, a, req, func(ctx context.Context, w *work) (any, error) {
-		c, tracks, err := w.openChart(ctx, chart)
-		if err != nil {
-			return nil, err
-		}
-		v, err := s.versionIn(ctx, w, c, number, definition.Approved)
-		if err != nil {
-			return nil, err
-		}
-		before, err := s.timeline(ctx, w.tx, c)
-		if err != nil {
-			return nil, err
-		}
-		if err := s.mayTouch(ctx, w, c, tracks, before, before.withdrawn(number), rejudge, reason); err != nil {
-			return nil, err
-		}
-		made, rejudged, err = s.decide(ctx, w, c, tracks, before, v, decision{definition.Withdrawn, 2, "WITHDRAW_VERSION", reason, nil})
-		return versionAnswer{chart, number, rejudged}, err
-	}, s.replayVersion(a, &made, &rejudged))
-	return made, rejudged, err
 }
 
 // acceptedAsListed refuses an approval that accepts other patterns than those listed now.

@@ -94,7 +94,7 @@ func TestEveryWriteIsLaidInItsChain(t *testing.T) {
 	must(err)
 	_, asked, err := f.AddMark(ctx, f.ann, req(), breakAt(c, day(2)), "SERVICE", "lamp")
 	must(err)
-	_, _, err = f.DecideChange(ctx, f.bob, req(), asked.ID, true, "")
+	_, _, err = f.DecideChange(ctx, f.bob, req(), asked.ID, true, "", nil)
 	must(err)
 	s := f.mustSignals(c, "OPEN")[0]
 	_, err = f.NoteSignal(ctx, f.cleo, req(), s.ID, "x")
@@ -103,8 +103,7 @@ func TestEveryWriteIsLaidInItsChain(t *testing.T) {
 	must(err)
 	_, err = f.ReleaseTrack(ctx, f.cleo, req(), c.Name, "A1", "x", track.HoldSince)
 	must(err)
-	_, _, err = f.WithdrawVersion(ctx, f.bob, req(), c.Name, v.Number, true, "x")
-	must(err)
+	f.mustWithdraw(c, v.Number, "x")
 	_, err = f.RejectVersion(ctx, f.bob, req(), c.Name, f.mustPropose(limits{chart: c, from: day(0)}).Number, "x")
 	must(err)
 	_, err = f.UpdateChart(ctx, f.ann, req(), c.Name, 1, retitled("x"))
@@ -123,7 +122,7 @@ func TestEveryWriteIsLaidInItsChain(t *testing.T) {
 	delete(kinds, 0)
 	for _, got := range kinds {
 		want(t, "chart", got, "[CREATE_CHART START_LOT PROPOSE_VERSION APPROVE_VERSION POST_RESULTS ADD_MARK ASK_CHANGE DECIDE_CHANGE NOTE_SIGNAL "+
-			"CLOSE_OCCURRENCE RELEASE_TRACK WITHDRAW_VERSION PROPOSE_VERSION REJECT_VERSION UPDATE_CHART ARCHIVE_CHART]")
+			"CLOSE_OCCURRENCE RELEASE_TRACK ASK_CHANGE DECIDE_CHANGE PROPOSE_VERSION REJECT_VERSION UPDATE_CHART ARCHIVE_CHART]")
 	}
 	want(t, "charts", len(kinds), 1)
 	f.mustRecheck()

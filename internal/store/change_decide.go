@@ -4,6 +4,8 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"slices"
+	"strings"
 
 	"github.com/jackc/pgx/v5"
 
@@ -16,16 +18,21 @@ type pendingChange struct {
 	chart            string
 	kind, author     string
 	resultID, markID *int64
+	version          *int // the number, of a withdrawal
 	revision         *int
 	content          []byte
 	reasonCode       string
 	reason           string
 	source, sourceID string
+	signalsEnded     []int64
 }
 
 // DecideChange confirms or rejects a change that another principal asked for. A confirmed one takes effect now, on what
 // is stored now: a result amended in the meantime refuses it.
-func (s *Store) DecideChange(ctx context.Context, a Actor, req Request, id int64, confirm bool, reason string) (ch Change, updates []TrackUpdate, err error) {
+//
+// Ended are the signals the confirmer has read that it ends. A confirmation that would end others than these and those
+// known when it was asked for is refused with all of them, so that nobody confirms what has grown since.
+func (s *Store) DecideChange(ctx context.Context, a Actor, req Request, id int64, confirm bool, reason string, ended []int64) (ch Change, updates []TrackUpdate, err error) {
 	defer wrap(ctx, &err, "DecideChange")
 	if err := definition.CheckText("reason", reason, 0, definition.TextBytesMax); err != nil {
 		return ch, nil, err
@@ -40,8 +47,11 @@ func (s *Store) DecideChange(ctx context.Context, a Actor, req Request, id int64
 		if err != nil {
 			return nil, unseenChange(err, id)
 		}
-		if err := w.mayDecide(ctx, id, pending); err != nil {
+		if err := w.mayDecide(ctx, id, pending, confirm); err != nil {
 			return nil, err
+		}
+		if confirm && c.Archived {
+			return nil, archived(c.Name)
 		}
 		entry, err := w.entry(ctx, c.ID)
 		if err != nil {
@@ -54,6 +64,9 @@ func (s *Store) DecideChange(ctx context.Context, a Actor, req Request, id int64
 		}
 		if confirm {
 			if updates, err = s.carryOut(ctx, w, c, tracks, id, pending, entry); err != nil {
+				return nil, err
+			}
+			if err := pending.endsOnly(updates, ended); err != nil {
 				return nil, err
 			}
 		}
@@ -102,9 +115,9 @@ func updatesSaid(updates []TrackUpdate) (said []trackSaid) {
 func pendingByID(ctx context.Context, q querier, id int64) (*pendingChange, error) {
 	p := &pendingChange{}
 	err := q.QueryRow(ctx, `SELECT h.chart_id, c.name, h.kind, h.author, h.result_id, h.mark_id, h.expected_revision, h.content, h.reason_code, h.reason,
-			coalesce(r.source, ''), coalesce(r.source_id, '')
+			coalesce(r.source, ''), coalesce(r.source_id, ''), h.signals_ended, h.version
 		FROM `+changeTables+` WHERE h.change_id = $1`, id).
-		Scan(&p.chartID, &p.chart, &p.kind, &p.author, &p.resultID, &p.markID, &p.revision, &p.content, &p.reasonCode, &p.reason, &p.source, &p.sourceID)
+		Scan(&p.chartID, &p.chart, &p.kind, &p.author, &p.resultID, &p.markID, &p.revision, &p.content, &p.reasonCode, &p.reason, &p.source, &p.sourceID, &p.signalsEnded, &p.version)
 	if errors.Is(err, pgx.ErrNoRows) {
 		return nil, noChange(id)
 	}
@@ -124,9 +137,27 @@ func unseenChange(err error, id int64) error {
 	return err
 }
 
-// mayDecide checks, under the chart's lock, that the change is pending and of another principal.
-func (w *work) mayDecide(ctx context.Context, id int64, p *pendingChange) error {
-	if p.author == w.actor.Principal {
+// endsOnly refuses a change that ends signals which neither the one who asked nor the one who confirms knew of.
+func (p *pendingChange) endsOnly(updates []TrackUpdate, read []int64) error {
+	_, ended := effectOn(updates)
+	var unread []int64
+	for _, id := range ended {
+		if !slices.Contains(p.signalsEnded, id) && !slices.Contains(read, id) {
+			unread = append(unread, id)
+		}
+	}
+	if len(unread) == 0 {
+		return nil
+	}
+	return &definition.Error{Reason: definition.WrongState, Field: "signals_ended",
+		Text: fmt.Sprintf("since it was asked for, the change has come to end signals %v too; look at them, and confirm with their ids", unread),
+		Meta: map[string]string{"signals": strings.Trim(fmt.Sprint(unread), "[]")}}
+}
+
+// mayDecide checks, under the chart's lock, that the change is pending and, to confirm it, of another principal. Whoever
+// asked may take it back.
+func (w *work) mayDecide(ctx context.Context, id int64, p *pendingChange, confirm bool) error {
+	if confirm && p.author == w.actor.Principal {
 		return definition.Refuse(definition.SamePrincipal, "%q asked for the change and cannot decide on it", p.author)
 	}
 	var decided bool
@@ -144,6 +175,8 @@ func (s *Store) carryOut(ctx context.Context, w *work, c *chartRow, tracks []*tr
 	switch p.kind {
 	case "ADD_MARK":
 		return s.applyMark(ctx, w, c, tracks, p.content, w.actor.Principal, entry)
+	case "WITHDRAW_VERSION":
+		return s.applyWithdraw(ctx, w, c, tracks, p, entry)
 	case "VOID_MARK":
 		return s.applyMarkVoid(ctx, w, c, tracks, *p.markID, p.author, w.actor.Principal, p.reason, entry)
 	}

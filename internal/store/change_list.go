@@ -11,18 +11,26 @@ import (
 	"limitary/internal/definition"
 )
 
-const changeColumns = `h.change_id, h.kind, c.name, coalesce(r.source, ''), coalesce(r.source_id, ''), coalesce(h.mark_id, 0),
+const changeColumns = `h.change_id, h.kind, c.name, coalesce(r.source, ''), coalesce(r.source_id, ''), coalesce(h.mark_id, 0), coalesce(h.version, 0),
 	h.reason_code, h.reason, h.author, h.recorded_at, coalesce(d.decided_by, ''), d.recorded_at, coalesce(d.reason, ''), d.confirmed,
-	h.verdicts_changed, h.signals_ended`
+	h.verdicts_changed, h.signals_ended, h.content, v.content`
 
 const changeTables = `changes h JOIN charts c USING (chart_id) LEFT JOIN change_decisions d ON d.change_id = h.change_id
-	LEFT JOIN results r ON r.chart_id = h.chart_id AND r.result_id = h.result_id`
+	LEFT JOIN results r ON r.chart_id = h.chart_id AND r.result_id = h.result_id
+	LEFT JOIN LATERAL (
+		SELECT coalesce((SELECT w.content FROM result_revisions w WHERE w.chart_id = r.chart_id AND w.result_id = r.result_id
+			ORDER BY w.revision DESC LIMIT 1), r.content) AS content) v ON true`
 
 func scanChange(row pgx.CollectableRow) (ch Change, err error) {
 	var decided nullableTime
 	var confirmed *bool
-	err = row.Scan(&ch.ID, &ch.Kind, &ch.Chart, &ch.Source, &ch.SourceID, &ch.MarkID, &ch.ReasonCode, &ch.Reason, &ch.Author, &ch.CreatedAt,
-		&ch.DecidedBy, &decided, &ch.DecisionReason, &confirmed, &ch.VerdictsChanged, &ch.SignalsEnded)
+	var proposed, current []byte
+	err = row.Scan(&ch.ID, &ch.Kind, &ch.Chart, &ch.Source, &ch.SourceID, &ch.MarkID, &ch.Version, &ch.ReasonCode, &ch.Reason, &ch.Author, &ch.CreatedAt,
+		&ch.DecidedBy, &decided, &ch.DecisionReason, &confirmed, &ch.VerdictsChanged, &ch.SignalsEnded, &proposed, &current)
+	if err != nil {
+		return ch, err
+	}
+	ch.Fields, err = fieldChanges(ch.Kind, proposed, current)
 	ch.CreatedAt, ch.DecidedAt = ch.CreatedAt.UTC(), decided.time()
 	switch {
 	case confirmed == nil:

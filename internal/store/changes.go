@@ -197,8 +197,8 @@ type changeAnswer struct {
 	ChangeID int64 `json:"change,omitempty"`
 }
 
-// AmendResult replaces the content of a result. Where no verdict changes it takes effect at once and gives the result;
-// where one does it is a change for another principal to confirm.
+// AmendResult replaces the content of a result. What the judge does not see takes effect at once and gives the result;
+// anything else, of a result that was judged, is a change for another principal to confirm.
 func (s *Store) AmendResult(ctx context.Context, a Actor, req Request, content definition.Result, expectedRevision int, reasonCode, reason string) (amended *StoredResult, ch *Change, err error) {
 	defer wrap(ctx, &err, "AmendResult")
 	err = s.change(ctx, a, req, func(ctx context.Context, w *work) (any, error) {
@@ -216,9 +216,10 @@ func (s *Store) AmendResult(ctx context.Context, a Actor, req Request, content d
 			return nil, err
 		}
 		r := revise{content: content, author: a.Principal, reasonCode: reasonCode, reason: reason}
-		updates, kept, err := w.tryMark(ctx, c, tracks, func(w *work, c *chartRow, tracks []*trackRow) ([]TrackUpdate, error) {
+		apply := func(w *work, c *chartRow, tracks []*trackRow) ([]TrackUpdate, error) {
 			return s.applyRevision(ctx, w, c, tracks, cur, r, entry)
-		})
+		}
+		updates, kept, err := w.tryAmendment(ctx, c, tracks, cur, content, apply)
 		if err != nil {
 			return nil, err
 		}
@@ -261,6 +262,18 @@ type revisionSaid struct {
 	Change   int64  `json:"change,omitempty"`
 }
 
+// tryAmendment keeps an amendment that the judge cannot see, or one of a result that no version judged, where it leaves
+// every verdict and signal as it was. Any other is only tried: one that changes place, readings, role or lot of a judged
+// result may cut off a pattern on its way though it alters no verdict yet, and that is not for one person to do.
+func (w *work) tryAmendment(ctx context.Context, c *chartRow, tracks []*trackRow, cur *currentResult, content definition.Result,
+	apply func(*work, *chartRow, []*trackRow) ([]TrackUpdate, error)) (updates []TrackUpdate, kept bool, err error) {
+	if content.JudgesAlike(cur.content) || cur.item.Stored.Version == 0 {
+		return w.tryMark(ctx, c, tracks, apply)
+	}
+	updates, err = w.tryOnly(ctx, c, tracks, apply)
+	return updates, false, err
+}
+
 // amendable reads the result to amend and checks that it may be, and that the new content is sound.
 func (s *Store) amendable(ctx context.Context, w *work, c *chartRow, content *definition.Result, expectedRevision int) (*currentResult, error) {
 	cur, err := w.currentResult(ctx, c, content.Source, content.SourceID)
@@ -287,7 +300,7 @@ func (s *Store) VoidResult(ctx context.Context, a Actor, req Request, chart, sou
 	defer wrap(ctx, &err, "VoidResult")
 	var id int64
 	err = s.change(ctx, a, req, func(ctx context.Context, w *work) (any, error) {
-		c, tracks, err := w.chartAndTracks(ctx, chart)
+		c, tracks, err := w.openChart(ctx, chart)
 		if err != nil {
 			return nil, err
 		}

@@ -27,21 +27,40 @@ type cachedChart struct {
 // chartsCachedMax bounds the cache; a group of laboratories has hundreds of charts.
 const chartsCachedMax = 10_000
 
-// chartInfo gives the unchanging part of a chart for one post, nil where there is no such chart.
-func (s *Store) chartInfo(ctx context.Context, name string) (*postChart, error) {
-	s.chartCache.mu.Lock()
-	cached := s.chartCache.charts[name]
-	s.chartCache.mu.Unlock()
-	if cached == nil {
-		var err error
-		if cached, err = s.readChartInfo(ctx, name); err != nil || cached == nil {
-			return nil, err
-		}
+// chartInfos gives the unchanging parts of charts for one post, by name; there is none for a name without a chart.
+func (s *Store) chartInfos(ctx context.Context, names []string) (map[string]*postChart, error) {
+	found := map[string]*postChart{}
+	missing := s.chartCache.take(names, found)
+	if len(missing) == 0 {
+		return found, nil
+	}
+	read, err := s.readChartInfos(ctx, missing)
+	if err != nil {
+		return nil, err
+	}
+	for name, cached := range read {
+		found[name] = cached.post()
 		s.chartCache.put(name, cached)
 	}
-	s.chartCache.mu.Lock()
-	defer s.chartCache.mu.Unlock()
-	return &postChart{chartRow: cached.row, lots: maps.Clone(cached.lots)}, nil
+	return found, nil
+}
+
+func (c *cachedChart) post() *postChart {
+	return &postChart{chartRow: c.row, lots: maps.Clone(c.lots)}
+}
+
+// take puts the charts it has into found and gives the names of the others.
+func (c *chartCache) take(names []string, found map[string]*postChart) (missing []string) {
+	c.mu.Lock()
+	defer c.mu.Unlock()
+	for _, name := range names {
+		if cached := c.charts[name]; cached != nil {
+			found[name] = cached.post()
+		} else {
+			missing = append(missing, name)
+		}
+	}
+	return missing
 }
 
 func (c *chartCache) put(name string, chart *cachedChart) {
@@ -53,59 +72,39 @@ func (c *chartCache) put(name string, chart *cachedChart) {
 	c.charts[name] = chart
 }
 
-func (c *chartCache) addLot(chartID int64, lot string, trackID int64) {
+func (c *chartCache) addLot(chart, lot string, trackID int64) {
 	c.mu.Lock()
 	defer c.mu.Unlock()
-	for _, cached := range c.charts {
-		if cached.row.ID == chartID {
-			cached.lots[lot] = trackID
-		}
+	if cached := c.charts[chart]; cached != nil {
+		cached.lots[lot] = trackID
 	}
 }
 
-func (s *Store) readChartInfo(ctx context.Context, name string) (*cachedChart, error) {
-	cached := &cachedChart{lots: map[string]int64{}}
-	c := &cached.row
+// readChartInfos reads charts with their tracks.
+func (s *Store) readChartInfos(ctx context.Context, names []string) (map[string]*cachedChart, error) {
+	rows, err := s.pool.Query(ctx, `SELECT c.chart_id, c.name, c.kind, c.subgroup_size, c.unit, c.lots_are_tracks, t.lot, t.track_id
+		FROM charts c LEFT JOIN tracks t USING (chart_id) WHERE c.name = ANY($1)`, names)
+	if err != nil {
+		return nil, err
+	}
+	found := map[string]*cachedChart{}
+	var c chartRow
 	var kind int16
-	err := s.pool.QueryRow(ctx, `SELECT chart_id, name, kind, subgroup_size, unit, lots_are_tracks FROM charts WHERE name = $1`, name).
-		Scan(&c.ID, &c.Name, &kind, &c.SubgroupSize, &c.Unit, &c.LotsAreTracks)
-	if errors.Is(err, pgx.ErrNoRows) {
-		return nil, nil
-	}
-	if err != nil {
-		return nil, err
-	}
-	c.Kind = chart.Kind(kind)
-	rows, err := s.pool.Query(ctx, `SELECT lot, track_id FROM tracks WHERE chart_id = $1`, c.ID)
-	if err != nil {
-		return nil, err
-	}
-	var lot string
-	var id int64
-	_, err = pgx.ForEachRow(rows, []any{&lot, &id}, func() error {
-		cached.lots[lot] = id
+	var lot *string
+	var track *int64
+	_, err = pgx.ForEachRow(rows, []any{&c.ID, &c.Name, &kind, &c.SubgroupSize, &c.Unit, &c.LotsAreTracks, &lot, &track}, func() error {
+		c.Kind = chart.Kind(kind)
+		cached := found[c.Name]
+		if cached == nil {
+			cached = &cachedChart{row: c, lots: map[string]int64{}}
+			found[c.Name] = cached
+		}
+		if track != nil {
+			cached.lots[*lot] = *track
+		}
 		return nil
 	})
-	return cached, err
-}
-
-// openTrack gives the id of a lot's track and opens it where there is none. The chart's row lock orders it with
-// approvals, so that no track escapes being judged anew.
-func (s *Store) openTrack(ctx context.Context, chartID int64, lot string) (id int64, err error) {
-	err = pgx.BeginTxFunc(ctx, s.pool, pgx.TxOptions{}, func(tx pgx.Tx) error {
-		if _, err := tx.Exec(ctx, `SELECT FROM charts WHERE chart_id = $1 FOR NO KEY UPDATE`, chartID); err != nil {
-			return err
-		}
-		_, err := tx.Exec(ctx, `INSERT INTO tracks (chart_id, lot) VALUES ($1, $2) ON CONFLICT ON CONSTRAINT tracks_lot_key DO NOTHING`, chartID, lot)
-		if err != nil {
-			return err
-		}
-		return tx.QueryRow(ctx, `SELECT track_id FROM tracks WHERE chart_id = $1 AND lot = $2`, chartID, lot).Scan(&id)
-	})
-	if err == nil {
-		s.chartCache.addLot(chartID, lot, id)
-	}
-	return id, err
+	return found, err
 }
 
 // asDefinition gives the refusal in an error of this module's checks.

@@ -195,7 +195,7 @@ func TestChartsOutsideTheKeysLabelsDoNotExist(t *testing.T) {
 	_, refusals["ProposeVersion"] = f.ProposeVersion(ctx, far, req(), name, limits{chart: c, from: day(0)}.content("far"))
 	_, _, refusals["ApproveVersion"] = f.ApproveVersion(ctx, far, req(), name, 1, v.Digest, false, "", nil)
 	_, refusals["RejectVersion"] = f.RejectVersion(ctx, far, req(), name, 1, "x")
-	_, _, refusals["WithdrawVersion"] = f.WithdrawVersion(ctx, far, req(), name, 1, false, "x")
+	_, _, _, refusals["WithdrawVersion"] = f.WithdrawVersion(ctx, far, req(), name, 1, false, "x")
 	_, _, _, refusals["GetVersion"] = f.GetVersion(ctx, far, name, 1)
 	_, _, refusals["ListVersions"] = f.ListVersions(ctx, far, name, store.Page{})
 	_, refusals["VersionInForce"] = f.VersionInForce(ctx, far, name, "", time.Time{})

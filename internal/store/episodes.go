@@ -20,8 +20,8 @@ func (jd *judgement) take(ctx context.Context, q querier, e *effect, update *Tra
 		if jd.isNew != nil && jd.isNew(j.Item.ID) {
 			t.Results++
 		}
-		if j.NewlyStops() && t.HoldSince.IsZero() {
-			t.HoldSince = l.now
+		if j.NewlyStops() {
+			t.HoldSince = l.now // of the latest STOP: a release names the one it has seen
 		}
 	}
 	changes, err := l.signal(ctx, q, jd.chart, e, jd.entry)

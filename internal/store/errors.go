@@ -31,6 +31,7 @@ const (
 // byConstraint tells what a broken constraint means to the caller. The code checks all of this before it writes; the
 // schema says it again, and two writers at once learn it from the schema.
 var byConstraint = map[string]definition.Error{
+	"principals_name_fold":            {Reason: definition.AlreadyExists, Field: "principal", Text: "there is a principal of this name already but for upper and lower case"},
 	"charts_name_key":                 {Reason: definition.AlreadyExists, Field: "name", Text: "there is a chart of this name already"},
 	"tracks_lot_key":                  {Reason: definition.AlreadyExists, Field: "lot", Text: "this lot has a track already"},
 	"keys_pkey":                       {Reason: definition.AlreadyExists, Field: "id", Text: "there is a key of this id already"},

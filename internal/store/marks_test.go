@@ -51,9 +51,9 @@ func TestMarkThatAltersNothingEarlierTakesEffectAtOnce(t *testing.T) {
 		}
 		want(t, "change", []any{asked.Kind, asked.Status, asked.MarkID, asked.VerdictsChanged}, []any{"VOID_MARK", "PENDING", mark.ID, 2})
 		want(t, "meanwhile", f.verdicts(c, ""), "CLEAR/1 CLEAR/1 CLEAR/1 CLEAR/1 CLEAR/1")
-		_, _, err = f.DecideChange(t.Context(), f.ann, req(), asked.ID, true, "")
+		_, _, err = f.DecideChange(t.Context(), f.ann, req(), asked.ID, true, "", nil)
 		wantReason(t, err, definition.SamePrincipal)
-		if _, _, err := f.DecideChange(t.Context(), f.bob, req(), asked.ID, true, ""); err != nil {
+		if _, _, err := f.DecideChange(t.Context(), f.bob, req(), asked.ID, true, "", nil); err != nil {
 			t.Fatal(err)
 		}
 		want(t, "confirmed", f.verdicts(c, ""), "CLEAR/1 CLEAR/1 CLEAR/1 ACT/1 ACT/1")
@@ -99,12 +99,12 @@ func TestBreakThatWouldEndASignalIsAskedFor(t *testing.T) {
 	unchanged()
 
 	t.Run("and nothing comes of it when rejected", func(t *testing.T) {
-		decided, _, err := f.DecideChange(t.Context(), f.bob, req(), asked.ID, false, "no service is on record")
+		decided, _, err := f.DecideChange(t.Context(), f.bob, req(), asked.ID, false, "no service is on record", nil)
 		if err != nil {
 			t.Fatal(err)
 		}
 		want(t, "status", []string{decided.Status, decided.DecidedBy, decided.DecisionReason}, "[REJECTED bob no service is on record]")
-		_, _, err = f.DecideChange(t.Context(), f.cleo, req(), asked.ID, true, "")
+		_, _, err = f.DecideChange(t.Context(), f.cleo, req(), asked.ID, true, "", nil)
 		wantReason(t, err, definition.WrongState)
 		unchanged()
 	})
@@ -113,7 +113,7 @@ func TestBreakThatWouldEndASignalIsAskedFor(t *testing.T) {
 		if err != nil {
 			t.Fatal(err)
 		}
-		_, updates, err := f.DecideChange(t.Context(), f.bob, req(), asked.ID, true, "seen in the log book")
+		_, updates, err := f.DecideChange(t.Context(), f.bob, req(), asked.ID, true, "seen in the log book", nil)
 		if err != nil || len(updates) != 1 || updates[0].Rejudged != 1 {
 			t.Fatalf("got %+v, %v, want one result rejudged", updates, err)
 		}
@@ -148,7 +148,7 @@ func TestBreakThatWouldPartASignalIsAskedFor(t *testing.T) {
 		t.Fatalf("got %+v, %v, want a change", asked, err)
 	}
 	want(t, "verdicts changed", asked.VerdictsChanged, 0)
-	if _, _, err := f.DecideChange(t.Context(), f.bob, req(), asked.ID, true, ""); err != nil {
+	if _, _, err := f.DecideChange(t.Context(), f.bob, req(), asked.ID, true, "", nil); err != nil {
 		t.Fatal(err)
 	}
 	want(t, "signals", len(f.mustSignals(c, "OPEN")), 2)
@@ -208,7 +208,7 @@ func TestMarkOfOneLotLeavesTheOthers(t *testing.T) {
 	if err != nil || asked == nil {
 		t.Fatalf("got %+v, %v, want a change", asked, err)
 	}
-	if _, _, err := f.DecideChange(t.Context(), f.bob, req(), asked.ID, true, ""); err != nil {
+	if _, _, err := f.DecideChange(t.Context(), f.bob, req(), asked.ID, true, "", nil); err != nil {
 		t.Fatal(err)
 	}
 	want(t, "A1", f.verdicts(c, "A1"), "CLEAR/1 CLEAR/1 CLEAR/1 ACT/1")

@@ -1,9 +1,11 @@
 package store
 
 import (
+	"bytes"
 	"crypto/sha256"
 	"encoding/base64"
 	"encoding/json"
+	"errors"
 
 	"limitary/internal/definition"
 )
@@ -46,6 +48,9 @@ func (p Page) open(filter, after any) (size int, more bool, err error) {
 	text, err := base64.RawURLEncoding.DecodeString(p.Token)
 	if err == nil {
 		err = json.Unmarshal(text, &token)
+	}
+	if err == nil && bytes.Contains(token.After, []byte(`\u0000`)) {
+		err = errors.New("a text that no row can have")
 	}
 	if err == nil {
 		err = json.Unmarshal(token.After, after)

@@ -4,6 +4,7 @@ import (
 	"bytes"
 	"context"
 	"fmt"
+	"maps"
 	"slices"
 	"strings"
 	"time"
@@ -24,10 +25,16 @@ type posting struct {
 	// charts by name and by id, tracks by id; locked once begun.
 	charts map[string]*postChart
 	tracks map[int64]*postTrack
-	now    time.Time
-	ids    []int64
+	// trackIDs are the tracks of the rows, 0 where there is none.
+	trackIDs []int64
+	// unsound is set where an all-or-nothing post was found not to be stored before its tracks were locked.
+	unsound bool
+	now     time.Time
+	ids     []int64
 	// stored are the rows that were there before, by index of the row.
 	stored map[int]*storedRow
+	// twins are the rows that have the natural key of an earlier, accepted one, and which that is.
+	twins  map[int]int
 	ledger *ledger
 	// outcomes of the new results by result id, and which row each is.
 	outcomes map[int64]*track.Judged
@@ -37,7 +44,9 @@ type posting struct {
 
 type postChart struct {
 	chartRow
-	lots     map[string]int64
+	lots map[string]int64
+	// lotByID is the reverse of lots, where they were read anew.
+	lotByID  map[int64]string
 	timeline *timeline
 	head     chainHead
 	// accepted results by track.
@@ -96,6 +105,7 @@ func (s *Store) post(ctx context.Context, p *posting) error {
 		return err
 	}
 	if len(p.tracks) == 0 {
+		p.decide() // by what was read to open tracks; nothing can be accepted without one
 		p.finish()
 		return nil
 	}
@@ -122,9 +132,6 @@ func (s *Store) postOn(ctx context.Context, conn *pgx.Conn, p *posting) error {
 		return err
 	}
 	p.decide()
-	if p.all && slices.ContainsFunc(p.rows, func(r Posted) bool { return r.Outcome == Refused || r.Outcome == Conflict }) {
-		p.refuseAll()
-	}
 	accepted := p.finish()
 	var err error
 	if accepted > 0 {
@@ -146,89 +153,92 @@ func (s *Store) postOn(ctx context.Context, conn *pgx.Conn, p *posting) error {
 }
 
 // findTracks finds the chart and track of every row, without locks, and opens tracks for lots that are new.
-func (s *Store) findTracks(ctx context.Context, p *posting) error {
-	p.charts, p.tracks = map[string]*postChart{}, map[int64]*postTrack{}
-	var names []string
+func (s *Store) findTracks(ctx context.Context, p *posting) (err error) {
+	p.tracks, p.trackIDs = map[int64]*postTrack{}, make([]int64, len(p.results))
+	names := map[string]bool{}
 	for i := range p.results {
-		if p.rows[i].Outcome == 0 && !slices.Contains(names, p.results[i].Chart) {
-			names = append(names, p.results[i].Chart)
+		if p.rows[i].Outcome == 0 {
+			names[p.results[i].Chart] = true
 		}
 	}
-	for _, name := range names {
-		info, err := s.chartInfo(ctx, name)
-		if err != nil {
-			return err
-		}
-		if info != nil {
-			p.charts[name] = info
-		}
+	if p.charts, err = s.chartInfos(ctx, slices.Sorted(maps.Keys(names))); err != nil {
+		return err
 	}
+	var unknown []int // rows whose lot has no track here yet
 	for i := range p.results {
 		if p.rows[i].Outcome != 0 {
 			continue
 		}
-		if err := s.findTrack(ctx, p, i); err != nil {
-			return err
+		if p.charts[p.results[i].Chart] == nil {
+			p.refuse(i, noChart(p.results[i].Chart))
+		} else if !p.place(i) {
+			unknown = append(unknown, i)
 		}
+	}
+	if len(unknown) > 0 {
+		return s.openTracks(ctx, p, unknown)
 	}
 	return nil
 }
 
-func (s *Store) findTrack(ctx context.Context, p *posting, i int) error {
+// lotOf gives the lot whose track a row belongs to.
+func (c *postChart) lotOf(r *definition.Result) string {
+	if c.LotsAreTracks {
+		return r.Lot
+	}
+	return ""
+}
+
+// place puts a row on the track of its lot, if the track is known.
+func (p *posting) place(i int) bool {
 	r := &p.results[i]
 	c := p.charts[r.Chart]
-	if c == nil {
-		p.refuse(i, noChart(r.Chart))
-		return nil
-	}
-	lot := ""
-	if c.LotsAreTracks {
-		lot = r.Lot
-	}
+	lot := c.lotOf(r)
 	id, ok := c.lots[lot]
-	if !ok {
-		// A lot's first result opens its track. The field checks come first, so that a bad row opens nothing.
-		if _, err := r.Prepare(c.Chart, farFuture); err != nil {
-			p.refuse(i, asDefinition(err))
-			return nil
-		}
-		var err error
-		if id, err = s.openTrack(ctx, c.ID, lot); err != nil {
-			return err
-		}
-		c.lots[lot] = id
+	if ok {
+		p.placeOn(i, id, lot)
 	}
+	return ok
+}
+
+func (p *posting) placeOn(i int, id int64, lot string) {
+	r := &p.results[i]
 	t := p.tracks[id]
 	if t == nil {
-		t = &postTrack{trackRow: trackRow{Track: Track{ID: id, Chart: r.Chart, Lot: lot}, ChartID: c.ID}}
+		t = &postTrack{trackRow: trackRow{Track: Track{ID: id, Chart: r.Chart, Lot: lot}, ChartID: p.charts[r.Chart].ID}}
 		p.tracks[id] = t
 	}
+	p.trackIDs[i] = id
 	if key := r.OrderKey(); t.lowest == nil || bytes.Compare(key, t.lowest) < 0 {
 		t.lowest = key
 	}
-	return nil
 }
 
-// farFuture stands for the present before the database clock has been read: the lock comes first, the clock after it.
+// farFuture is after everything measured.
 var farFuture = time.Date(9999, 1, 1, 0, 0, 0, 0, time.UTC)
 
 func noChart(name string) *definition.Error {
 	return &definition.Error{Reason: definition.NotFound, Field: "chart", Text: fmt.Sprintf("there is no chart %q", name)}
 }
 
-// trackOf gives the track of a row that is not refused.
-func (p *posting) trackOf(i int) *postTrack {
-	r := &p.results[i]
-	c := p.charts[r.Chart]
-	lot := ""
-	if c.LotsAreTracks {
-		lot = r.Lot
+// trackOf gives the track of a row, nil for one that was not placed.
+func (p *posting) trackOf(i int) *postTrack { return p.tracks[p.trackIDs[i]] }
+
+// decide gives every row its outcome: refused, duplicate, conflict, accepted or, in a post that is not stored, not stored.
+func (p *posting) decide() {
+	p.twins = map[int]int{}
+	p.outcome()
+	if p.all && (p.unsound || p.flawed()) {
+		p.refuseAll()
 	}
-	return p.tracks[c.lots[lot]]
 }
 
-// decide gives every row its outcome: refused, duplicate, conflict or, for now, accepted.
-func (p *posting) decide() {
+// flawed reports a row for which an all-or-nothing post is not stored.
+func (p *posting) flawed() bool {
+	return slices.ContainsFunc(p.rows, func(r Posted) bool { return r.Outcome == Refused || r.Outcome == Conflict })
+}
+
+func (p *posting) outcome() {
 	first := map[string]int{} // natural keys among the rows themselves
 	for i := range p.results {
 		if p.rows[i].Outcome != 0 {
@@ -257,6 +267,7 @@ func (p *posting) decide() {
 		}
 		key := strings.Join([]string{r.Chart, r.Source, r.SourceID}, "\x00")
 		if j, twice := first[key]; twice {
+			p.twins[i] = j
 			p.twin(i, j)
 			continue
 		}

@@ -15,15 +15,10 @@ import (
 // travels in one batch; every statement sees what was committed before it began.
 func (p *posting) begin(ctx context.Context, conn *pgx.Conn) error {
 	trackIDs, lowest := p.lockOrder()
-	var chartIDs []int64
-	byID := map[int64]*postChart{}
-	for _, c := range p.charts {
-		chartIDs = append(chartIDs, c.ID)
-		byID[c.ID] = c
-	}
-	slices.Sort(chartIDs)
+	chartIDs, byID := p.chartsByID()
 	var b pgx.Batch
 	b.Queue(`BEGIN ISOLATION LEVEL READ COMMITTED`)
+	b.Queue(pinPlans)
 	b.Queue(`SELECT track_id, results, open_signals, coalesce(occurrence, 0), hold_since, last_recorded_at
 		FROM tracks WHERE track_id = ANY($1) ORDER BY track_id FOR UPDATE`, trackIDs).Query(p.readTracks)
 	b.Queue(`SELECT chain_id, entry, hash FROM chain_heads WHERE chain_id = ANY($1) ORDER BY chain_id FOR UPDATE`, chartIDs).Query(func(rows pgx.Rows) error {
@@ -35,6 +30,29 @@ func (p *posting) begin(ctx context.Context, conn *pgx.Conn) error {
 		})
 		return err
 	})
+	p.queueCharts(&b, chartIDs, byID)
+	p.queueStored(&b)
+	b.Queue(`SELECT nextval('result_ids') FROM generate_series(1, $1)`, len(p.results)).Query(func(rows pgx.Rows) (err error) {
+		p.ids, err = pgx.CollectRows(rows, pgx.RowTo[int64])
+		return err
+	})
+	p.queueNeighbours(&b, trackIDs, lowest)
+	return conn.SendBatch(ctx, &b).Close()
+}
+
+// chartsByID gives the charts of the post by id, and the ids in order.
+func (p *posting) chartsByID() (ids []int64, byID map[int64]*postChart) {
+	byID = map[int64]*postChart{}
+	for _, c := range p.charts {
+		ids = append(ids, c.ID)
+		byID[c.ID] = c
+	}
+	slices.Sort(ids)
+	return ids, byID
+}
+
+// queueCharts asks for what can change of the charts, and for the clock.
+func (p *posting) queueCharts(b *pgx.Batch, chartIDs []int64, byID map[int64]*postChart) {
 	b.Queue(`SELECT chart_id, archived, labels, timeline, clock_timestamp() FROM charts WHERE chart_id = ANY($1) ORDER BY chart_id`, chartIDs).Query(func(rows pgx.Rows) error {
 		for rows.Next() {
 			var id, timeline int64
@@ -47,14 +65,13 @@ func (p *posting) begin(ctx context.Context, conn *pgx.Conn) error {
 		}
 		return rows.Err()
 	})
-	p.queueStored(&b)
-	b.Queue(`SELECT nextval('result_ids') FROM generate_series(1, $1)`, len(p.results)).Query(func(rows pgx.Rows) (err error) {
-		p.ids, err = pgx.CollectRows(rows, pgx.RowTo[int64])
-		return err
-	})
-	p.queueNeighbours(&b, trackIDs, lowest)
-	return conn.SendBatch(ctx, &b).Close()
 }
+
+// pinPlans holds a post to the plans it is written for: every look-up through an index, planned once a connection. The
+// planner would otherwise plan each statement anew, which costs more than running it, or settle on reading whole tables
+// while they are still small and go on doing so when they are not.
+const pinPlans = `SELECT set_config('plan_cache_mode', 'force_generic_plan', true), set_config('enable_seqscan', 'off', true),
+	set_config('enable_hashjoin', 'off', true), set_config('enable_mergejoin', 'off', true)`
 
 // lockOrder lists the tracks in the order they are locked, and the first place the post could take on each.
 func (p *posting) lockOrder() (ids []int64, lowest [][]byte) {
@@ -95,7 +112,7 @@ func (p *posting) queueStored(b *pgx.Batch) {
 			sources, ids = append(sources, p.results[i].Source), append(ids, p.results[i].SourceID)
 		}
 	}
-	b.Queue(`SELECT u.i, r.result_id, r.track_id, r.digest, coalesce(v.digest, r.digest), r.content, r.version, r.verdict, r.recorded_at,
+	b.Queue(`SELECT u.i, r.result_id, r.track_id, r.digest, coalesce(v.digest, r.digest), coalesce(v.content, r.content), r.version, r.verdict, r.recorded_at,
 			p.version, p.verdict, coalesce((SELECT j.recorded_at FROM verdicts j WHERE j.chart_id = r.chart_id AND j.result_id = r.result_id
 				ORDER BY j.entry DESC LIMIT 1), r.recorded_at)
 		FROM unnest($1::int[], $2::bigint[], $3::text[], $4::text[]) AS u (i, chart_id, source, source_id)

@@ -147,8 +147,9 @@ func (s *Store) answer(ctx context.Context, conn *pgx.Conn, p *posting) error {
 			continue
 		}
 		c := p.charts[p.results[i].Chart]
-		t := p.trackOf(i)
-		row.TrackState, row.HasTrack = t.State(), true
+		if t := p.trackOf(i); t != nil {
+			row.TrackState, row.HasTrack = t.State(), true
+		}
 		if row.Outcome == Accepted {
 			if err := v.outcome(ctx, c.ID, &row.First, &p.outcomes[p.ids[i]].Outcome, p.now); err != nil {
 				return err
@@ -179,15 +180,15 @@ func (s *Store) answer(ctx context.Context, conn *pgx.Conn, p *posting) error {
 func (s *Store) answerStored(ctx context.Context, v *verdictReader, p *posting, c *postChart, i int) error {
 	row, st := &p.rows[i], p.stored[i]
 	if st == nil {
-		for id, j := range p.rowOf {
-			if r := &p.results[j]; r.Chart == p.results[i].Chart && r.Source == p.results[i].Source && r.SourceID == p.results[i].SourceID {
-				if err := v.outcome(ctx, c.ID, &row.First, &p.outcomes[id].Outcome, p.now); err != nil {
-					return err
-				}
-				return v.outcome(ctx, c.ID, &row.Current, &p.outcomes[id].Outcome, p.now)
-			}
+		j, twin := p.twins[i]
+		judged := p.outcomes[p.ids[j]]
+		if !twin || judged == nil {
+			return nil // of a post that is not stored
 		}
-		return nil
+		if err := v.outcome(ctx, c.ID, &row.First, &judged.Outcome, p.now); err != nil {
+			return err
+		}
+		return v.outcome(ctx, c.ID, &row.Current, &judged.Outcome, p.now)
 	}
 	if row.Outcome == Conflict {
 		var err error

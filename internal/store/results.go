@@ -268,7 +268,7 @@ func (s *Store) GetRun(ctx context.Context, a Actor, runID string, from, to time
 	return plain(read), nil
 }
 
-// Window gives a result and up to a number of results before it on its track, oldest first.
+// Window gives a result and up to a number of results before it in the same segment of its track, oldest first.
 func (s *Store) Window(ctx context.Context, a Actor, chart, source, sourceID string, points int) (found StoredResult, before []StoredResult, err error) {
 	defer wrap(ctx, &err, "Window")
 	err = s.read(ctx, func(ctx context.Context, tx pgx.Tx) error {
@@ -281,12 +281,34 @@ func (s *Store) Window(ctx context.Context, a Actor, chart, source, sourceID str
 			return err
 		}
 		found = r.StoredResult
+		start, err := s.segmentStart(ctx, tx, c, r)
+		if err != nil {
+			return err
+		}
 		earlier, err := s.results(ctx, tx, `SELECT `+resultColumns+` FROM `+resultTables+`
-			WHERE p.track_id = $1 AND p.order_key < $2 AND NOT p.voided ORDER BY p.order_key DESC LIMIT $3`, r.trackID, r.orderKey, points)
+			WHERE p.track_id = $1 AND p.order_key >= $2 AND p.order_key < $3 AND NOT p.voided ORDER BY p.order_key DESC LIMIT $4`,
+			r.trackID, start, r.orderKey, points)
 		for i := len(earlier) - 1; i >= 0; i-- {
 			before = append(before, earlier[i].StoredResult)
 		}
 		return err
 	})
 	return found, before, err
+}
+
+// segmentStart gives the lowest order key of the segment a result lies in.
+func (s *Store) segmentStart(ctx context.Context, tx pgx.Tx, c *chartRow, r *readResult) ([]byte, error) {
+	var lot string
+	if err := tx.QueryRow(ctx, `SELECT lot FROM tracks WHERE track_id = $1`, r.trackID).Scan(&lot); err != nil {
+		return nil, err
+	}
+	tl, err := s.timeline(ctx, tx, c)
+	if err != nil {
+		return nil, err
+	}
+	from := tl.forTrack(lot).SegmentStart(r.Result.MeasuredAt)
+	if from.IsZero() {
+		return []byte{}, nil
+	}
+	return definition.KeyTime(from), nil
 }

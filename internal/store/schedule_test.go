@@ -8,6 +8,7 @@ import (
 	"fmt"
 	"math/rand/v2"
 	"slices"
+	"strconv"
 	"strings"
 	"sync"
 	"testing"
@@ -254,9 +255,27 @@ func (s *site) amend(ctx context.Context, st *store.Store, w *world, name string
 	return s.confirm(ctx, st, ch)
 }
 
+// confirm confirms a change; where it has come to end more signals than when it was asked for, it looks at them first.
 func (s *site) confirm(ctx context.Context, st *store.Store, ch *store.Change) error {
-	_, _, err := st.DecideChange(ctx, s.approver, request("confirm", ch.ID), ch.ID, true, "seen")
-	return err
+	return s.confirmAs(ctx, st, s.approver, ch)
+}
+
+func (s *site) confirmAs(ctx context.Context, st *store.Store, as store.Actor, ch *store.Change) error {
+	var read []int64
+	for {
+		_, _, err := st.DecideChange(ctx, as, request("confirm", ch.ID), ch.ID, true, "seen", read)
+		var refusal *definition.Error
+		if !errors.As(err, &refusal) || refusal.Meta["signals"] == "" {
+			return err
+		}
+		for _, text := range strings.Fields(refusal.Meta["signals"]) {
+			id, err := strconv.ParseInt(text, 10, 64)
+			if err != nil {
+				return err
+			}
+			read = append(read, id)
+		}
+	}
 }
 
 func (s *site) approve(ctx context.Context, st *store.Store, w *world, name string, i int) error {
@@ -281,8 +300,11 @@ func (s *site) approve(ctx context.Context, st *store.Store, w *world, name stri
 	if !w.withdraw[i] {
 		return nil
 	}
-	_, _, err := st.WithdrawVersion(ctx, s.approver, request("withdraw", name, i), name, i+1, true, "wrong data")
-	return err
+	_, _, ch, err := st.WithdrawVersion(ctx, s.approver, request("withdraw", name, i), name, i+1, true, "wrong data")
+	if err != nil || ch == nil {
+		return err
+	}
+	return s.confirmAs(ctx, st, s.author, ch)
 }
 
 func (s *site) mark(ctx context.Context, st *store.Store, w *world, name string, i int, m store.Mark) error {

@@ -25,6 +25,8 @@ type SignalFilter struct {
 	Consequence rules.Consequence
 	// Statuses are OPEN, CLOSED, MERGED and RETRACTED.
 	Statuses []string
+	// Occurrence the signals belong to.
+	Occurrence int64
 	// The last hit was measured in [From, To).
 	From, To            time.Time
 	ChangedAfterClosing bool
@@ -167,6 +169,9 @@ func (f SignalFilter) conditions(a Actor, chartID int64) *conditions {
 	}
 	if f.Consequence != 0 {
 		c.add(`s.consequence = $?`, int16(f.Consequence))
+	}
+	if f.Occurrence != 0 {
+		c.add(`s.occurrence = $?`, f.Occurrence)
 	}
 	if !f.From.IsZero() {
 		c.add(`s.last_hit_at >= $?`, f.From)

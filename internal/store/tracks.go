@@ -136,7 +136,7 @@ func (w *work) insertTrack(ctx context.Context, chartID int64, lot string) (id i
 // StartLot opens a track for a lot of control material.
 func (s *Store) StartLot(ctx context.Context, a Actor, req Request, chart, lot string) (made Track, err error) {
 	defer wrap(ctx, &err, "StartLot")
-	if err := definition.CheckText("lot", lot, 1, definition.NameBytesMax); err != nil {
+	if err := definition.CheckName("lot", lot, 1, definition.NameBytesMax); err != nil {
 		return made, err
 	}
 	err = s.change(ctx, a, req, func(ctx context.Context, w *work) (any, error) {

@@ -39,7 +39,7 @@ type Track struct {
 	Results        int64
 	OpenSignals    int
 	Occurrence     int64
-	HoldSince      time.Time // zero: not on hold
+	HoldSince      time.Time // when the latest STOP was recorded; zero: not on hold
 	LastMeasuredAt time.Time // zero: no results
 	// Version is the number in force at the moment of reading, 0 for none.
 	Version int
@@ -217,11 +217,12 @@ type Mark struct {
 // Change is a change one principal asked for.
 type Change struct {
 	ID                 int64
-	Kind               string // VOID_RESULT, AMEND_RESULT, ADD_MARK, VOID_MARK
+	Kind               string // VOID_RESULT, AMEND_RESULT, ADD_MARK, VOID_MARK, WITHDRAW_VERSION
 	Status             string // PENDING, CONFIRMED, REJECTED
 	Chart              string
 	Source, SourceID   string
 	MarkID             int64
+	Version            int // the number to withdraw, 0 for none
 	ReasonCode, Reason string
 	Author             string
 	CreatedAt          time.Time
@@ -230,7 +231,12 @@ type Change struct {
 	DecisionReason     string
 	VerdictsChanged    int
 	SignalsEnded       []int64
+	// Fields is what it would set, against what stands now.
+	Fields []FieldChange
 }
+
+// FieldChange is one thing a change would set, in the contract's words.
+type FieldChange struct{ Field, From, To string }
 
 // Pattern is a pattern in progress that a version would end.
 type Pattern struct {

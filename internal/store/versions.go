@@ -75,6 +75,8 @@ type versionAnswer struct {
 	Chart    string `json:"chart"`
 	Number   int    `json:"version"`
 	Rejudged int    `json:"rejudged"`
+	// Change is set where a withdrawal is for another principal to confirm.
+	Change int64 `json:"change,omitempty"`
 }
 
 func (s *Store) replayVersion(a Actor, into *definition.Version, rejudged *int) func(context.Context, pgx.Tx, []byte) error {

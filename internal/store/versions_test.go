@@ -95,7 +95,7 @@ func TestLifeOfAVersion(t *testing.T) {
 			return err
 		},
 		"withdraw": func(c definition.Chart, v definition.Version) error {
-			_, _, err := f.WithdrawVersion(ctx, f.bob, req(), c.Name, v.Number, false, "wrong data")
+			_, _, _, err := f.WithdrawVersion(ctx, f.bob, req(), c.Name, v.Number, false, "wrong data")
 			return err
 		},
 	}
@@ -188,7 +188,7 @@ func TestVersionInForceIsTheLatestToHaveBegun(t *testing.T) {
 	}
 	t.Run("and its withdrawal leaves nothing until the next", func(t *testing.T) {
 		for _, number := range []int{3, 4} {
-			if _, _, err := f.WithdrawVersion(t.Context(), f.bob, req(), c.Name, number, false, "wrong data"); err != nil {
+			if _, _, _, err := f.WithdrawVersion(t.Context(), f.bob, req(), c.Name, number, false, "wrong data"); err != nil {
 				t.Fatal(err)
 			}
 		}
@@ -268,14 +268,11 @@ func TestApprovalThatTouchesStoredResultsIsRetroactive(t *testing.T) {
 		}
 	})
 	t.Run("and so is a withdrawal", func(t *testing.T) {
-		_, _, err := f.WithdrawVersion(t.Context(), f.bob, req(), c.Name, v.Number, false, "wrong data")
+		_, _, _, err := f.WithdrawVersion(t.Context(), f.bob, req(), c.Name, v.Number, false, "wrong data")
 		if refusal := wantReason(t, err, definition.Retroactive); refusal.Meta["results"] != "4" {
 			t.Errorf("got meta %v, want 4 results", refusal.Meta)
 		}
-		_, n, err := f.WithdrawVersion(t.Context(), f.bob, req(), c.Name, v.Number, true, "wrong data")
-		if err != nil || n != 4 {
-			t.Errorf("got %d rejudged, %v, want 4", n, err)
-		}
+		want(t, "rejudged by the confirmed withdrawal", f.mustWithdraw(c, v.Number, "wrong data"), 4)
 		want(t, "judged", f.verdicts(c, ""), "NOT_JUDGED/0 NOT_JUDGED/0 NOT_JUDGED/0 NOT_JUDGED/0 NOT_JUDGED/0")
 		want(t, "signals left open", len(f.mustSignals(c, "OPEN")), 0)
 		want(t, "signals retracted", len(f.mustSignals(c, "RETRACTED")), 1)
@@ -310,10 +307,10 @@ func TestVersionInBetweenCutsRunsThatReachAcross(t *testing.T) {
 	}
 	want(t, "after", f.verdicts(c, ""), "CLEAR/1 CLEAR/1 CLEAR/2 CLEAR/2")
 	f.mustRecheck()
-	_, n, err = f.WithdrawVersion(t.Context(), f.bob, req(), c.Name, between.Number, true, "not so")
-	if err != nil || n != 0 {
+	_, n, ch, err := f.WithdrawVersion(t.Context(), f.bob, req(), c.Name, between.Number, true, "not so")
+	if err != nil || n != 0 || ch != nil {
 		// Nothing is in force in its place, so the segment does not go on.
-		t.Errorf("withdrawal: got %d rejudged, %v, want none", n, err)
+		t.Errorf("withdrawal: got %d rejudged, change %v, %v, want none", n, ch, err)
 	}
 	f.mustRecheck()
 }
@@ -385,7 +382,7 @@ func TestBasisIsWhatAnEstimateMayRestOn(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	if _, _, err := f.DecideChange(t.Context(), f.bob, req(), change.ID, true, ""); err != nil {
+	if _, _, err := f.DecideChange(t.Context(), f.bob, req(), change.ID, true, "", nil); err != nil {
 		t.Fatal(err)
 	}
 	amended := result(c, 1, "11.5")

@@ -122,6 +122,18 @@ func (t Timeline) InForce(moment time.Time) *Version {
 	return nil
 }
 
+// SegmentStart gives the first moment of the segment that a moment lies in; zero is the beginning of time.
+func (t Timeline) SegmentStart(moment time.Time) time.Time {
+	i := t.At(moment)
+	for i > 0 && !t.Spans[i].Break {
+		i--
+	}
+	if i < 0 {
+		return time.Time{}
+	}
+	return t.Spans[i].From
+}
+
 // boundary reports whether a new segment starts after span a, up to and including span b, and whether it starts at head
 // starts.
 func (t Timeline) boundary(a, b int) (isBreak, headStart bool) {

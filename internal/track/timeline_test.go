@@ -157,6 +157,17 @@ func TestTimelineSegments(t *testing.T) {
 			if !slices.Equal(got, c.want) {
 				t.Errorf("got  %v\nwant %v", got, c.want)
 			}
+			for minute := -1; minute < 12; minute++ { // a segment begins at the latest break not after the moment
+				var want time.Time
+				for _, s := range c.want {
+					if s.isBreak && s.minute <= minute {
+						want = at(s.minute)
+					}
+				}
+				if got := track.BuildTimeline("mine", c.versions, c.marks).SegmentStart(at(minute)); !got.Equal(want) {
+					t.Errorf("minute %d: the segment starts at %v, want %v", minute, got, want)
+				}
+			}
 		})
 	}
 }
