@@ -14,6 +14,7 @@ func commands() []command {
 		{"post", "post a file of control results", runPost},
 		{"compute", "compute limits and findings from a file of results, with no service", runCompute},
 		{"judge", "judge a file of results by given limits, with no service", runJudge},
+		{"run-length", "tell what rules cost and what they catch, with no service", runRunLength},
 		{"validate", "run the published examples and print a dated pass list", runValidate},
 	}
 }
