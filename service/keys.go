@@ -44,7 +44,7 @@ func (s *KeyService) CreateKey(ctx context.Context, in *pb.CreateKeyRequest) (*p
 	if !fresh {
 		token = ""
 	}
-	return &pb.CreateKeyResponse{Key: keyToProto(k), Token: token}, nil
+	return &pb.CreateKeyResponse{Key: KeyToProto(k), Token: token}, nil
 }
 
 // ListKeys gives the keys, without their secrets.
@@ -63,7 +63,7 @@ func (s *KeyService) ListKeys(ctx context.Context, in *pb.ListKeysRequest) (*pb.
 	}
 	out := &pb.ListKeysResponse{Keys: make([]*pb.Key, len(keys)), NextPageToken: next}
 	for i, k := range keys {
-		out.Keys[i] = keyToProto(k)
+		out.Keys[i] = KeyToProto(k)
 	}
 	return out, nil
 }
@@ -78,7 +78,7 @@ func (s *KeyService) RevokeKey(ctx context.Context, in *pb.RevokeKeyRequest) (*p
 	if err != nil {
 		return nil, err
 	}
-	return &pb.RevokeKeyResponse{Key: keyToProto(k)}, nil
+	return &pb.RevokeKeyResponse{Key: KeyToProto(k)}, nil
 }
 
 const rolePrefix = "ROLE_"
@@ -107,7 +107,8 @@ func keyFromProto(in *pb.CreateKeyRequest, now time.Time) (definition.Key, error
 	return k, k.Check(now)
 }
 
-func keyToProto(k definition.Key) *pb.Key {
+// KeyToProto gives a key in the contract's form.
+func KeyToProto(k definition.Key) *pb.Key {
 	out := &pb.Key{
 		Id: k.ID, Principal: k.Principal, Labels: k.Labels, Sources: k.Sources,
 		CreateTime: timeToProto(k.CreatedAt), ExpireTime: timeToProto(k.ExpiresAt), RevokeTime: timeToProto(k.RevokedAt),

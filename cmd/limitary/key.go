@@ -9,6 +9,7 @@ import (
 	"text/tabwriter"
 	"time"
 
+	pb "limitary/api/limitary/v1"
 	"limitary/internal/definition"
 	"limitary/internal/store"
 	"limitary/service"
@@ -56,6 +57,7 @@ func keyCreate(ctx context.Context, env *environment, args []string) int {
 	f.Var(&labels, "label", "`KEY=VALUE` that a chart must have for the key to see it; may be repeated")
 	var sources listFlag
 	f.Var(&sources, "source", "`SOURCE` the key may post as; may be repeated (default: any); results of a source named here count as the key's own to amend and void")
+	asJSON := keyJSON(f)
 	if _, code, done := f.parse(args, 0, 0); done {
 		return code
 	}
@@ -78,6 +80,9 @@ func keyCreate(ctx context.Context, env *environment, args []string) int {
 		made, token, err := makeKey(ctx, s, k)
 		if err != nil {
 			return fail(env, "%v", err)
+		}
+		if *asJSON {
+			return printJSON(env, &pb.CreateKeyResponse{Key: service.KeyToProto(made), Token: token})
 		}
 		fmt.Fprintf(env.Stderr, "key %s of %s, roles %s, valid until %s; the token is not shown again:\n",
 			made.ID, made.Principal, roleNames(made), made.ExpiresAt.Format(time.RFC3339))
@@ -119,31 +124,46 @@ func keyList(ctx context.Context, env *environment, args []string) int {
 	var flags databaseFlags
 	flags.add(f)
 	all := f.Bool("all", false, "revoked keys too")
+	asJSON := keyJSON(f)
 	if _, code, done := f.parse(args, 0, 0); done {
 		return code
 	}
 	return withStore(ctx, env, &flags, func(s *store.Store) int {
-		w := tabwriter.NewWriter(env.Stdout, 0, 8, 2, ' ', 0)
-		fmt.Fprintln(w, "ID\tPRINCIPAL\tROLES\tLABELS\tEXPIRES\tREVOKED")
-		page := store.Page{Size: listPage}
-		for {
+		var list []definition.Key
+		for page := (store.Page{Size: listPage}); ; {
 			keys, next, err := s.ListKeys(ctx, atDatabase, page, *all)
 			if err != nil {
 				return fail(env, "%v", err)
 			}
-			for _, k := range keys {
-				labels := labelMap(k.Labels)
-				fmt.Fprintf(w, "%s\t%s\t%s\t%s\t%s\t%s\n", k.ID, k.Principal, roleNames(k), labels.String(), shortTime(k.ExpiresAt), shortTime(k.RevokedAt))
-			}
+			list = append(list, keys...)
 			if page.Token = next; next == "" {
-				break
+				return printKeys(env, list, *asJSON)
 			}
 		}
-		if err := w.Flush(); err != nil {
-			return fail(env, "%v", err)
-		}
-		return exitOK
 	})
+}
+
+// keyJSON defines the flag --json.
+func keyJSON(f *flagSet) *bool { return f.Bool("json", false, "write the API's own JSON") }
+
+func printKeys(env *environment, list []definition.Key, asJSON bool) int {
+	if asJSON {
+		out := &pb.ListKeysResponse{}
+		for _, k := range list {
+			out.Keys = append(out.Keys, service.KeyToProto(k))
+		}
+		return printJSON(env, out)
+	}
+	w := tabwriter.NewWriter(env.Stdout, 0, 8, 2, ' ', 0)
+	fmt.Fprintln(w, "ID\tPRINCIPAL\tROLES\tLABELS\tEXPIRES\tREVOKED")
+	for _, k := range list {
+		labels := labelMap(k.Labels)
+		fmt.Fprintf(w, "%s\t%s\t%s\t%s\t%s\t%s\n", k.ID, k.Principal, roleNames(k), labels.String(), shortTime(k.ExpiresAt), shortTime(k.RevokedAt))
+	}
+	if err := w.Flush(); err != nil {
+		return fail(env, "%v", err)
+	}
+	return exitOK
 }
 
 func shortTime(t time.Time) string {
@@ -157,6 +177,7 @@ func keyRevoke(ctx context.Context, env *environment, args []string) int {
 	f := newFlags(env, "key revoke ID [flags]", "Ends a key at once. ID is the part of the token between lim_ and the next _.")
 	var flags databaseFlags
 	flags.add(f)
+	asJSON := keyJSON(f)
 	rest, code, done := f.parse(args, 1, 1)
 	if done {
 		return code
@@ -165,6 +186,9 @@ func keyRevoke(ctx context.Context, env *environment, args []string) int {
 		k, err := s.RevokeKey(ctx, atDatabase, onceOnly("key revoke", rest[0]), rest[0])
 		if err != nil {
 			return fail(env, "%v", err)
+		}
+		if *asJSON {
+			return printJSON(env, &pb.RevokeKeyResponse{Key: service.KeyToProto(k)})
 		}
 		fmt.Fprintf(env.Stdout, "key %s of %s is revoked\n", k.ID, k.Principal)
 		return exitOK
