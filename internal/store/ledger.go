@@ -156,6 +156,13 @@ func (l *ledger) queueResults(b *pgx.Batch) {
 		charts, ids, tracks, sources, sourceIDs, measured, contents, digests, runs, versions, l.principal, judgeNumber, l.now, verdicts, entries)
 }
 
+func timeOrNull(t time.Time) *time.Time {
+	if t.IsZero() {
+		return nil
+	}
+	return &t
+}
+
 func orNull(s string) *string {
 	if s == "" {
 		return nil
@@ -235,16 +242,19 @@ func (l *ledger) queueVerdicts(b *pgx.Batch) {
 }
 
 func (l *ledger) queueTracks(b *pgx.Batch) {
-	for _, t := range l.tracks {
-		var hold *time.Time
-		if !t.HoldSince.IsZero() {
-			hold = &t.HoldSince
-		}
-		var occurrence *int64
-		if t.Occurrence != 0 {
-			occurrence = &t.Occurrence
-		}
-		b.Queue(`UPDATE tracks SET results = $2, open_signals = $3, occurrence = $4, hold_since = $5, last_recorded_at = $6 WHERE track_id = $1`,
-			t.ID, t.Results, t.OpenSignals, occurrence, hold, l.now)
+	n := len(l.tracks)
+	if n == 0 {
+		return
 	}
+	ids, results, open := make([]int64, n), make([]int64, n), make([]int32, n)
+	occurrences, holds := make([]*int64, n), make([]*time.Time, n)
+	for i, t := range l.tracks {
+		ids[i], results[i], open[i], holds[i] = t.ID, t.Results, int32(t.OpenSignals), timeOrNull(t.HoldSince)
+		if t.Occurrence != 0 {
+			occurrences[i] = &t.Occurrence
+		}
+	}
+	b.Queue(`UPDATE tracks t SET results = u.results, open_signals = u.open_signals, occurrence = u.occurrence, hold_since = u.hold_since, last_recorded_at = $6
+		FROM unnest($1::bigint[], $2::bigint[], $3::int[], $4::bigint[], $5::timestamptz[]) AS u (track_id, results, open_signals, occurrence, hold_since)
+		WHERE t.track_id = u.track_id`, ids, results, open, occurrences, holds, l.now)
 }

@@ -78,6 +78,14 @@ type storedRow struct {
 //
 // It is safe to repeat after any failure: what was committed is answered as duplicate.
 func (s *Store) PostResults(ctx context.Context, a Actor, results []definition.Result, allOrNothing bool, pre []*definition.Error) (answer PostAnswer, err error) {
+	if allOrNothing || len(results) > togetherRowsMax {
+		return s.postNow(ctx, a, results, allOrNothing, pre)
+	}
+	return s.together.post(ctx, s, a, results, pre)
+}
+
+// postNow posts in a transaction of its own.
+func (s *Store) postNow(ctx context.Context, a Actor, results []definition.Result, allOrNothing bool, pre []*definition.Error) (answer PostAnswer, err error) {
 	defer wrap(ctx, &err, "PostResults")
 	err = retry(ctx, func() error {
 		p := &posting{actor: a, results: slices.Clone(results), rows: make([]Posted, len(results)), all: allOrNothing}

@@ -96,13 +96,15 @@ type postedRows struct {
 
 // seal adds the audit entries of the post, one a chart, and the new heads of their chains.
 func (p *posting) seal(b *pgx.Batch) {
+	byChart := map[int64][]*resultRow{}
+	for i := range p.ledger.results {
+		r := &p.ledger.results[i]
+		byChart[r.chartID] = append(byChart[r.chartID], r)
+	}
+	var chains, entries []int64
+	var payloads, previous, hashes [][]byte
 	for _, c := range p.charts {
-		var rows []*resultRow
-		for i := range p.ledger.results {
-			if r := &p.ledger.results[i]; r.chartID == c.ID {
-				rows = append(rows, r)
-			}
-		}
+		rows := byChart[c.ID]
 		if len(rows) == 0 {
 			continue
 		}
@@ -111,11 +113,14 @@ func (p *posting) seal(b *pgx.Batch) {
 		if err != nil {
 			panic(err)
 		}
-		hash := auditHash(c.head.hash, payload)
-		b.Queue(`WITH moved AS (UPDATE chain_heads SET entry = $2, hash = $6 WHERE chain_id = $1)
-			INSERT INTO audit (chain_id, entry, kind, principal, payload, previous, hash, recorded_at) VALUES ($1, $2, 'POST_RESULTS', $3, $4, $5, $6, $7)`,
-			c.ID, entry, p.actor.Principal, payload, c.head.hash, hash, p.now)
+		chains, entries, payloads = append(chains, c.ID), append(entries, entry), append(payloads, payload)
+		previous, hashes = append(previous, c.head.hash), append(hashes, auditHash(c.head.hash, payload))
 	}
+	b.Queue(`WITH u AS (SELECT * FROM unnest($1::bigint[], $2::bigint[], $3::bytea[], $4::bytea[], $5::bytea[]) AS u (chain_id, entry, payload, previous, hash)),
+		moved AS (UPDATE chain_heads h SET entry = u.entry, hash = u.hash FROM u WHERE h.chain_id = u.chain_id)
+		INSERT INTO audit (chain_id, entry, kind, principal, payload, previous, hash, recorded_at)
+		SELECT u.chain_id, u.entry, 'POST_RESULTS', $6, u.payload, u.previous, u.hash, $7 FROM u`,
+		chains, entries, payloads, previous, hashes, p.actor.Principal, p.now)
 }
 
 // digestRows gives the digest of result rows as written: id, content digest, version and verdict of each, by id.

@@ -47,6 +47,7 @@ type Store struct {
 	pool       *pgxpool.Pool
 	log        *slog.Logger
 	chartCache chartCache
+	together   together
 	versions   *lru[string, *compiled]
 	timelines  *lru[timelineKey, *timeline]
 }
