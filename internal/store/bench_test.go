@@ -96,7 +96,7 @@ func (be *bench) found(b *testing.B, charts int) {
 // benchRow is the n-th result of a chart in control: standard normal noise around the centre, from a seeded generator.
 func benchRow(chartName string, n int) definition.Result {
 	value := 10 + rand.New(rand.NewPCG(uint64(n), 11)).NormFloat64()
-	at := epoch.Add(time.Duration(n) * time.Minute)
+	at := epoch.Add(time.Duration(n) * 20 * time.Second)
 	return definition.Result{Chart: chartName, Source: "lims", SourceID: fmt.Sprintf("%09d", n), MeasuredAt: at, MeasuredText: at.Format(time.RFC3339), Role: definition.Routine,
 		Readings: []string{fmt.Sprintf("%.2f", value)}, RunID: fmt.Sprintf("R%07d", n/10), Unit: "mg/L", Analyst: "AB", Instrument: "IC-2"}
 }

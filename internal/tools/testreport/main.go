@@ -1,6 +1,7 @@
 // Command testreport runs go test over packages and says honestly what passed: it prints each package as it ends, the
-// output of what failed, and last a line "N passed, N failed, N skipped". Skipped tests count as failed, since a skip
-// hides; a package that does not build, or whose TestMain ends without running its tests, is a failure too.
+// output of what failed, and last a line "N passed, N failed, N skipped". A skipped test is shown with its reason, and
+// fails the run of root, who can run them all; a package that does not build, or whose TestMain ends without running its
+// tests, is a failure too.
 //
 // Use: testreport [go test flags and packages]
 package main
@@ -47,7 +48,7 @@ func main() {
 		fmt.Println("go test:", err)
 	}
 	fmt.Printf("%d passed, %d failed, %d skipped\n", r.passed, r.failed, r.skipped)
-	if r.failed > 0 || r.skipped > 0 || r.passed == 0 {
+	if r.failed > 0 || r.passed == 0 || r.skipped > 0 && os.Geteuid() == 0 {
 		os.Exit(1)
 	}
 }
