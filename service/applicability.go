@@ -29,11 +29,11 @@ func cautions(kind chart.Kind, location, dispersion []rules.Spec, found []limits
 			out = append(out, definition.Finding{Code: code, Figure: float64(len(ids)), Text: fmt.Sprintf(text, strings.Join(ids, ", ")), Advice: advice, CouldMiss: miss})
 		}
 	}
-	add(cautionRuleNotForDispersion, dispersion, func(s rules.Spec) bool { return !fitsDispersion(s) },
+	add(cautionRuleNotForDispersion, dispersion, func(s rules.Spec) bool { return !s.SuitsDispersion() },
 		"Rules %s watch a dispersion trace, whose statistics are skewed; their false alarms are not those of a location trace.",
 		"Keep to one point beyond a line, runs on one side, trends and alternations there.", "A skewed statistic can also hide a fall of the scatter.")
 	if kind == chart.Individuals {
-		add(cautionNeighboursShare, dispersion, isPattern,
+		add(cautionNeighboursShare, dispersion, rules.Spec.IsRunPattern,
 			"Rules %s look for patterns among moving ranges, and neighbouring moving ranges share a value.",
 			"Expect more of these patterns than their nominal rate; look at the values first.", "The nominal rate of the rules says nothing here.")
 	}
@@ -58,20 +58,6 @@ func matching(specs []rules.Spec, against func(rules.Spec) bool) []string {
 		}
 	}
 	return ids
-}
-
-func fitsDispersion(s rules.Spec) bool {
-	switch s.Kind {
-	case rules.Beyond:
-		return s.M == 1
-	case rules.BeyondLine, rules.SameSide, rules.Trend, rules.Alternating:
-		return true
-	}
-	return false
-}
-
-func isPattern(s rules.Spec) bool {
-	return s.Kind == rules.SameSide || s.Kind == rules.Trend || s.Kind == rules.Alternating
 }
 
 func isSetup(s rules.Spec) bool {

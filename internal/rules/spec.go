@@ -262,3 +262,15 @@ func (s Spec) NeedsSigma() bool {
 func (s Spec) NeedsCentre() bool {
 	return s.Kind != BeyondLine && s.Kind != Trend && s.Kind != Alternating
 }
+
+// SuitsDispersion reports whether the rule may watch moving ranges, ranges or standard deviations. Zone rules of several
+// points take a symmetric statistic for granted, which these are not (common practice, no source).
+func (s Spec) SuitsDispersion() bool {
+	return s.Kind == BeyondLine || s.Kind == Beyond && s.M == 1 || s.IsRunPattern()
+}
+
+// IsRunPattern reports whether the rule follows neighbours: a run on one side, a trend or an alternation. On moving
+// ranges such a pattern is weak evidence, because neighbouring moving ranges share a value.
+func (s Spec) IsRunPattern() bool {
+	return s.Kind == SameSide || s.Kind == Trend || s.Kind == Alternating
+}

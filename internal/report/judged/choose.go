@@ -11,11 +11,7 @@ import (
 // patterns of many points take a symmetric statistic for granted (common practice, no source).
 func DispersionRules(kind chart.Kind, specs []rules.Spec, asked bool) (taken []rules.Spec, left []string) {
 	for _, s := range specs {
-		fits := s.Kind == rules.BeyondLine || s.Kind == rules.Beyond && s.M == 1
-		if s.Kind == rules.SameSide || s.Kind == rules.Trend || s.Kind == rules.Alternating {
-			fits = kind != chart.Individuals || asked
-		}
-		if fits {
+		if s.SuitsDispersion() && !(s.IsRunPattern() && kind == chart.Individuals && !asked) {
 			taken = append(taken, s)
 		} else {
 			left = append(left, s.ID)
