@@ -140,8 +140,6 @@ func (t Timeline) boundary(a, b int) (isBreak, headStart bool) {
 	for i := a + 1; i <= b; i++ {
 		if t.Spans[i].Break {
 			isBreak, headStart = true, t.Spans[i].HeadStart
-		} else if t.Spans[i].HeadStart {
-			headStart = true
 		}
 	}
 	return isBreak, headStart
