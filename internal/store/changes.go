@@ -178,19 +178,25 @@ func effectOn(updates []TrackUpdate) (verdicts int, ended []int64) {
 	return verdicts, ended
 }
 
-// tryOnly runs apply on copies of the tracks in a savepoint and keeps nothing of it.
-func (w *work) tryOnly(ctx context.Context, c *chartRow, tracks []*trackRow, apply func(*work, *chartRow, []*trackRow) ([]TrackUpdate, error)) (updates []TrackUpdate, err error) {
+// try runs apply on copies of the chart and its tracks in a savepoint, and keeps what it did only where keep says so.
+func (w *work) try(ctx context.Context, c *chartRow, tracks []*trackRow, keep func([]TrackUpdate) bool,
+	apply func(*work, *chartRow, []*trackRow) ([]TrackUpdate, error)) (updates []TrackUpdate, kept bool, err error) {
 	err = w.inSavepoint(ctx, func(inner *work) (bool, error) {
+		chart := *c
 		copies := make([]*trackRow, len(tracks))
 		for i, t := range tracks {
 			row := *t
 			copies[i] = &row
 		}
-		updates, err = apply(inner, c, copies)
-		return false, err
+		updates, err = apply(inner, &chart, copies)
+		kept = err == nil && keep(updates)
+		return kept, err
 	})
-	return updates, err
+	return updates, kept, err
 }
+
+// nothing keeps nothing: the change is tried only to see what it would do.
+func nothing([]TrackUpdate) bool { return false }
 
 // changeAnswer is what a repeated request finds again.
 type changeAnswer struct {
@@ -268,10 +274,9 @@ type revisionSaid struct {
 func (w *work) tryAmendment(ctx context.Context, c *chartRow, tracks []*trackRow, cur *currentResult, content definition.Result,
 	apply func(*work, *chartRow, []*trackRow) ([]TrackUpdate, error)) (updates []TrackUpdate, kept bool, err error) {
 	if content.JudgesAlike(cur.content) || cur.item.Stored.Version == 0 {
-		return w.tryMark(ctx, c, tracks, apply)
+		return w.try(ctx, c, tracks, leavesEarlier, apply)
 	}
-	updates, err = w.tryOnly(ctx, c, tracks, apply)
-	return updates, false, err
+	return w.try(ctx, c, tracks, nothing, apply)
 }
 
 // amendable reads the result to amend and checks that it may be, and that the new content is sound.
@@ -320,7 +325,7 @@ func (s *Store) VoidResult(ctx context.Context, a Actor, req Request, chart, sou
 		}
 		// The trial names a second principal that does not exist, which the schema asks of a void.
 		r := revise{content: cur.content, voided: true, author: a.Principal, confirmedBy: "trial of " + a.Principal, reasonCode: reasonCode, reason: reason}
-		updates, err := w.tryOnly(ctx, c, tracks, func(w *work, c *chartRow, tracks []*trackRow) ([]TrackUpdate, error) {
+		updates, _, err := w.try(ctx, c, tracks, nothing, func(w *work, c *chartRow, tracks []*trackRow) ([]TrackUpdate, error) {
 			return s.applyRevision(ctx, w, c, tracks, cur, r, entry)
 		})
 		if err != nil {

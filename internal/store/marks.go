@@ -77,7 +77,7 @@ func (s *Store) AddMark(ctx context.Context, a Actor, req Request, m Mark, reaso
 		if err != nil {
 			return nil, err
 		}
-		updates, kept, err := w.tryMark(ctx, c, tracks, func(w *work, c *chartRow, tracks []*trackRow) (updates []TrackUpdate, err error) {
+		updates, kept, err := w.try(ctx, c, tracks, leavesEarlier, func(w *work, c *chartRow, tracks []*trackRow) (updates []TrackUpdate, err error) {
 			answer.Mark, updates, err = s.placeMark(ctx, w, c, tracks, form, "", entry)
 			return updates, err
 		})
@@ -142,36 +142,19 @@ func (w *work) openChart(ctx context.Context, name string) (*chartRow, []*trackR
 	return c, tracks, err
 }
 
-// tryMark runs apply on copies of the chart and its tracks in a savepoint. It keeps what apply did only where that left
-// every earlier verdict and signal as it was; kept says so.
-func (w *work) tryMark(ctx context.Context, c *chartRow, tracks []*trackRow, apply func(*work, *chartRow, []*trackRow) ([]TrackUpdate, error)) (updates []TrackUpdate, kept bool, err error) {
-	err = w.inSavepoint(ctx, func(inner *work) (bool, error) {
-		chart := *c
-		copies := make([]*trackRow, len(tracks))
-		for i, t := range tracks {
-			row := *t
-			copies[i] = &row
-		}
-		updates, err = apply(inner, &chart, copies)
-		kept = err == nil && !altersEarlier(updates)
-		return kept, err
-	})
-	return updates, kept, err
-}
-
-// altersEarlier reports whether a verdict changed or a signal that was there is not as it was.
-func altersEarlier(updates []TrackUpdate) bool {
+// leavesEarlier reports whether no verdict changed and every signal that was there is as it was.
+func leavesEarlier(updates []TrackUpdate) bool {
 	for _, u := range updates {
 		if u.Rejudged > 0 {
-			return true
+			return false
 		}
 		for _, s := range u.Signals {
 			if s.Change != "OPENED" {
-				return true
+				return false
 			}
 		}
 	}
-	return false
+	return true
 }
 
 // askMark records the change for confirmation; a reason is needed now.
@@ -232,7 +215,7 @@ func (s *Store) VoidMark(ctx context.Context, a Actor, req Request, chart string
 		if err != nil {
 			return nil, err
 		}
-		updates, kept, err := w.tryMark(ctx, c, tracks, func(w *work, c *chartRow, tracks []*trackRow) ([]TrackUpdate, error) {
+		updates, kept, err := w.try(ctx, c, tracks, leavesEarlier, func(w *work, c *chartRow, tracks []*trackRow) ([]TrackUpdate, error) {
 			return s.applyMarkVoid(ctx, w, c, tracks, id, a.Principal, "", reason, entry)
 		})
 		if err != nil {

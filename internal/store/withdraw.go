@@ -86,7 +86,7 @@ func (s *Store) askWithdraw(ctx context.Context, w *work, c *chartRow, tracks []
 	if err != nil {
 		return 0, err
 	}
-	updates, err := w.tryOnly(ctx, c, tracks, func(w *work, c *chartRow, tracks []*trackRow) ([]TrackUpdate, error) {
+	updates, _, err := w.try(ctx, c, tracks, nothing, func(w *work, c *chartRow, tracks []*trackRow) ([]TrackUpdate, error) {
 		tried := *c // the trial gives it a timeline that is rolled back
 		return s.carryOutDecision(ctx, w, &tried, tracks, before, v, withdrawal(reason), entry)
 	})
