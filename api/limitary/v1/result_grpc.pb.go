@@ -49,8 +49,8 @@ type EvaluationServiceClient interface {
 	GetRun(ctx context.Context, in *GetRunRequest, opts ...grpc.CallOption) (*GetRunResponse, error)
 	// ExplainVerdict shows the points, lines and arithmetic behind the current verdict on a result.
 	ExplainVerdict(ctx context.Context, in *ExplainVerdictRequest, opts ...grpc.CallOption) (*ExplainVerdictResponse, error)
-	// AmendResult replaces the content of a result. Where a verdict would change, it is a request that another principal
-	// confirms. Role: poster, for the key's own results.
+	// AmendResult replaces the content of a result. Of a judged result, a change of time, place, readings, role or lot is a
+	// request that another principal confirms; anything else takes effect at once. Role: poster, for the key's own results.
 	AmendResult(ctx context.Context, in *AmendResultRequest, opts ...grpc.CallOption) (*AmendResultResponse, error)
 	// VoidResult asks for a result to be taken out of judgement; another principal confirms. The key stays taken.
 	// Role: poster, for the key's own results.
@@ -185,8 +185,8 @@ type EvaluationServiceServer interface {
 	GetRun(context.Context, *GetRunRequest) (*GetRunResponse, error)
 	// ExplainVerdict shows the points, lines and arithmetic behind the current verdict on a result.
 	ExplainVerdict(context.Context, *ExplainVerdictRequest) (*ExplainVerdictResponse, error)
-	// AmendResult replaces the content of a result. Where a verdict would change, it is a request that another principal
-	// confirms. Role: poster, for the key's own results.
+	// AmendResult replaces the content of a result. Of a judged result, a change of time, place, readings, role or lot is a
+	// request that another principal confirms; anything else takes effect at once. Role: poster, for the key's own results.
 	AmendResult(context.Context, *AmendResultRequest) (*AmendResultResponse, error)
 	// VoidResult asks for a result to be taken out of judgement; another principal confirms. The key stays taken.
 	// Role: poster, for the key's own results.
