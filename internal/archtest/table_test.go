@@ -27,7 +27,7 @@ type row struct {
 
 var (
 	core = []string{"internal/chart", "internal/decimal", "internal/rules", "internal/judge", "internal/limits", "internal/runlength/...",
-		"internal/diagnostics/..."}
+		"internal/counts", "internal/diagnostics/..."}
 
 	gonum    = []string{"gonum.org/v1/gonum"}
 	pgx      = []string{"github.com/jackc/pgx/v5"}
@@ -46,6 +46,7 @@ var table = []row{
 	coreRow("internal/decimal"),
 	coreRow("internal/rules"),
 	coreRow("internal/judge"),
+	coreRow("internal/counts"),
 	coreRow("internal/limits"),
 	coreRow("internal/runlength/..."),
 	// A run length may take seconds on all processors, and its caller may give it up: a context and the processors' number.
