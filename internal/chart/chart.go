@@ -8,55 +8,6 @@ package chart
 
 import "fmt"
 
-// Kind says which statistics a chart plots.
-type Kind uint8
-
-const (
-	// Given plots statistics exactly as they come; nothing is computed from readings.
-	Given Kind = iota
-	// Individuals plots single values and the moving range of two neighbours.
-	Individuals
-	// XbarR plots subgroup means and subgroup ranges.
-	XbarR
-	// XbarS plots subgroup means and subgroup standard deviations.
-	XbarS
-)
-
-var kindNames = [...]string{Given: "given", Individuals: "individuals", XbarR: "xbar_r", XbarS: "xbar_s"}
-
-// String is the name used on the command line, in files and in canonical bytes.
-func (k Kind) String() string {
-	if int(k) < len(kindNames) {
-		return kindNames[k]
-	}
-	return fmt.Sprintf("kind(%d)", uint8(k))
-}
-
-// ParseKind reads a name written by Kind.String. Given is not a name a user can ask for.
-func ParseKind(name string) (Kind, error) {
-	for k := Individuals; int(k) < len(kindNames); k++ {
-		if kindNames[k] == name {
-			return k, nil
-		}
-	}
-	return Given, fmt.Errorf("kind %q: want one of individuals, xbar_r, xbar_s", name)
-}
-
-// SubgroupSizeMax bounds the readings of one subgroup. Chart factors beyond it change in the fourth digit only, and a
-// range of so many readings wastes nearly all of them.
-const SubgroupSizeMax = 100
-
-// CheckSize reports whether a subgroup of size readings fits the kind.
-func (k Kind) CheckSize(size int) error {
-	switch {
-	case k == Individuals && size != 1:
-		return fmt.Errorf("subgroup size %d: an individuals chart has size 1", size)
-	case (k == XbarR || k == XbarS) && (size < 2 || size > SubgroupSizeMax):
-		return fmt.Errorf("subgroup size %d: a chart of kind %s has 2 to %d readings a subgroup", size, k, SubgroupSizeMax)
-	}
-	return nil
-}
-
 // Role names one of the two traces of a chart.
 type Role uint8
 

@@ -15,7 +15,6 @@ import (
 
 	"limitary/internal/chart"
 	"limitary/internal/decimal"
-	"limitary/internal/limits"
 	"limitary/internal/rules"
 )
 
@@ -28,6 +27,8 @@ type Limits struct {
 	// ProcessSigma is the published standard deviation of a single reading, in the chart's unit. It gives the scale of
 	// a subgroup with fewer readings than nominal; 0 where only full ones can come.
 	ProcessSigma float64
+	// Model is what the scale of a point follows from besides.
+	Model chart.Model
 	// Traces has the location and the dispersion trace; nil where that trace is not judged.
 	Traces [chart.Roles]*Trace
 }
@@ -49,6 +50,8 @@ type Judge struct {
 	plans  [chart.Roles]*rules.Plan
 	// boundsWatched: a bound can enter a rule of the location trace.
 	boundsWatched bool
+	// straight: readings are judged as they are, and lines follow from centre and sigma.
+	straight bool
 }
 
 // New checks the limits and compiles the rules. Errors are *Error.
@@ -66,14 +69,24 @@ func New(l Limits) (*Judge, error) {
 	if l.Traces[chart.Location] == nil && l.Traces[chart.Dispersion] == nil {
 		return nil, &Error{"location", "neither a location nor a dispersion trace is given"}
 	}
-	if l.Kind == chart.Given && l.Traces[chart.Dispersion] != nil {
-		return nil, &Error{"dispersion", "statistics plotted as given make one trace; name a chart kind for a second"}
+	for role := range chart.Roles {
+		if l.Traces[role] == nil || l.Kind.Has(role) {
+			continue
+		}
+		if l.Kind == chart.Given {
+			return nil, &Error{"dispersion", "statistics plotted as given make one trace; name a chart kind for a second"}
+		}
+		return nil, &Error{role.String(), fmt.Sprintf("a chart of kind %s has no such trace", l.Kind)}
 	}
+	if err := l.checkModel(); err != nil {
+		return nil, err
+	}
+	j.straight = l.Model.Transform.Kind == chart.Identity && len(l.Model.Levels) == 0 && !l.Kind.Counts()
 	for role, t := range l.Traces {
 		if t == nil {
 			continue
 		}
-		plan, err := compile(t, l.Places)
+		plan, err := j.compile(chart.Role(role), t)
 		if err != nil {
 			err.Field = chart.Role(role).String() + "." + err.Field
 			return nil, err
@@ -84,7 +97,7 @@ func New(l Limits) (*Judge, error) {
 	return j, nil
 }
 
-func compile(t *Trace, places int) (*rules.Plan, *Error) {
+func (j *Judge) compile(role chart.Role, t *Trace) (*rules.Plan, *Error) {
 	if t.Centre != nil && !finite(*t.Centre) {
 		return nil, &Error{"centre", fmt.Sprintf("%v: want a finite number", *t.Centre)}
 	}
@@ -106,7 +119,11 @@ func compile(t *Trace, places int) (*rules.Plan, *Error) {
 	if l, u := t.LowerAction, t.UpperAction; l.Fixed() && u.Fixed() && l.Value >= u.Value {
 		return nil, &Error{"lower_action", fmt.Sprintf("value %v is not below upper_action, %v", l.Value, u.Value)}
 	}
-	plan, err := rules.Compile(t.Trace, places, t.Rules)
+	specs := t.Rules
+	if j.limits.Kind.Duplicates() {
+		specs = rules.OneSide(specs, rules.UpperOnly)
+	}
+	plan, err := rules.CompileLines(t.Trace, j.limits.Places, specs, j.limits.Model.Inspected, j.lineFunc(role))
 	if err != nil {
 		e := err.(*rules.SpecError)
 		return nil, &Error{e.Field, e.Problem}
@@ -133,30 +150,6 @@ func (j *Judge) Window() int {
 	return w
 }
 
-// Scale gives the centre and sigma of a trace for a subgroup of n readings; ok is false where the trace has no point
-// at that size.
-func (j *Judge) Scale(role chart.Role, n int) (s rules.Scale, ok bool) {
-	plan := j.plans[role]
-	if plan == nil {
-		return rules.Scale{}, false
-	}
-	if n == j.limits.SubgroupSize || j.limits.Kind == chart.Given || j.limits.Kind == chart.Individuals {
-		return plan.Nominal(), true
-	}
-	if role == chart.Dispersion && n < 2 || j.limits.ProcessSigma == 0 {
-		return rules.Scale{}, false
-	}
-	own, ok := limits.At(j.limits.Kind, j.limits.ProcessSigma, n)
-	if !ok {
-		return rules.Scale{}, false
-	}
-	if role == chart.Dispersion {
-		// The nominal centre is published rounded; one for another size is rounded alike.
-		return rules.Scale{Centre: decimal.Round(own.DispersionCentre, j.limits.Places), Sigma: own.DispersionSigma}, true
-	}
-	return rules.Scale{Centre: plan.Nominal().Centre, Sigma: own.LocationSigma}, true
-}
-
 // Lines are the positions of a trace's lines at one point; nil where there is none.
 type Lines struct {
 	Centre                     *float64
@@ -172,7 +165,7 @@ func (j *Judge) Lines(role chart.Role, at rules.Scale) Lines {
 	}
 	where := func(l chart.Line, multiple float64) *float64 {
 		v, ok := plan.Where(l, at, multiple)
-		if !ok || role == chart.Dispersion && multiple < 0 && !l.Fixed() && v <= 0 {
+		if !ok || role == chart.Dispersion && multiple < 0 && !l.Fixed() && (v <= 0 || j.limits.Kind.Duplicates()) {
 			return nil // no statistic of spread can fall below zero, so the line is impossible
 		}
 		return &v

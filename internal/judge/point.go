@@ -1,12 +1,10 @@
 package judge
 
 import (
-	"math"
 	"slices"
 
 	"limitary/internal/chart"
 	"limitary/internal/decimal"
-	"limitary/internal/limits"
 	"limitary/internal/rules"
 )
 
@@ -17,6 +15,10 @@ type Point struct {
 	Readings []float64
 	// Bounds has a bound for each reading, or is nil where all are measured.
 	Bounds []decimal.Bound
+	// Count is what a chart of counts has in place of readings, as chart.Kind.CheckCount allows it.
+	Count *chart.Count
+	// Material names the level of a standardised track.
+	Material string
 	// Centre and Sigma of the plotted statistic where they differ from the chart's; statistics as given only.
 	Centre, Sigma *float64
 	// Break starts a new segment here.
@@ -58,11 +60,14 @@ const (
 	BoundProvesNothing
 	// Voided: the result was voided.
 	Voided
+	// NoScale: nothing says how far such a result may lie from the centre. Its material is no level of the standardised
+	// track, or its relative range has a mean of zero.
+	NoScale
 )
 
 // String is the name used in output and storage.
 func (r Reason) String() string {
-	return [...]string{"", "NO_RESULT", "NO_VERSION_IN_FORCE", "TOO_FEW_READINGS", "BOUND_PROVES_NOTHING", "VOIDED"}[min(int(r), 5)]
+	return [...]string{"", "NO_RESULT", "NO_VERSION_IN_FORCE", "TOO_FEW_READINGS", "BOUND_PROVES_NOTHING", "VOIDED", "NO_SCALE"}[min(int(r), 6)]
 }
 
 // Hit is one rule completing at a result. Backs count points of the hit's trace, see rules.Hit.
@@ -100,6 +105,9 @@ type State struct {
 	aside   *State
 	prev    float64
 	hasPrev bool
+	// readings and bounds are scratch for one point on the judged scale.
+	readings []float64
+	bounds   []decimal.Bound
 }
 
 // NewState gives the state before the first point of a segment.
@@ -131,9 +139,16 @@ func (j *Judge) Judge(st *State, pt Point, v *Verdict) {
 	if pt.Break {
 		j.Reset(st, false)
 	}
-	if len(pt.Readings) == 0 {
+	if len(pt.Readings) == 0 && pt.Count == nil {
 		v.Reason = NoResult
 		return
+	}
+	if !j.straight {
+		var ok bool
+		if pt, ok = j.onScale(st, pt); !ok {
+			v.Reason = NoScale
+			return
+		}
 	}
 	if bound, any := pt.bound(); any {
 		j.judgeBound(st, pt, bound, v)
@@ -144,8 +159,13 @@ func (j *Judge) Judge(st *State, pt Point, v *Verdict) {
 	}
 	if x, scale, ok := j.dispersion(st, pt); ok {
 		j.point(st, chart.Dispersion, x, scale, v)
+	} else if j.limits.Kind == chart.RelativeRange && len(pt.Readings) > 1 {
+		v.Reason = NoScale
+		return
 	}
-	st.prev, st.hasPrev = pt.Readings[0], true
+	if len(pt.Readings) > 0 {
+		st.prev, st.hasPrev = pt.Readings[0], true
+	}
 	if !j.watched(v) {
 		v.Reason = TooFewReadings
 		return
@@ -200,59 +220,6 @@ func (j *Judge) conclude(v *Verdict) {
 
 // StandingOf gives the standing a consequence leads to.
 func StandingOf(c rules.Consequence) Standing { return Clear + Standing(c) }
-
-// location gives the statistic and scale of the location trace.
-func (j *Judge) location(pt Point) (x float64, scale rules.Scale, ok bool) {
-	scale, ok = j.Scale(chart.Location, len(pt.Readings))
-	if !ok {
-		return 0, scale, false
-	}
-	if pt.Centre != nil {
-		scale.Centre = *pt.Centre
-	}
-	if pt.Sigma != nil {
-		scale.Sigma = *pt.Sigma
-	}
-	return decimal.Mean(pt.Readings, j.limits.Places), scale, true
-}
-
-// dispersion gives the statistic and scale of the dispersion trace.
-func (j *Judge) dispersion(st *State, pt Point) (x float64, scale rules.Scale, ok bool) {
-	if j.limits.Kind == chart.Individuals && !st.hasPrev {
-		return 0, scale, false
-	}
-	scale, ok = j.Scale(chart.Dispersion, len(pt.Readings))
-	if !ok {
-		return 0, scale, false
-	}
-	switch j.limits.Kind {
-	case chart.Individuals:
-		return distance(pt.Readings[0], st.prev, j.limits.Places), scale, true
-	case chart.XbarR:
-		lo, hi := pt.Readings[0], pt.Readings[0]
-		for _, r := range pt.Readings[1:] {
-			lo, hi = min(lo, r), max(hi, r)
-		}
-		return distance(hi, lo, j.limits.Places), scale, true
-	}
-	return decimal.Round(held(limits.StandardDeviation(pt.Readings)), j.limits.Places), scale, true
-}
-
-func distance(a, b float64, places int) float64 {
-	if a < b {
-		a, b = b, a
-	}
-	return held(decimal.Difference(a, b, places))
-}
-
-// held gives a spread that float64 can hold. One of readings near the largest float64, or its squares, may be more than
-// that, and is beyond every line either way.
-func held(spread float64) float64 {
-	if spread <= math.MaxFloat64 {
-		return spread
-	}
-	return math.MaxFloat64 // for infinity, and for what comes of two of them
-}
 
 // watchesBounds reports whether a bound can enter a rule of the trace. It enters no trend, alternation, EWMA or CUSUM:
 // where a trace has no other rules, nothing looks at a bound, and it is not clear.

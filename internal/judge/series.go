@@ -21,6 +21,9 @@ type SeriesHit struct {
 // Series judges a whole sequence of single values in one segment; NaN stands for no result. It gives what judging the
 // values one by one gives, in a fraction of the time. Kinds with subgroups take points, not series.
 func (j *Judge) Series(values []float64) []SeriesHit {
+	if !j.straight {
+		return j.seriesOnScale(values)
+	}
 	xs, index := j.present(values)
 	var hits []SeriesHit
 	collect := func(role chart.Role, points []float64, first int) {
@@ -77,4 +80,29 @@ func (j *Judge) rounded(xs []float64) []float64 {
 		out[i] = decimal.Round(x, j.limits.Places)
 	}
 	return out
+}
+
+// seriesOnScale is Series for readings that are judged on another scale, point by point.
+func (j *Judge) seriesOnScale(values []float64) (hits []SeriesHit) {
+	st := j.NewState()
+	var v Verdict
+	var index [chart.Roles][]int // of the values that were points
+	for i, x := range values {
+		if math.IsNaN(x) {
+			continue
+		}
+		one := [1]float64{x}
+		j.Judge(st, Point{Readings: one[:]}, &v)
+		for role, t := range v.Traces {
+			if t.Point {
+				index[role] = append(index[role], i)
+			}
+		}
+		for _, h := range v.Hits {
+			at := index[h.Role]
+			last := len(at) - 1
+			hits = append(hits, SeriesHit{i, h.Role, h.Rule, h.Side, at[last-h.WindowBack], at[last-h.FirstBack]})
+		}
+	}
+	return hits
 }

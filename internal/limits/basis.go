@@ -20,6 +20,12 @@ type within struct {
 	squares float64 // Σ(x - x̄)²
 }
 
+// run is the mean of one analytical run.
+type run struct {
+	n    int
+	mean float64
+}
+
 // basis is the checked material that estimates rest on.
 type basis struct {
 	kind     chart.Kind
@@ -32,23 +38,29 @@ type basis struct {
 	movingRanges []float64
 	chains       int
 	within       []within
+	// runs of run means, those of one reading included.
+	runs []run
 }
 
-// gather checks the groups and takes up those that are used. Groups of one reading in a chart of means tell about the
-// centre only: alone, a reading says nothing of the scatter within its subgroup.
-func (r *Request) gather() (*basis, error) {
-	b := &basis{kind: r.Kind}
+// checkGroups refuses what is wrong in the groups, whatever kind of readings they are.
+func (r *Request) checkGroups() error {
 	total := 0
 	for i := range r.Groups {
 		if err := r.checkGroup(i); err != nil {
-			return nil, err
+			return err
 		}
 		total += len(r.Groups[i].Readings)
 	}
 	if total > ReadingsMax {
-		return nil, refuse("groups", fmt.Sprintf("%d readings", total), "more than the limit of %d readings in all", ReadingsMax)
+		return refuse("groups", fmt.Sprintf("%d readings", total), "more than the limit of %d readings in all", ReadingsMax)
 	}
-	b.readings = make([]float64, 0, total)
+	return nil
+}
+
+// gather takes up the groups that are used. Groups of one reading in a chart of means tell about the centre, and about
+// what varies between runs: alone, a reading says nothing of the scatter within its subgroup.
+func (r *Request) gather() *basis {
+	b := &basis{kind: r.Kind}
 	for i := range r.Groups {
 		g := &r.Groups[i]
 		if g.Excluded {
@@ -64,12 +76,16 @@ func (r *Request) gather() (*basis, error) {
 			}
 		}
 	}
-	if r.Kind == chart.Individuals {
+	switch r.Kind {
+	case chart.Individuals:
 		b.takeMovingRanges(r.Groups)
-	} else {
+	case chart.RunMeans:
+		b.takeRuns(r.Groups)
+		b.takeWithin(r.Groups)
+	case chart.XbarR, chart.XbarS:
 		b.takeWithin(r.Groups)
 	}
-	return b, nil
+	return b
 }
 
 // decimalsOf gives the decimals of a group as written, or of the shortest forms, bounded by what float64 carries.
@@ -104,6 +120,14 @@ func (b *basis) takeMovingRanges(groups []Group) {
 			inChain = false
 		}
 		previous, joined = x, true
+	}
+}
+
+func (b *basis) takeRuns(groups []Group) {
+	for i := range groups {
+		if g := &groups[i]; !g.Excluded {
+			b.runs = append(b.runs, run{len(g.Readings), decimal.Mean(g.Readings, decimal.Unrounded)})
+		}
 	}
 }
 

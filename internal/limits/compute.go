@@ -3,125 +3,97 @@ package limits
 import (
 	"fmt"
 	"math"
+	"slices"
 	"strconv"
 
 	"limitary/internal/chart"
 	"limitary/internal/decimal"
 )
 
-// Origin says whether a figure was estimated from the basis or set as a target.
-type Origin uint8
-
-const (
-	// Estimated from the readings of the basis.
-	Estimated Origin = iota
-	// Target is set by the laboratory or a programme.
-	Target
-	// Mixed is the origin of limits with one of centre and sigma estimated and the other a target.
-	Mixed
-)
-
-// String names the origin in messages and files.
-func (o Origin) String() string {
-	switch o {
-	case Estimated:
-		return "estimated"
-	case Target:
-		return "target"
-	case Mixed:
-		return "mixed"
-	}
-	return fmt.Sprintf("origin(%d)", uint8(o))
-}
-
-// Result is a set of limits and what it rests on. Figures are in the chart's unit.
-type Result struct {
-	Kind         chart.Kind
-	SubgroupSize int
-	// PublishedDecimals is the number of decimals of ProcessSigma, both centres and all lines.
-	PublishedDecimals int
-	// ProcessSigma is the standard deviation of single readings, rounded once. Everything else that depends on sigma
-	// follows from this rounded figure.
-	ProcessSigma float64
-	// Location and Dispersion hold, at the nominal subgroup size: the rounded centre; the sigma of the plotted
-	// statistic as it follows from ProcessSigma by At, not rounded a second time; lines that are the rounded
-	// centre ± z·sigma. So lines for another size follow from what is published in the same way.
-	Location, Dispersion chart.Trace
-
-	// N is the number of groups used, Readings that of their readings. MovingRanges counts the moving ranges of
-	// individuals, Dispersions the subgroups of at least two readings.
-	N, Readings, MovingRanges, Dispersions int
-	Excluded                               []Exclusion
-
-	// Origin of the limits as a whole and of each figure.
-	Origin, CentreOrigin, SigmaOrigin Origin
-	// CentreUnrounded and SigmaUnrounded (process) are the figures before rounding.
-	CentreUnrounded, SigmaUnrounded float64
-	// Estimates by every estimator of the kind that the basis allows; one is chosen unless sigma is a target.
-	Estimates []Estimate
-	Intervals Intervals
-
-	// Provisional marks limits with something estimated from fewer groups than AdvisedMinimum.
-	Provisional    bool
-	AdvisedMinimum int
-	Findings       []Finding
-
-	// dataMean is the mean of the readings used, where there are any.
-	dataMean float64
-}
-
 // Compute gives limits for the request, or an *Error naming the field that is wrong. It neither keeps nor changes what
 // it is given.
 func Compute(req Request) (Result, error) {
-	if req.Kind == chart.Individuals && req.SubgroupSize == 0 {
+	if req.Kind.SizeImplied() && req.SubgroupSize == 0 {
 		req.SubgroupSize = 1
 	}
 	if err := req.check(); err != nil {
 		return Result{}, err
 	}
-	b, err := req.gather()
-	if err != nil {
+	switch {
+	case req.Kind.Counts():
+		return computeCounts(&req)
+	case req.Kind.Duplicates():
+		return computeDuplicates(&req)
+	}
+	return computeReadings(&req)
+}
+
+// computeReadings gives limits of a chart with a location trace of readings. It may replace what req points to, and
+// changes nothing behind it.
+func computeReadings(req *Request) (Result, error) {
+	if err := req.checkGroups(); err != nil {
 		return Result{}, err
 	}
+	if err := req.toScale(); err != nil {
+		return Result{}, err
+	}
+	b := req.gather()
 	res := Result{
-		Kind: req.Kind, SubgroupSize: req.SubgroupSize,
+		Kind: req.Kind, SubgroupSize: req.SubgroupSize, Model: chart.Model{Transform: req.Transform, Levels: slices.Clone(req.Levels)},
 		N: b.groups, Readings: len(b.readings), MovingRanges: len(b.movingRanges), Dispersions: len(b.within),
 		Excluded: b.excluded, Estimates: b.estimates(), AdvisedMinimum: advisedMinimum(req.Kind),
 	}
-	if err := res.settleCentre(&req, b); err != nil {
+	if err := res.settle(req, b); err != nil {
 		return Result{}, err
 	}
-	if err := res.settleSigma(&req, b); err != nil {
-		return Result{}, err
-	}
-	res.Origin = res.CentreOrigin
-	if res.CentreOrigin != res.SigmaOrigin {
-		res.Origin = Mixed
-	}
-	if err := res.publish(&req, b); err != nil {
+	if err := res.publish(req, b); err != nil {
 		return Result{}, err
 	}
 	res.Intervals = res.intervals()
+	res.Components = res.components()
+	res.compareTargets(b)
+	res.FalseAlarm = res.falseAlarm()
 	res.Provisional = res.Origin != Target && res.N < res.AdvisedMinimum
 	res.Findings = res.findings()
+	res.runs = nil // what it says is in the fields above
 	return res, nil
 }
 
-func (res *Result) settleCentre(req *Request, b *basis) error {
-	if b.groups > 0 {
-		res.dataMean = decimal.Mean(b.readings, decimal.Unrounded)
-	}
-	switch {
-	case req.Centre != nil:
-		res.CentreOrigin, res.CentreUnrounded = Target, *req.Centre
-	case b.groups > 0:
-		res.CentreUnrounded = res.dataMean
-	case len(req.Groups) > 0:
-		return refuse("groups", fmt.Sprintf("%d groups", len(req.Groups)), "all are excluded, so there is nothing to take the centre from")
-	default:
+// settle decides every figure before rounding. The centre comes last, since that of runs is weighted by their sigmas.
+func (res *Result) settle(req *Request, b *basis) error {
+	if req.Centre == nil && b.groups == 0 {
+		if len(req.Groups) > 0 {
+			return refuse("groups", fmt.Sprintf("%d groups", len(req.Groups)), "all are excluded, so there is nothing to take the centre from")
+		}
 		return refuse("groups", "none", "there is nothing to take the centre from; give results, or both centre and sigma")
 	}
+	if err := res.settleSigma(req, b); err != nil {
+		return err
+	}
+	if err := res.settleBetween(req, b); err != nil {
+		return err
+	}
+	res.settleCentre(req, b)
+	res.Origin = res.CentreOrigin
+	if res.CentreOrigin != res.SigmaOrigin || res.Kind == chart.RunMeans && res.BetweenOrigin != res.SigmaOrigin {
+		res.Origin = Mixed
+	}
 	return nil
+}
+
+func (res *Result) settleCentre(req *Request, b *basis) {
+	switch {
+	case b.groups == 0:
+	case res.runs != nil:
+		res.dataMean = res.runs.centre
+	default:
+		res.dataMean = decimal.Mean(b.readings, decimal.Unrounded)
+	}
+	if req.Centre != nil {
+		res.CentreOrigin, res.CentreUnrounded = Target, *req.Centre
+		return
+	}
+	res.CentreUnrounded = res.dataMean
 }
 
 func (res *Result) settleSigma(req *Request, b *basis) error {
@@ -136,35 +108,39 @@ func (res *Result) settleSigma(req *Request, b *basis) error {
 		}
 		return refuse("groups", fmt.Sprintf("%d usable", max(b.scatters(), min(b.groups, 1))), "%s", problem)
 	}
-	name := req.Estimator
-	if name == DefaultEstimator {
-		name = EstimatorsOf(req.Kind)[0]
+	e, err := choose(res.Estimates, req.estimator())
+	if err != nil {
+		return err
 	}
-	for i := range res.Estimates {
-		if e := &res.Estimates[i]; e.Name == name {
-			if e.Sigma == 0 {
-				return refuse("groups", name, "the spread is zero, so the estimate of sigma is zero; the results are equal or reported too coarsely")
-			}
-			e.Chosen = true
-			res.SigmaUnrounded = e.Sigma
-			return nil
-		}
-	}
-	return refuse("groups", name, "no two results follow each other without an exclusion or a break between, so there is no moving range")
+	res.SigmaUnrounded = e.Sigma
+	return nil
 }
 
-// publish rounds sigma and centre and derives both traces from the rounded figures.
+// choose marks the estimate that limits are to rest on.
+func choose(estimates []Estimate, name Estimator) (*Estimate, error) {
+	for i := range estimates {
+		if e := &estimates[i]; e.Name == name {
+			if e.Sigma == 0 {
+				return nil, refuse("groups", name, "the spread is zero, so the estimate of sigma is zero; the results are equal or reported too coarsely")
+			}
+			e.Chosen = true
+			return e, nil
+		}
+	}
+	return nil, refuse("groups", name, "no two results follow each other without an exclusion or a break between, so there is no moving range")
+}
+
+// publish rounds the sigmas and the centre and derives both traces from the rounded figures.
 func (res *Result) publish(req *Request, b *basis) error {
 	places := res.defaultDecimals(req, b)
 	if req.PublishedDecimals != nil {
 		places = *req.PublishedDecimals
 	}
 	res.PublishedDecimals = places
-	res.ProcessSigma = decimal.Round(res.SigmaUnrounded, places)
-	if res.ProcessSigma == 0 {
-		return refuse("publishedDecimals", places, "sigma is %.4g and rounds to zero; publish more decimals (at most %d) or use a smaller unit", res.SigmaUnrounded, decimal.PlacesMax)
+	if err := res.roundSigmas(); err != nil {
+		return err
 	}
-	scale, _ := At(req.Kind, res.ProcessSigma, req.SubgroupSize)
+	scale, _ := AtModel(req.Kind, res.ProcessSigma, &res.Model, req.SubgroupSize)
 	res.Location = traceAt(res.CentreUnrounded, scale.LocationSigma, places)
 	res.Dispersion = traceAt(scale.DispersionCentre, scale.DispersionSigma, places)
 	for _, t := range []*chart.Trace{&res.Location, &res.Dispersion} {
@@ -173,10 +149,32 @@ func (res *Result) publish(req *Request, b *basis) error {
 		}
 	}
 	dropImpossible(&res.Dispersion)
+	dropBelowFloor(&res.Location, req.Transform)
 	if err := req.Fixed[chart.Location].place(chart.Location, &res.Location); err != nil {
 		return err
 	}
 	return req.Fixed[chart.Dispersion].place(chart.Dispersion, &res.Dispersion)
+}
+
+func (res *Result) roundSigmas() (err error) {
+	places := res.PublishedDecimals
+	if res.ProcessSigma, err = roundSigma("sigma", res.SigmaUnrounded, places); err != nil {
+		return err
+	}
+	res.Model.BetweenSigma = decimal.Round(res.BetweenUnrounded, places)
+	if res.Model.BetweenSigma == 0 && res.BetweenUnrounded > negligibleBetween*res.locationSigma() {
+		return refuse("publishedDecimals", places, "the sigma between runs is %.4g and rounds to zero; publish more decimals (at most %d) or use a smaller unit", res.BetweenUnrounded, decimal.PlacesMax)
+	}
+	return nil
+}
+
+// roundSigma rounds a sigma once and refuses one that would vanish.
+func roundSigma(name string, sigma float64, places int) (float64, error) {
+	rounded := decimal.Round(sigma, places)
+	if rounded == 0 {
+		return 0, refuse("publishedDecimals", places, "%s is %.4g and rounds to zero; publish more decimals (at most %d) or use a smaller unit", name, sigma, decimal.PlacesMax)
+	}
+	return rounded, nil
 }
 
 // traceAt gives the rounded centre and its lines at whole multiples of sigma.
@@ -212,12 +210,20 @@ func dropImpossible(t *chart.Trace) {
 const significantDigits = 4
 
 func (res *Result) defaultDecimals(req *Request, b *basis) int {
-	places := max(b.decimals+2, digitsPlaces(res.SigmaUnrounded))
-	for _, given := range []*float64{req.Centre, req.Sigma} {
+	places := digitsPlaces(res.SigmaUnrounded)
+	if !req.scaled() { // the decimals of what was measured mean nothing on another scale
+		places = max(places, b.decimals+2)
+	}
+	for _, given := range []*float64{req.Centre, req.Sigma, req.BetweenSigma} {
 		if given != nil {
 			places = max(places, decimal.Places(*given))
 		}
 	}
+	return req.placesOfFixed(places)
+}
+
+// placesOfFixed gives enough decimals for the fixed lines, and at least places, but never more than can be published.
+func (req *Request) placesOfFixed(places int) int {
 	for role := range chart.Roles {
 		for _, line := range req.Fixed[role].all() {
 			if line != nil && line.Basis != chart.Absent {
@@ -250,5 +256,16 @@ func advisedMinimum(kind chart.Kind) int {
 	return 20
 }
 
-// standardError of the location centre where sigma is known, per unit of sigma.
-func (res *Result) standardError() float64 { return 1 / math.Sqrt(float64(res.Readings)) }
+// locationSigma is the standard deviation of a point of the location trace at the nominal size, before rounding.
+func (res *Result) locationSigma() float64 {
+	scale, _ := AtModel(res.Kind, res.SigmaUnrounded, &chart.Model{BetweenSigma: res.BetweenUnrounded}, res.SubgroupSize)
+	return scale.LocationSigma
+}
+
+// centreError is the standard error of the mean of the results, with the sigmas as settled.
+func (res *Result) centreError() float64 {
+	if res.runs != nil {
+		return res.runs.centreError
+	}
+	return res.SigmaUnrounded / math.Sqrt(float64(res.Readings))
+}

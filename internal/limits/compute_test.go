@@ -315,7 +315,10 @@ func TestFindings(t *testing.T) {
 }
 
 func TestEstimatorNames(t *testing.T) {
-	for _, kind := range []chart.Kind{chart.Individuals, chart.XbarR, chart.XbarS} {
+	for _, kind := range kindsOfReadings {
+		if limits.EstimatorsOf(kind) == nil {
+			t.Errorf("%s: got no estimators", kind)
+		}
 		for _, e := range limits.EstimatorsOf(kind) {
 			if got, err := limits.ParseEstimator(e.String()); err != nil || got != e {
 				t.Errorf("%s: got %v, %v back", e, got, err)

@@ -36,7 +36,7 @@ func TestErrorsNameFieldValueAndLimit(t *testing.T) {
 		field string
 		says  string
 	}{
-		{"no kind", limits.Request{}, "kind", "individuals, xbar_r and xbar_s"},
+		{"no kind", limits.Request{}, "kind", "individuals, xbar_r, xbar_s, run_means"},
 		{"unknown kind", limits.Request{Kind: 99}, "kind", "kind(99)"},
 		{"size of individuals", with(func(r *limits.Request) { r.SubgroupSize = 2 }), "subgroupSize", "size 1"},
 		{"size of means", limits.Request{Kind: chart.XbarR, SubgroupSize: 1}, "subgroupSize", "2 to 100"},

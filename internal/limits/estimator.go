@@ -12,7 +12,7 @@ import (
 type Estimator uint8
 
 const (
-	// DefaultEstimator asks for the usual one of the kind: mean moving range, R-bar or s-bar.
+	// DefaultEstimator asks for the usual one of the kind, the first of EstimatorsOf.
 	DefaultEstimator Estimator = iota
 	// MeanMovingRange is the mean moving range over d2(2), for individuals. Slow drift and shifts of level hardly enter.
 	MeanMovingRange
@@ -60,7 +60,9 @@ func ParseEstimator(name string) (Estimator, error) {
 	return DefaultEstimator, refuse("estimator", fmt.Sprintf("%q", name), "want one of %v", estimatorNames[1:])
 }
 
-// EstimatorsOf lists the estimators that fit a kind, the default first.
+// EstimatorsOf lists the estimators that fit a kind, the default first; none for counts. For run means the process sigma
+// is the one within runs: Overall is shown beside the others, since it holds what varies between runs as well, and
+// cannot be chosen.
 func EstimatorsOf(kind chart.Kind) []Estimator {
 	switch kind {
 	case chart.Individuals:
@@ -69,6 +71,10 @@ func EstimatorsOf(kind chart.Kind) []Estimator {
 		return []Estimator{RBar, SBar, Pooled, Overall}
 	case chart.XbarS:
 		return []Estimator{SBar, RBar, Pooled, Overall}
+	case chart.RunMeans:
+		return []Estimator{Pooled, SBar, RBar, Overall}
+	case chart.DuplicateRange, chart.RelativeRange:
+		return []Estimator{RBar, Pooled}
 	}
 	return nil
 }

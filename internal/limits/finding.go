@@ -23,7 +23,10 @@ const (
 	CodeEstimatorsDisagree   = "ESTIMATORS_DISAGREE"
 	CodeTargetCentreDiffers  = "TARGET_CENTRE_DIFFERS"
 	CodeTargetSigmaDiffers   = "TARGET_SIGMA_DIFFERS"
+	CodeTargetBetweenDiffers = "TARGET_BETWEEN_DIFFERS"
 	CodeCriterionInsideLimit = "CRITERION_INSIDE_LIMIT"
+	CodeBetweenTruncated     = "BETWEEN_TRUNCATED"
+	CodeSubgroupLimitsNarrow = "SUBGROUP_LIMITS_TOO_NARROW"
 )
 
 const (
@@ -45,38 +48,70 @@ func (res *Result) findings() []Finding {
 	add(res.provisional())
 	add(res.estimatorsDisagree())
 	add(res.targetCentreDiffers())
-	add(res.targetSigmaDiffers())
+	add(targetSigmaDiffers(res.Estimates, res.SigmaOrigin, res.SigmaUnrounded, ""))
+	for i := range res.Parts[min(1, len(res.Parts)):] { // the first is that of the result
+		p := &res.Parts[i+1]
+		add(disagreementOf(p.Estimates, true))
+		add(targetSigmaDiffers(p.Estimates, p.Origin, p.Sigma, " of the "+p.String()))
+	}
+	add(res.targetBetweenDiffers())
+	add(res.betweenTruncated())
+	add(res.subgroupLimitsNarrow())
 	for role, trace := range [...]*chart.Trace{chart.Location: &res.Location, chart.Dispersion: &res.Dispersion} {
-		add(criterionInside(chart.Role(role), "lower", trace, trace.LowerAction, -1))
-		add(criterionInside(chart.Role(role), "upper", trace, trace.UpperAction, 1))
+		add(res.criterionInside(chart.Role(role), "lower", trace, trace.LowerAction, -1))
+		add(res.criterionInside(chart.Role(role), "upper", trace, trace.UpperAction, 1))
 	}
 	return found
 }
 
 func (res *Result) provisional() (Finding, bool) {
-	noun := "results"
-	if res.Kind != chart.Individuals {
-		noun = "subgroups"
+	noun := "subgroups"
+	switch {
+	case res.Kind == chart.Individuals:
+		noun = "results"
+	case res.Kind == chart.RunMeans:
+		noun = "runs"
+	case res.Kind.Duplicates():
+		noun = "sets of duplicates"
 	}
+	n, part := res.fewest()
 	return Finding{
-		Code: CodeProvisional, Figure: float64(res.N), Threshold: float64(res.AdvisedMinimum),
-		Text:      fmt.Sprintf("The limits rest on %d %s; at least %d are advised.", res.N, noun, res.AdvisedMinimum),
+		Code: CodeProvisional, Figure: float64(n), Threshold: float64(res.AdvisedMinimum),
+		Text:      fmt.Sprintf("The limits rest on %d %s%s; at least %d are advised.", n, noun, part, res.AdvisedMinimum),
 		Advice:    "Use them as provisional and compute them again when the advised number is reached.",
 		CouldMiss: "Enough results taken in a few runs or days still say little about how runs and days differ.",
 	}, res.Provisional
+}
+
+// fewest gives the groups behind the least supported figure, and which it is where there are several.
+func (res *Result) fewest() (n int, part string) {
+	n = res.N
+	for i := range res.Parts {
+		if p := &res.Parts[i]; p.Origin == Estimated && p.Groups < n {
+			n, part = p.Groups, " ("+p.String()+")"
+		}
+	}
+	return n, part
 }
 
 // estimatorsDisagree compares estimates of one sigma with the most precise one. If readings are independent and normal
 // with one mean, the overall estimate is a function of a complete sufficient statistic, so its covariance with any other
 // unbiased estimate equals its own variance (the argument of Hausman's test, 1978, from memory) and the difference of
 // the two has variance V - V(overall) exactly. Likewise with the pooled one if only the means of subgroups differ.
+//
+// Between runs and between the samples of duplicates means are expected to differ, so there only the estimates within are
+// compared; the components and SUBGROUP_LIMITS_TOO_NARROW tell of the rest.
 func (res *Result) estimatorsDisagree() (Finding, bool) {
+	return disagreementOf(res.Estimates, res.Kind != chart.RunMeans)
+}
+
+func disagreementOf(estimates []Estimate, oneMean bool) (Finding, bool) {
 	var worst Finding
-	for _, precise := range res.Estimates {
-		if precise.Name != Overall && precise.Name != Pooled || precise.Sigma == 0 {
+	for _, precise := range estimates {
+		if precise.Name != Pooled && !(precise.Name == Overall && oneMean) || precise.Sigma == 0 {
 			continue
 		}
-		for _, other := range res.Estimates {
+		for _, other := range estimates {
 			if other.Name == Overall || other.variance <= precise.variance {
 				continue
 			}
@@ -105,45 +140,4 @@ func disagreement(other, precise Estimate, apart float64) Finding {
 		f.Advice = "Neighbouring readings differ more than the whole does: look for alternation between two instruments or materials, or for subgroups that mix unlike things."
 	}
 	return f
-}
-
-func (res *Result) targetCentreDiffers() (Finding, bool) {
-	if res.CentreOrigin != Target || res.Readings == 0 {
-		return Finding{}, false
-	}
-	apart := math.Abs(res.dataMean-res.CentreUnrounded) / (res.SigmaUnrounded * res.standardError())
-	return Finding{
-		Code: CodeTargetCentreDiffers, Figure: apart, Threshold: standardErrorsMax,
-		Text:      fmt.Sprintf("The mean of the results, %.6g, lies %.1f standard errors from the target centre, %.6g.", res.dataMean, apart, res.CentreUnrounded),
-		Advice:    "Rules that count points on one side of the centre will signal the bias again and again; settle it, or take the centre from the results.",
-		CouldMiss: "A bias smaller than the results can show, and one that comes and goes.",
-	}, apart > standardErrorsMax
-}
-
-func (res *Result) targetSigmaDiffers() (Finding, bool) {
-	if res.SigmaOrigin != Target || len(res.Estimates) == 0 {
-		return Finding{}, false
-	}
-	e := res.Estimates[0]
-	apart := math.Abs(e.Sigma/res.SigmaUnrounded-1) / math.Sqrt(e.variance)
-	return Finding{
-		Code: CodeTargetSigmaDiffers, Figure: apart, Threshold: standardErrorsMax,
-		Text:      fmt.Sprintf("%s gives sigma %.4g, %.1f standard errors from the target sigma, %.4g.", e.Name, e.Sigma, apart, res.SigmaUnrounded),
-		Advice:    "Too large a target hides faults, too small a one makes false alarms; check where it comes from and whether it still holds.",
-		CouldMiss: "With few results only gross differences show.",
-	}, apart > standardErrorsMax
-}
-
-// criterionInside tells of a fixed action line nearer to the centre than the sigma multiple would be.
-func criterionInside(role chart.Role, side string, t *chart.Trace, line chart.Line, sign float64) (Finding, bool) {
-	if line.Basis != chart.MethodCriterion && line.Basis != chart.Target {
-		return Finding{}, false
-	}
-	distance := sign * (line.Value - *t.Centre) / *t.Sigma
-	return Finding{
-		Code: CodeCriterionInsideLimit, Figure: distance, Threshold: chart.ActionMultiple,
-		Text:      fmt.Sprintf("The fixed %s action line of the %s trace, %.6g, lies %.2f sigmas from the centre, nearer than %g.", side, role, line.Value, distance, chart.ActionMultiple),
-		Advice:    "The process as it is will often fail the criterion without any change in it; improve the process or expect it.",
-		CouldMiss: "A criterion further out can still be failed by a bias or a growing sigma.",
-	}, distance < chart.ActionMultiple
 }

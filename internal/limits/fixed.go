@@ -32,11 +32,20 @@ func (r *Request) checkFixed() error {
 				continue
 			}
 			field := fixedField(role, i)
+			if !r.Kind.Has(role) {
+				return refuse(field, line.Value, "a chart of kind %s has no such trace", r.Kind)
+			}
+			if r.Kind.Duplicates() && i%2 == 0 {
+				return refuse(field, line.Value, "duplicates are watched for differing too much only; a lower line is always absent")
+			}
 			if line.Basis != chart.MethodCriterion && line.Basis != chart.Target {
 				return refuse(field, line.Basis, "a fixed line has basis method_criterion, target or absent")
 			}
 			if err := checkMagnitude(field, line.Value); err != nil {
 				return err
+			}
+			if floor := r.Transform.Floor(); role == chart.Location && line.Value < floor {
+				return refuse(field, line.Value, "lies below %g, the lower end of the transformed scale; give lines in its units", floor)
 			}
 			if role == chart.Dispersion && line.Value <= 0 {
 				return refuse(field, line.Value, "a range or standard deviation is never below zero; a line there must be larger, or absent")

@@ -18,9 +18,10 @@ type Interval struct{ Lower, Upper float64 }
 // one mean and one sigma. Where subgroup means vary more than the scatter within explains, the intervals of the location
 // trace are too narrow. A figure that is given, fixed or absent has none.
 type Intervals struct {
-	// Sigma is the process sigma: with ν effective degrees of freedom, σ̂·c4(ν+1)·√(ν/χ²) at both quantiles of χ².
+	// Sigma is the process sigma (for run means that within runs): with ν effective degrees of freedom, σ̂·c4(ν+1)·√(ν/χ²) at both quantiles of χ².
 	Sigma *Interval
-	// Centre is the location centre: Student's t at ν degrees of freedom, or the normal quantile where sigma is given.
+	// Centre is the location centre: Student's t at ν degrees of freedom, or the normal quantile where sigma is given. For
+	// run means the variance is 1/Σ1/(s_b² + s_w²/n_i), with Satterthwaite's degrees of freedom.
 	Centre *Interval
 	// LowerAction and UpperAction are the action lines by trace. Those of the location trace combine the two intervals
 	// above by the square-root rule of Donner and Zou (2012, Statistical Methods in Medical Research 21, 347-359; from
@@ -30,23 +31,42 @@ type Intervals struct {
 
 func (res *Result) intervals() Intervals {
 	var in Intervals
-	spread := distuv.UnitNormal.Quantile((1 + Confidence) / 2)
-	sigma := res.SigmaUnrounded
+	spread := studentQuantile((1+Confidence)/2, math.Inf(1))
 	if e := res.chosen(); e != nil {
 		in.Sigma = chiInterval(e.Sigma, e.DegreesOfFreedom)
-		spread = distuv.StudentsT{Mu: 0, Sigma: 1, Nu: e.DegreesOfFreedom}.Quantile((1+Confidence)/2) * chiMean(e.DegreesOfFreedom)
+		spread = e.spread()
 	}
 	if res.CentreOrigin == Estimated {
-		half := spread * sigma * res.standardError()
+		half := spread * res.centreError()
+		if res.runs != nil {
+			half = res.runs.centreHalf()
+		}
 		in.Centre = &Interval{res.CentreUnrounded - half, res.CentreUnrounded + half}
 	}
+	sigma := res.locationSigmaInterval(in.Sigma)
+	in.LowerAction[chart.Location] = in.line(res, res.Location.LowerAction, -chart.ActionMultiple, sigma)
+	in.UpperAction[chart.Location] = in.line(res, res.Location.UpperAction, chart.ActionMultiple, sigma)
 	scale, _ := At(res.Kind, 1, res.SubgroupSize)
-	in.LowerAction[chart.Location] = in.line(res, res.Location.LowerAction, -chart.ActionMultiple*scale.LocationSigma)
-	in.UpperAction[chart.Location] = in.line(res, res.Location.UpperAction, chart.ActionMultiple*scale.LocationSigma)
 	reach := chart.ActionMultiple * scale.DispersionSigma
 	in.LowerAction[chart.Dispersion] = in.multiple(res.Dispersion.LowerAction, scale.DispersionCentre-reach)
 	in.UpperAction[chart.Dispersion] = in.multiple(res.Dispersion.UpperAction, scale.DispersionCentre+reach)
 	return in
+}
+
+// locationSigmaInterval is that of the sigma of the location trace; nil where nothing of it is estimated.
+func (res *Result) locationSigmaInterval(process *Interval) *Interval {
+	known := process == nil
+	if known {
+		process = &Interval{res.SigmaUnrounded, res.SigmaUnrounded}
+	}
+	switch {
+	case res.runs != nil && !(known && res.BetweenOrigin == Target):
+		return res.runs.locationInterval(process)
+	case known:
+		return nil
+	}
+	root := math.Sqrt(float64(res.SubgroupSize))
+	return &Interval{process.Lower / root, process.Upper / root}
 }
 
 func (res *Result) chosen() *Estimate {
@@ -60,28 +80,34 @@ func (res *Result) chosen() *Estimate {
 
 // chiInterval turns an unbiased estimate back into the root of a mean square before it is set against χ².
 func chiInterval(sigma, freedom float64) *Interval {
-	root := sigma * chiMean(freedom) * math.Sqrt(freedom)
+	return chiOfMeanSquare(sigma*chiMean(freedom), freedom)
+}
+
+// chiOfMeanSquare is the interval of the root of a mean square.
+func chiOfMeanSquare(root, freedom float64) *Interval {
+	root *= math.Sqrt(freedom)
 	chi := distuv.ChiSquared{K: freedom}
 	tail := (1 - Confidence) / 2
 	return &Interval{root / math.Sqrt(chi.Quantile(1-tail)), root / math.Sqrt(chi.Quantile(tail))}
 }
 
-// line gives the interval of centre + z·sigma, z being in process sigmas.
-func (in *Intervals) line(res *Result, line chart.Line, z float64) *Interval {
-	if line.Basis != chart.SigmaMultiple || in.Centre == nil && in.Sigma == nil {
+// line gives the interval of centre + z·sigma of the location trace.
+func (in *Intervals) line(res *Result, line chart.Line, z float64, sigma *Interval) *Interval {
+	if line.Basis != chart.SigmaMultiple || in.Centre == nil && sigma == nil {
 		return nil
 	}
 	var centreDown, centreUp, sigmaDown, sigmaUp float64
 	if in.Centre != nil {
 		centreDown, centreUp = res.CentreUnrounded-in.Centre.Lower, in.Centre.Upper-res.CentreUnrounded
 	}
-	if in.Sigma != nil {
-		sigmaDown, sigmaUp = math.Abs(z)*(res.SigmaUnrounded-in.Sigma.Lower), math.Abs(z)*(in.Sigma.Upper-res.SigmaUnrounded)
+	own := res.locationSigma()
+	if sigma != nil {
+		sigmaDown, sigmaUp = math.Abs(z)*(own-sigma.Lower), math.Abs(z)*(sigma.Upper-own)
 	}
 	if z < 0 { // a larger sigma lowers the line
 		sigmaDown, sigmaUp = sigmaUp, sigmaDown
 	}
-	at := res.CentreUnrounded + z*res.SigmaUnrounded
+	at := res.CentreUnrounded + z*own
 	return &Interval{at - math.Hypot(centreDown, sigmaDown), at + math.Hypot(centreUp, sigmaUp)}
 }
 

@@ -176,7 +176,10 @@ func checkOutput(t *testing.T, req limits.Request) {
 	if res.ProcessSigma <= 0 {
 		t.Errorf("process sigma %g", res.ProcessSigma)
 	}
-	for _, trace := range []chart.Trace{res.Location, res.Dispersion} {
+	for role, trace := range []chart.Trace{res.Location, res.Dispersion} {
+		if !req.Kind.Has(chart.Role(role)) {
+			continue
+		}
 		last := math.Inf(-1)
 		for _, line := range []chart.Line{trace.LowerAction, trace.LowerWarning, {Value: *trace.Centre}, trace.UpperWarning, trace.UpperAction} {
 			if line.Basis != chart.SigmaMultiple {
@@ -216,27 +219,61 @@ func assertFinite(t *testing.T, path string, v reflect.Value) {
 	}
 }
 
+// kindsOfReadings are all that are not counts.
+var kindsOfReadings = []chart.Kind{chart.Individuals, chart.XbarR, chart.XbarS, chart.RunMeans, chart.DuplicateRange, chart.RelativeRange}
+
+// drawnOptions makes options of duplicates, most of which go together.
+func drawnOptions(r *rand.Rand, any func() *float64) (o limits.DuplicateOptions) {
+	switch r.IntN(6) {
+	case 0:
+		o.Bands = []float64{0, *any()}
+	case 1:
+		o.Bands, o.Sigmas = []float64{0, *any()}, []float64{1, *any()}
+	case 2:
+		o.Function = true
+	case 3:
+		o.S0, o.B = any(), any()
+	case 4:
+		o.AbsoluteBelow, o.AbsoluteSigma = *any(), any()
+	}
+	return o
+}
+
 // Extreme but finite readings, alone and mixed with ordinary ones.
 func TestFiniteInputGivesFiniteOutput(t *testing.T) {
 	extremes := []float64{0, math.Copysign(0, -1), 1, -1, 0.1, 1e-15, 1e-300, math.SmallestNonzeroFloat64, 1e15, 1e99, -1e100, 1e100, 1e300, math.MaxFloat64, 1. / 3, 123456789.123456789}
 	r := rand.New(rand.NewPCG(11, 12))
-	for i := range 20_000 {
-		kind := chart.Kind(1 + r.IntN(3))
+	for i := range 12_000 {
+		kind := kindsOfReadings[r.IntN(len(kindsOfReadings))]
 		req := limits.Request{Kind: kind, SubgroupSize: 1}
 		if kind != chart.Individuals {
 			req.SubgroupSize = 2 + r.IntN(8)
 		}
 		pool := extremes[:2+r.IntN(len(extremes)-1)]
-		for range r.IntN(8) {
+		for range r.IntN(8) * (1 + r.IntN(3)) {
 			g := limits.Group{Decimals: r.IntN(20) - 1, BreakBefore: r.IntN(4) == 0}
 			for range 1 + r.IntN(req.SubgroupSize) {
 				g.Readings = append(g.Readings, pool[r.IntN(len(pool))]*float64(1+r.IntN(3)))
 			}
 			req.Groups = append(req.Groups, g)
 		}
+		any := func() *float64 { return ptr(extremes[r.IntN(len(extremes))]) }
 		for _, given := range []**float64{&req.Centre, &req.Sigma} {
-			if r.IntN(4) == 0 {
-				*given = ptr(extremes[r.IntN(len(extremes))])
+			if r.IntN(4) == 0 && !(kind.Duplicates() && given == &req.Centre) {
+				*given = any()
+			}
+		}
+		switch {
+		case kind == chart.RunMeans && r.IntN(4) == 0:
+			req.BetweenSigma = any()
+		case kind.Duplicates():
+			req.Duplicates = drawnOptions(r, any)
+		case r.IntN(4) == 0:
+			req.Transform = chart.Transform{Kind: chart.TransformKind(1 + r.IntN(2)), Offset: *any()}
+		case r.IntN(4) == 0:
+			req.Levels = []chart.Level{{Reference: *any(), Sigma: *any(), Material: "m"}}
+			for j := range req.Groups {
+				req.Groups[j].Material = "m"
 			}
 		}
 		if r.IntN(3) == 0 {
@@ -262,6 +299,9 @@ func FuzzCompute(f *testing.F) {
 	seed([4]byte{1, 1, 255, 0}, 49.6, 47.6, 49.9, 51.3, 47.8)
 	seed([4]byte{2, 3, 4, 1}, 5.1, 5.3, 5.0, 5.2, 5.4, 5.3)
 	seed([4]byte{3, 2, 15, 2}, 1e100, -1e100, 1e-300, 0.1)
+	seed([4]byte{4, 3, 255, 0}, 5.1, 5.3, 5.0, 5.2, 5.4, 5.3)
+	seed([4]byte{5, 2, 255, 8}, 5.1, 5.3, 15.0, 15.2, 25.4, 25.3)
+	seed([4]byte{6, 2, 4, 8}, 5.1, 5.3, 15.0, 15.2, 25.4, 25.3)
 	seed([4]byte{3, 2, 0, 3}, math.NaN(), math.Inf(1), math.MaxFloat64)
 	f.Fuzz(func(t *testing.T, raw []byte) {
 		if len(raw) < 4 || len(raw) > 4+9*200 {
@@ -272,7 +312,7 @@ func FuzzCompute(f *testing.F) {
 }
 
 func decode(raw []byte) limits.Request {
-	req := limits.Request{Kind: chart.Kind(raw[0] % 5), SubgroupSize: int(int8(raw[1]))}
+	req := limits.Request{Kind: append([]chart.Kind{chart.Given}, kindsOfReadings...)[raw[0]%7], SubgroupSize: int(int8(raw[1]))}
 	if raw[2] < 20 {
 		req.PublishedDecimals = ptr(int(raw[2]) - 1)
 	}
@@ -299,6 +339,10 @@ func decode(raw []byte) limits.Request {
 	}
 	if len(values) > 1 && raw[3]&2 != 0 {
 		req.Sigma = &values[1]
+	}
+	if len(values) > 3 && raw[3]&8 != 0 {
+		req.Transform = chart.Transform{Kind: chart.TransformKind(raw[1] % 4), Offset: values[3]}
+		req.Duplicates = limits.DuplicateOptions{Function: raw[1]&1 != 0, AbsoluteBelow: values[0], AbsoluteSigma: &values[1]}
 	}
 	if len(values) > 2 && raw[3]&4 != 0 {
 		req.Fixed[raw[1]&1].UpperAction = &chart.Line{Value: values[2], Basis: chart.Basis(raw[2] % 6)}

@@ -16,8 +16,10 @@ type Scale struct {
 }
 
 // At gives the scale of a group of n readings on a chart of the kind, and whether such a chart can have such a group:
-// n = 1 for individuals, else 1 to chart.SubgroupSizeMax. An individual value has a moving range of two; a subgroup of
-// one reading has a location and no point on the dispersion trace, so its DispersionSigma is zero.
+// n = 1 for individuals, 2 to chart.SubgroupSizeMax for duplicates, else 1 to chart.SubgroupSizeMax. For run means the
+// process sigma is the one within runs, and what varies between runs is left out; see AtModel. An individual value has a
+// moving range of two; a subgroup of one reading has a location and no point on the dispersion trace, so its
+// DispersionSigma is zero.
 func At(kind chart.Kind, processSigma float64, n int) (Scale, bool) {
 	switch kind {
 	case chart.Individuals:
@@ -26,7 +28,13 @@ func At(kind chart.Kind, processSigma float64, n int) (Scale, bool) {
 		}
 		f := factorsOf(2)
 		return Scale{processSigma, f.RangeMean * processSigma, f.RangeSigma * processSigma}, true
-	case chart.XbarR, chart.XbarS:
+	case chart.DuplicateRange, chart.RelativeRange:
+		if n < 2 || n > chart.SubgroupSizeMax {
+			return Scale{}, false
+		}
+		f := factorsOf(n)
+		return Scale{0, f.RangeMean * processSigma, f.RangeSigma * processSigma}, true
+	case chart.XbarR, chart.XbarS, chart.RunMeans:
 		if n < 1 || n > chart.SubgroupSizeMax {
 			return Scale{}, false
 		}

@@ -193,6 +193,6 @@ func TestSumsStandTheLargestValues(t *testing.T) {
 			}
 		}
 		unequal := mustCompile(t, chart.Trace{Centre: ptr(-huge), Sigma: ptr(1)}, decimal.Unrounded, spec)
-		unequal.Judge(unequal.Start(false), []float64{huge, -huge, huge}, []rules.Scale{{-huge, 1}, {huge, 2}, {-huge, 5e-324}}, func(rules.Hit) {})
+		unequal.Judge(unequal.Start(false), []float64{huge, -huge, huge}, []rules.Scale{{Centre: -huge, Sigma: 1}, {Centre: huge, Sigma: 2}, {Centre: -huge, Sigma: 5e-324}}, func(rules.Hit) {})
 	}
 }

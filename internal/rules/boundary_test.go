@@ -278,7 +278,7 @@ func TestLinesFollowTheirBasis(t *testing.T) {
 		trace.UpperAction = chart.Line{Basis: chart.MethodCriterion, Value: 11}
 		plan := mustCompile(t, trace, 2, line(rules.ActionLine), line(rules.WarningLine))
 		var hits []hit
-		plan.Judge(plan.Start(false), []float64{11.5, 12.5, 14.5}, []rules.Scale{{10, 2}, {10, 2}, {10, 2}}, collectInto(&hits, 0))
+		plan.Judge(plan.Start(false), []float64{11.5, 12.5, 14.5}, []rules.Scale{{Centre: 10, Sigma: 2}, {Centre: 10, Sigma: 2}, {Centre: 10, Sigma: 2}}, collectInto(&hits, 0))
 		wantHits(t, hits, only(0, upper), only(1, upper), only(2, upper), only(2, upper))
 	})
 }

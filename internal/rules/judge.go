@@ -51,7 +51,7 @@ func (p *Plan) features(st *State, xs []float64, at []Scale) {
 	if p.differences {
 		firstUp, firstDown := p.compare(st, xs[:1], at)
 		p.setDifferences(st, up|firstUp, down|firstDown)
-		st.last, st.lastAt, st.hasLast = xs[len(xs)-1], p.nominal, true
+		st.last, st.lastAt, st.hasLast = xs[len(xs)-1], Scale{Centre: p.nominal.Centre, Sigma: p.nominal.Sigma}, true
 	}
 }
 
@@ -111,6 +111,7 @@ func (p *Plan) compare(st *State, xs []float64, at []Scale) (up, down uint64) {
 		if at != nil {
 			scale = at[j]
 		}
+		scale.Inspected = 0 // neighbours are compared by centre and sigma
 		if st.hasLast {
 			before, here := st.last, x
 			if scale != st.lastAt {

@@ -9,7 +9,15 @@ import (
 )
 
 // Scale is the centre and sigma of the plotted statistic at one point.
-type Scale struct{ Centre, Sigma float64 }
+type Scale struct {
+	Centre, Sigma float64
+	// Inspected is how much was looked at, where the statistic is a count or comes from one; else 0.
+	Inspected float64
+}
+
+// LineFunc gives the unrounded line z sigmas above the centre, z not 0, where lines do not simply follow from centre and
+// sigma; infinite where nothing can lie beyond it.
+type LineFunc func(at Scale, z float64) float64
 
 // Plan is a list of rules compiled for one trace. It is immutable and safe for concurrent use.
 type Plan struct {
@@ -19,6 +27,8 @@ type Plan struct {
 	trace   chart.Trace
 	places  int
 	nominal Scale
+	// lineAt is nil where lines follow from centre and sigma.
+	lineAt LineFunc
 	// lines are the nominal thresholds, one an entry of bits.
 	lines []threshold
 	// gates are the keys of the nominal lines in order, reads the gates of each entry of bits.
@@ -68,7 +78,13 @@ type step struct {
 // Compile checks the rules against each other and the trace, and prepares them. Places is the number of published
 // decimals that lines are rounded to, or decimal.Unrounded. Errors are *SpecError, the field prefixed "rules[i].".
 func Compile(trace chart.Trace, places int, specs []Spec) (*Plan, error) {
-	p := &Plan{specs: append([]Spec(nil), specs...), trace: trace, places: places, window: 1}
+	return CompileLines(trace, places, specs, 0, nil)
+}
+
+// CompileLines is Compile for a trace whose lines are given by a function. Inspected is that of a nominal point.
+func CompileLines(trace chart.Trace, places int, specs []Spec, inspected float64, lineAt LineFunc) (*Plan, error) {
+	p := &Plan{specs: append([]Spec(nil), specs...), trace: trace, places: places, lineAt: lineAt, window: 1}
+	p.nominal.Inspected = inspected
 	if err := p.check(); err != nil {
 		return nil, err
 	}
@@ -202,10 +218,21 @@ func (p *Plan) linesAt(st *State, at Scale) []threshold {
 }
 
 func (p *Plan) line(at Scale, z float64) float64 {
-	if z == 0 {
+	switch {
+	case z == 0:
 		return decimal.Round(at.Centre, p.places)
+	case p.lineAt != nil:
+		return p.rounded(p.lineAt(at, z))
 	}
 	return decimal.Line(at.Centre, z, at.Sigma, p.places)
+}
+
+// rounded leaves a line that does not exist at infinity.
+func (p *Plan) rounded(line float64) float64 {
+	if math.IsInf(line, 0) {
+		return line
+	}
+	return decimal.Round(line, p.places)
 }
 
 func (p *Plan) upper(l chart.Line, at Scale, multiple float64) float64 {
@@ -227,10 +254,13 @@ func (p *Plan) Where(l chart.Line, at Scale, multiple float64) (value float64, o
 	switch {
 	case l.Basis == chart.Absent:
 		return 0, false
-	case l.Fixed():
+	case l.Fixed() && (l.Basis != chart.TailProbability || p.lineAt == nil):
 		return decimal.Round(l.Value, p.places), true
 	case p.trace.Centre == nil || p.trace.Sigma == nil:
 		return 0, false
+	case p.lineAt != nil:
+		value = p.rounded(p.lineAt(at, multiple))
+		return value, !math.IsInf(value, 0)
 	}
 	return decimal.Line(at.Centre, multiple, at.Sigma, p.places), true
 }

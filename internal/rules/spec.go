@@ -16,6 +16,7 @@ import (
 	"fmt"
 	"math"
 	"regexp"
+	"slices"
 )
 
 // JudgeNumber numbers the meaning of ties, rounding, gaps and windows implemented here. Verdicts carry it. Changing
@@ -273,4 +274,17 @@ func (s Spec) SuitsDispersion() bool {
 // ranges such a pattern is weak evidence, because neighbouring moving ranges share a value.
 func (s Spec) IsRunPattern() bool {
 	return s.Kind == SameSide || s.Kind == Trend || s.Kind == Alternating
+}
+
+// OneSide gives the rules with those that have sides watching one side only. Rules without a side stay as they are.
+func OneSide(specs []Spec, side Sides) []Spec {
+	out := slices.Clone(specs)
+	for i := range out {
+		switch out[i].Kind {
+		case Alternating, Within, Outside:
+		default:
+			out[i].Sides = side
+		}
+	}
+	return out
 }

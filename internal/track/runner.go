@@ -75,6 +75,7 @@ type form struct {
 	ByBound    bool           `json:"b,omitempty"`
 	Location   *[3]float64    `json:"l,omitempty"` // statistic, centre, sigma
 	Dispersion *[3]float64    `json:"d,omitempty"`
+	Inspected  float64        `json:"i,omitempty"` // of the location trace, on a chart of counts
 	Hits       []hitForm      `json:"h,omitempty"`
 }
 
@@ -89,7 +90,7 @@ type hitForm struct {
 
 // Encode gives the stored form of the verdict, without version and state. Equal verdicts have equal forms.
 func (o *Outcome) Encode() []byte {
-	f := form{Standing: o.Standing, Reason: o.Reason, ByBound: o.ByBound}
+	f := form{Standing: o.Standing, Reason: o.Reason, ByBound: o.ByBound, Inspected: o.Traces[chart.Location].Scale.Inspected}
 	for role, into := range [...]**[3]float64{&f.Location, &f.Dispersion} {
 		if t := o.Traces[role]; t.Point {
 			*into = &[3]float64{t.Statistic, t.Scale.Centre, t.Scale.Sigma}
@@ -117,6 +118,7 @@ func Decode(b []byte) (*Outcome, error) {
 			o.Traces[role] = judge.TraceVerdict{Point: true, Statistic: from[0], Scale: rules.Scale{Centre: from[1], Sigma: from[2]}}
 		}
 	}
+	o.Traces[chart.Location].Scale.Inspected = f.Inspected
 	for _, h := range f.Hits {
 		o.Hits = append(o.Hits, Hit{EpisodeKey{h.Role, h.Rule, h.Side}, h.Consequence, Ref{ID: h.WindowFirst}, Ref{ID: h.FirstCounting}})
 	}
