@@ -27,7 +27,7 @@ type row struct {
 
 var (
 	core = []string{"internal/chart", "internal/decimal", "internal/rules", "internal/judge", "internal/limits", "internal/runlength/...",
-		"internal/counts", "internal/diagnostics/..."}
+		"internal/counts", "internal/diagnostics/...", "internal/changetest"}
 
 	gonum    = []string{"gonum.org/v1/gonum"}
 	pgx      = []string{"github.com/jackc/pgx/v5"}
@@ -53,6 +53,7 @@ var table = []row{
 	longRow("internal/runlength"),
 	longRow("internal/runlength/effort"),
 	planned(coreRow("internal/diagnostics/...")),
+	coreRow("internal/changetest"),
 
 	// Definitions and the course of a track: validated values, still pure.
 	{pkg: "internal/definition", own: core, refused: []string{"net", "database/sql", "log", "os", "context"},
