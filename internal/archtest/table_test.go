@@ -52,7 +52,7 @@ var table = []row{
 	// A run length may take seconds on all processors, and its caller may give it up: a context and the processors' number.
 	longRow("internal/runlength"),
 	longRow("internal/runlength/effort"),
-	planned(coreRow("internal/diagnostics/...")),
+	coreRow("internal/diagnostics/..."),
 	coreRow("internal/changetest"),
 
 	// Definitions and the course of a track: validated values, still pure.
