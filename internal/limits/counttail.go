@@ -86,8 +86,9 @@ func (w *countWork) intervals() {
 	case !ok:
 	case w.res.CentreOrigin == Estimated:
 		w.res.Intervals.Centre = &mean
-		w.res.Intervals.LowerAction[chart.Location] = w.lineInterval(mean, w.res.Location.LowerAction, -chart.ActionMultiple)
-		w.res.Intervals.UpperAction[chart.Location] = w.lineInterval(mean, w.res.Location.UpperAction, chart.ActionMultiple)
+		w.res.Intervals.each(chart.Location, &w.res.Location, func(into **Interval, line chart.Line, multiple float64) {
+			*into = w.lineInterval(mean, line, multiple)
+		})
 	case w.req.Centre != nil:
 		w.res.Bias = &Comparison{w.mean() - centre, Interval{mean.Lower - centre, mean.Upper - centre}}
 	}

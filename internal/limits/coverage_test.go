@@ -34,6 +34,9 @@ func coverage(t *testing.T, d design, seed uint64, change func(*limits.Request))
 			{"centre", in.Centre, 10},
 			{"lower action", in.LowerAction[chart.Location], 10 - 3*scale.LocationSigma},
 			{"upper action", in.UpperAction[chart.Location], 10 + 3*scale.LocationSigma},
+			{"lower warning", in.LowerWarning[chart.Location], 10 - 2*scale.LocationSigma},
+			{"upper warning of dispersion", in.UpperWarning[chart.Dispersion], scale.DispersionCentre + 2*scale.DispersionSigma},
+			{"centre of dispersion", in.DispersionCentre, scale.DispersionCentre},
 			{"upper action of dispersion", in.UpperAction[chart.Dispersion], scale.DispersionCentre + 3*scale.DispersionSigma},
 		} {
 			if c.got != nil && c.got.Lower <= c.true && c.true <= c.got.Upper {
@@ -69,8 +72,8 @@ func TestIntervalsCover(t *testing.T) {
 				wide = 0.025 // few degrees of freedom make the combined interval of the lines cautious
 			}
 			check(t, held, wide)
-			if len(held) != 5 {
-				t.Errorf("got intervals for %v, want five figures", held)
+			if len(held) != 8 {
+				t.Errorf("got intervals for %v, want eight figures", held)
 			}
 			if reported > 0.01 {
 				t.Errorf("estimators of clean data disagree in %.4f of cases, want at most 0.01", reported)

@@ -23,10 +23,20 @@ type Intervals struct {
 	// Centre is the location centre: Student's t at ν degrees of freedom, or the normal quantile where sigma is given. For
 	// run means the variance is 1/Σ1/(s_b² + s_w²/n_i), with Satterthwaite's degrees of freedom.
 	Centre *Interval
-	// LowerAction and UpperAction are the action lines by trace. Those of the location trace combine the two intervals
+	// DispersionCentre is the centre of the dispersion trace at the nominal size.
+	DispersionCentre *Interval
+	// LowerAction to UpperWarning are the lines by trace. Those of the location trace combine the two intervals
 	// above by the square-root rule of Donner and Zou (2012, Statistical Methods in Medical Research 21, 347-359; from
 	// memory), which keeps the skewness of sigma's. Those of the dispersion trace are multiples of sigma.
-	LowerAction, UpperAction [chart.Roles]*Interval
+	LowerAction, UpperAction, LowerWarning, UpperWarning [chart.Roles]*Interval
+}
+
+// each calls f for the intervals and lines of a trace, with the multiple of sigma of each line.
+func (in *Intervals) each(role chart.Role, t *chart.Trace, f func(into **Interval, line chart.Line, multiple float64)) {
+	f(&in.LowerAction[role], t.LowerAction, -chart.ActionMultiple)
+	f(&in.UpperAction[role], t.UpperAction, chart.ActionMultiple)
+	f(&in.LowerWarning[role], t.LowerWarning, -chart.WarningMultiple)
+	f(&in.UpperWarning[role], t.UpperWarning, chart.WarningMultiple)
 }
 
 func (res *Result) intervals() Intervals {
@@ -44,13 +54,21 @@ func (res *Result) intervals() Intervals {
 		in.Centre = &Interval{res.CentreUnrounded - half, res.CentreUnrounded + half}
 	}
 	sigma := res.locationSigmaInterval(in.Sigma)
-	in.LowerAction[chart.Location] = in.line(res, res.Location.LowerAction, -chart.ActionMultiple, sigma)
-	in.UpperAction[chart.Location] = in.line(res, res.Location.UpperAction, chart.ActionMultiple, sigma)
+	in.each(chart.Location, &res.Location, func(into **Interval, line chart.Line, multiple float64) {
+		*into = in.line(res, line, multiple, sigma)
+	})
 	scale, _ := At(res.Kind, 1, res.SubgroupSize)
-	reach := chart.ActionMultiple * scale.DispersionSigma
-	in.LowerAction[chart.Dispersion] = in.multiple(res.Dispersion.LowerAction, scale.DispersionCentre-reach)
-	in.UpperAction[chart.Dispersion] = in.multiple(res.Dispersion.UpperAction, scale.DispersionCentre+reach)
+	in.dispersion(&res.Dispersion, scale)
 	return in
+}
+
+// dispersion fills the intervals of the dispersion trace: all of it is a multiple of process sigma. Scale is that of a
+// process sigma of 1.
+func (in *Intervals) dispersion(t *chart.Trace, scale Scale) {
+	in.DispersionCentre = in.multiple(chart.Line{}, scale.DispersionCentre)
+	in.each(chart.Dispersion, t, func(into **Interval, line chart.Line, multiple float64) {
+		*into = in.multiple(line, scale.DispersionCentre+multiple*scale.DispersionSigma)
+	})
 }
 
 // locationSigmaInterval is that of the sigma of the location trace; nil where nothing of it is estimated.

@@ -161,11 +161,11 @@ func (res *Result) publishDuplicates(d *duplicates) error {
 	t.LowerAction, t.LowerWarning = absent, absent
 	res.Dispersion = t
 	res.Location = chart.Trace{LowerAction: absent, UpperAction: absent, LowerWarning: absent, UpperWarning: absent}
-	reach := scale.DispersionCentre + chart.ActionMultiple*scale.DispersionSigma
 	if err := req.Fixed[chart.Dispersion].place(chart.Dispersion, &res.Dispersion); err != nil {
 		return err
 	}
-	res.Intervals.UpperAction[chart.Dispersion] = res.Intervals.multiple(res.Dispersion.UpperAction, reach/res.ProcessSigma)
+	unit, _ := At(req.Kind, 1, req.SubgroupSize)
+	res.Intervals.dispersion(&res.Dispersion, unit)
 	return nil
 }
 
