@@ -151,7 +151,7 @@ func (res *Result) overall(req *Request, things string) string {
 		fmt.Fprintf(&b, " (%d readings)", res.Readings)
 	}
 	fmt.Fprintf(&b, "; left out: %d of the old basis, %d excluded.", res.BasisLeftOut, res.ExcludedLeftOut)
-	if res.Correlation.Used > 0 {
+	if res.Correlation.Used >= correlationTold {
 		fmt.Fprintf(&b, " Neighbours are correlated (%.2f), so the centre counts as that of %.0f independent %s.", res.Correlation.Used, res.Correlation.EffectiveForCentre, things)
 	}
 	if req.Trigger == AfterSignal {
@@ -162,3 +162,7 @@ func (res *Result) overall(req *Request, things string) string {
 	}
 	return b.String()
 }
+
+// correlationTold is the correlation from which on it is mentioned: less takes off a tenth of the results at most. It is
+// used all the same.
+const correlationTold = 0.05
