@@ -116,19 +116,29 @@ func (j *Judge) compile(role chart.Role, t *Trace) (*rules.Plan, *Error) {
 			return nil, &Error{n.field, fmt.Sprintf("value %v: want a finite number", n.line.Value)}
 		}
 	}
-	if l, u := t.LowerAction, t.UpperAction; l.Fixed() && u.Fixed() && l.Value >= u.Value {
+	byFunction := func(l chart.Line) bool { return j.limits.Kind.Counts() && l.Basis == chart.TailProbability }
+	if l, u := t.LowerAction, t.UpperAction; l.Fixed() && u.Fixed() && l.Value >= u.Value && !byFunction(l) && !byFunction(u) {
 		return nil, &Error{"lower_action", fmt.Sprintf("value %v is not below upper_action, %v", l.Value, u.Value)}
 	}
-	specs := t.Rules
-	if j.limits.Kind.Duplicates() {
-		specs = rules.OneSide(specs, rules.UpperOnly)
-	}
-	plan, err := rules.CompileLines(t.Trace, j.limits.Places, specs, j.limits.Model.Inspected, j.lineFunc(role))
+	plan, err := j.plan(role, t, t.Rules)
 	if err != nil {
 		e := err.(*rules.SpecError)
 		return nil, &Error{e.Field, e.Problem}
 	}
 	return plan, nil
+}
+
+// plan compiles rules for a trace, with the lines of its kind.
+func (j *Judge) plan(role chart.Role, t *Trace, specs []rules.Spec) (*rules.Plan, error) {
+	if j.limits.Kind.Duplicates() {
+		specs = rules.OneSide(specs, rules.UpperOnly)
+	}
+	return rules.CompileLines(t.Trace, j.limits.Places, specs, j.limits.Model.Inspected, j.lineFunc(role))
+}
+
+// Alone compiles one rule for a trace that is judged, to be asked about points apart from the rest.
+func (j *Judge) Alone(role chart.Role, spec rules.Spec) (*rules.Plan, error) {
+	return j.plan(role, j.limits.Traces[role], []rules.Spec{spec})
 }
 
 func finite(x float64) bool { return !math.IsNaN(x) && !math.IsInf(x, 0) }

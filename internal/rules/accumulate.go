@@ -71,20 +71,24 @@ func (p *Plan) accumulate(st *State, s *step, xs []float64, at []Scale) (f found
 	return f
 }
 
-// average advances an EWMA by one point. The variance of the average after t points is
-// lambda/(2-lambda)·(1-(1-lambda)^(2t)) times that of a point (Lucas and Saccucci, Technometrics 32(1), 1990; from
-// memory, and an identity of the geometric series).
+// average advances an EWMA by one point.
 func (s *Spec) average(slots []float64, z float64) (up, down bool) {
 	keep := 1 - s.Lambda
 	// The conversions keep the product and the sum apart, so that every machine stores the same bits.
 	slots[0] = float64(s.Lambda*z) + float64(keep*slots[0])
 	slots[1] *= keep * keep
-	missing := slots[1]
+	limit := s.averageLimit(slots[1])
+	return exceeds(slots[0], limit), exceeds(-slots[0], limit)
+}
+
+// averageLimit gives the limit of an EWMA, missing being the part of the variance still to come. The variance of the
+// average after t points is lambda/(2-lambda)·(1-(1-lambda)^(2t)) times that of a point (Lucas and Saccucci,
+// Technometrics 32(1), 1990; from memory, and an identity of the geometric series).
+func (s *Spec) averageLimit(missing float64) float64 {
 	if s.Asymptotic {
 		missing = 0
 	}
-	limit := s.Limit * math.Sqrt(s.Lambda/(2-s.Lambda)*(1-missing))
-	return exceeds(slots[0], limit), exceeds(-slots[0], limit)
+	return s.Limit * math.Sqrt(s.Lambda/(2-s.Lambda)*(1-missing))
 }
 
 // sumsToZero is what rounds to 0 at comparePlaces decimals: an arm that is 0 on paper may keep a trace of float64's
