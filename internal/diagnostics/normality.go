@@ -36,14 +36,42 @@ func (s *sample) normality() Test {
 // andersonDarling gives A*² = A²(1 + 0.75/n + 2.25/n²) of sorted values, standardised by their mean and standard
 // deviation, and its p-value: D'Agostino and Stephens, Goodness-of-Fit Techniques (1986), table 4.9, from memory.
 func andersonDarling(sorted []float64) (adjusted, p float64) {
-	n := float64(len(sorted))
-	a := n * squareA(sorted)
-	adjusted = a * (1 + 0.75/n + 2.25/(n*n))
+	adjusted = float64(len(sorted)) * squareAPerValue(sorted) * adjustment(len(sorted))
 	return adjusted, andersonDarlingP(adjusted)
 }
 
-// squareA gives A²/n = -1 - Σ(2i-1)(ln Φ(z_i) + ln(1-Φ(z_{n+1-i})))/n².
-func squareA(sorted []float64) float64 {
+// Normality gives the Anderson-Darling statistic A² of values, taken as they are, against a normal law with their own mean
+// and standard deviation, and A*², the same adjusted for their number, which NormalityP judges. Fewer than 8 values,
+// values that are not finite, and values that are all equal are an error.
+func Normality(values []float64) (squareA, adjusted float64, err error) {
+	if len(values) < shapeMin {
+		return 0, 0, fmt.Errorf("%d values: the test needs at least %d", len(values), shapeMin)
+	}
+	for i, x := range values {
+		if math.IsNaN(x) || math.IsInf(x, 0) {
+			return 0, 0, fmt.Errorf("value %d is %v: want a finite number", i+1, x)
+		}
+	}
+	deviations, mean, scale := deviationsOf(values)
+	s := newSample("values", deviations, mean, scale, 0)
+	if s.constant() {
+		return 0, 0, fmt.Errorf("all %d values are %v: they have no spread to test", len(values), values[0])
+	}
+	squareA = float64(s.n) * squareAPerValue(s.sorted)
+	return squareA, squareA * adjustment(s.n), nil
+}
+
+// adjustment is the factor from A² to A*² for n values.
+func adjustment(n int) float64 {
+	size := float64(n)
+	return 1 + 0.75/size + 2.25/(size*size)
+}
+
+// NormalityP gives the p-value of A*², by the formulas named at andersonDarling.
+func NormalityP(adjusted float64) float64 { return andersonDarlingP(adjusted) }
+
+// squareAPerValue gives A²/n = -1 - Σ(2i-1)(ln Φ(z_i) + ln(1-Φ(z_{n+1-i})))/n².
+func squareAPerValue(sorted []float64) float64 {
 	n := len(sorted)
 	total := 0.0
 	for i := range sorted {
