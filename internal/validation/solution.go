@@ -5,6 +5,7 @@ import (
 
 	"limitary/internal/chart"
 	"limitary/internal/decimal"
+	"limitary/internal/diagnostics"
 	"limitary/internal/limits"
 )
 
@@ -20,7 +21,7 @@ func (e *example) solve() (*solution, error) {
 	if e.Kind == "" {
 		return s, nil
 	}
-	req, err := e.request()
+	req, err := e.request(quantity{})
 	if err != nil {
 		return nil, err
 	}
@@ -31,7 +32,13 @@ func (e *example) solve() (*solution, error) {
 // value computes a quantity as the print did: with its factors where it used rounded ones, from figures rounded as it
 // rounded them. Without either, lines are those of the published result.
 func (s *solution) value(q quantity, r rounding) (float64, error) {
+	if s.limits.Kind.Counts() {
+		return s.count(q, r)
+	}
 	switch q.Compute {
+	case "anderson_darling":
+		squareA, _, err := diagnostics.Normality(s.example.Data.X)
+		return squareA, err
 	case "moment_mean":
 		return decimal.Mean(s.example.Data.X, decimal.Unrounded), nil
 	case "moment_sd":
@@ -55,6 +62,9 @@ func (s *solution) value(q quantity, r rounding) (float64, error) {
 			return r.location(groups[q.Sample-1]), nil
 		}
 		return s.scatter(groups[q.Sample-1], r), nil
+	}
+	if s.example.Kind == "" {
+		return s.accumulated(q)
 	}
 	return s.sum(q, r)
 }
