@@ -13,6 +13,7 @@ type builder struct {
 	decimal  evidence
 	progress func(rows, bytes int64)
 	table    *Table
+	kept     []keptText
 
 	records int // rows of the file so far
 	pending int // blank lines of a one-column file not yet known to be rows
@@ -25,6 +26,7 @@ type builder struct {
 }
 
 func (b *builder) run() (*Table, error) {
+	b.kept = b.keptTexts()
 	for {
 		ok, err := b.scan.next()
 		if err != nil {
@@ -72,7 +74,7 @@ func (b *builder) record() error {
 		if err := b.count(b.scan.recordLine - b.pending); err != nil {
 			return err
 		}
-		b.table.EmptyFields++
+		b.table.EmptyFields++ // a file of one column has no column of what was inspected
 		b.table.endRow(b.scan.recordLine - b.pending)
 	}
 	if len(b.scan.fields) != len(b.cols.names) {
@@ -87,8 +89,14 @@ func (b *builder) record() error {
 	if err := b.texts(); err != nil {
 		return err
 	}
+	before := len(b.table.values)
 	for _, i := range b.cols.values {
 		if err := b.reading(i); err != nil {
+			return err
+		}
+	}
+	if b.cols.inspected >= 0 {
+		if err := b.inspected(len(b.table.values) > before); err != nil {
 			return err
 		}
 	}

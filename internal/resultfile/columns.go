@@ -13,6 +13,7 @@ type columns struct {
 	names                              []string
 	values                             []int
 	subgroup, id, time, mark, excluded int
+	material, inspected                int
 }
 
 // label names column i in messages.
@@ -36,6 +37,7 @@ func choose(o Options, line int, start opening) (*columns, error) {
 	}{
 		{&c.subgroup, o.Subgroup, "--subgroup"}, {&c.id, o.ID, "--id"}, {&c.time, o.Time, "--time"},
 		{&c.mark, o.Break, "--break"}, {&c.excluded, o.Exclude, "--exclude"},
+		{&c.material, o.Material, "--material"}, {&c.inspected, o.Inspected, "--inspected"},
 	} {
 		*role.at = -1
 		if role.name == "" {
@@ -132,7 +134,7 @@ func (c *columns) chooseValues(o Options, line int, start opening) error {
 
 // taken reports whether column i has a role other than value.
 func (c *columns) taken(i int) bool {
-	return i == c.subgroup || i == c.id || i == c.time || i == c.mark || i == c.excluded
+	return i == c.subgroup || i == c.id || i == c.time || i == c.mark || i == c.excluded || i == c.material || i == c.inspected
 }
 
 // checkRoles refuses a choice of columns that contradicts itself.
@@ -157,7 +159,26 @@ func (c *columns) checkRoles(o Options, line int) error {
 	if c.mark >= 0 && c.mark == c.excluded {
 		return &Error{Line: line, Column: c.label(c.mark), Problem: "is chosen for breaks and for exclusions", Advice: "choose another column for one of the two"}
 	}
-	return nil
+	return c.checkInspected(line)
+}
+
+// checkInspected refuses a column of what was inspected beside anything but one count a row.
+func (c *columns) checkInspected(line int) error {
+	if c.inspected < 0 {
+		return nil
+	}
+	bad := &Error{Line: line, Column: c.label(c.inspected)}
+	switch {
+	case c.subgroup >= 0:
+		bad.Problem, bad.Advice = "says how much was inspected, and counts make no subgroups", "leave out --subgroup"
+	case len(c.values) > 1:
+		bad.Problem, bad.Advice = fmt.Sprintf("says how much was inspected, and %d value columns are chosen", len(c.values)), "choose one column of counts with --value"
+	case c.inspected == c.mark || c.inspected == c.excluded || c.inspected == c.material || c.inspected == c.id || c.inspected == c.time:
+		bad.Problem, bad.Advice = "is chosen for what was inspected and for something else", "choose another column for one of the two"
+	default:
+		return nil
+	}
+	return bad
 }
 
 // mostlyNumeric reports whether at least half of the texts in column i are numbers: a column of results with a few

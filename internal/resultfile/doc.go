@@ -19,8 +19,11 @@
 // reading stays a row, without readings, and is counted. An empty line is such a row in a file of one column and
 // skipped in others. Anything else that is not a reading ("NaN", a word) is refused with line, column and value.
 //
-// In the long form, time, name and break of a result are those of its first row, and a reason for exclusion must be the
-// same in all its rows.
+// In the long form, time, name and break of a result are those of its first row, and a reason for exclusion and the
+// material must be the same in all its rows.
+//
+// Counts stand in the value column, and how much was inspected for each in a column of its own, as a number above zero.
+// A row with one of the two has both, except that a sample without a count is a row without a result.
 //
 // # Columns
 //
@@ -31,6 +34,6 @@
 // # Errors
 //
 // Whatever is wrong with the file or the choice of columns is an *Error. Its advice speaks of the command line's flags:
-// --delimiter, --decimal, --value, --subgroup, --id, --time, --break and --exclude. Read keeps nothing of a file that it
+// --delimiter, --decimal, --value, --subgroup, --id, --time, --break, --exclude, --material and --inspected. Read keeps nothing of a file that it
 // refuses.
 package resultfile

@@ -96,6 +96,12 @@ func FuzzRead(f *testing.F) {
 		if table.Len() != small.Len() || table.Bytes != int64(len(text)) {
 			t.Fatalf("got %d and %d rows, %d of %d bytes", table.Len(), small.Len(), table.Bytes, len(text))
 		}
+		more, err := resultfile.Read(bytes.NewReader(text), resultfile.Options{Values: []string{"v"}, Material: "w"})
+		for i := 0; err == nil && i < table.Len(); i++ { // refused where there is no such column, or it is not text
+			if more.Len() != table.Len() || len(more.Figures(i)) != len(table.Figures(i)) {
+				t.Fatalf("a column of materials changes the rows: %d and %d", more.Len(), table.Len())
+			}
+		}
 		if table.Delimiter == 0 {
 			return // encoding/csv cannot be told that nothing separates
 		}

@@ -82,6 +82,17 @@ func (b *builder) continueGroup(name []byte) error {
 				Advice:  "write the same reason in all its rows, or in none; leave the reading empty to leave out one reading"}
 		}
 	}
+	if b.cols.material >= 0 {
+		material, err := b.text(b.cols.material)
+		if err != nil {
+			return err
+		}
+		if first := b.table.material.at(row); !bytes.Equal(first, material) {
+			return &Error{Line: b.scan.recordLine, Column: b.cols.label(b.cols.material), Value: clip(material),
+				Problem: fmt.Sprintf("subgroup %q is of %q in line %d, and a subgroup is of one material", clip(name), clip(first), b.groupLine),
+				Advice:  "write the same material in all its rows, or give the subgroups different names"}
+		}
+	}
 	if b.cols.mark >= 0 {
 		mark, err := b.breakHere()
 		if err != nil {

@@ -278,3 +278,26 @@ func TestAFailingReaderIsReportedAsItself(t *testing.T) {
 		t.Errorf("got %v, want the reader's own error", err)
 	}
 }
+
+// Texts of materials and figures of what was inspected, in the wide and the long form. The expected values are written
+// here by hand.
+func TestMaterialAndInspected(t *testing.T) {
+	table := mustRead(t, "m;n;k\nlow;50;2\n high ;2,5;0\n;;\nmid;40;\n", resultfile.Options{Values: []string{"k"}, Material: "m", Inspected: "n"})
+	wantMaterial, wantSize := []string{"low", "high", "", "mid"}, []float64{50, 2.5, 0, 0}
+	for i := range table.Len() {
+		size, ok := table.Inspected(i)
+		if table.Material(i) != wantMaterial[i] || table.Row(i).Material != wantMaterial[i] || size != wantSize[i] || ok != (wantSize[i] > 0) {
+			t.Errorf("row %d: got %q and %v, %v", i, table.Material(i), size, ok)
+		}
+	}
+	if !table.HasInspected() || table.Decimal != ',' || table.Empty != 2 {
+		t.Errorf("got inspected %v, decimal %q, %d rows without a reading", table.HasInspected(), table.Decimal, table.Empty)
+	}
+	long := mustRead(t, "g,m,x\n1,low,1\n1,low,2\n2,high,3\n", resultfile.Options{Values: []string{"x"}, Subgroup: "g", Material: "m"})
+	if long.HasInspected() || long.Len() != 2 || long.Material(0) != "low" || long.Material(1) != "high" {
+		t.Errorf("got %d subgroups of %q and %q", long.Len(), long.Material(0), long.Material(1))
+	}
+	if _, ok := long.Inspected(0); ok {
+		t.Error("something was inspected in a file that does not say so")
+	}
+}

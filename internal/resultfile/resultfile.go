@@ -34,6 +34,11 @@ type Options struct {
 	// ID and Time are columns whose texts are kept. Exclude holds the reason for an exclusion, or nothing. Break holds
 	// yes where a segment begins, no or nothing elsewhere.
 	ID, Time, Break, Exclude string
+	// Material is a column whose texts are kept: the control material of each result.
+	Material string
+	// Inspected is the column that says how much was looked at where the value column holds counts. The file then has one
+	// value column and no subgroups.
+	Inspected string
 	// Progress, if set, is called now and then with the rows and bytes taken in, and once at the end.
 	Progress func(rows, bytes int64)
 }

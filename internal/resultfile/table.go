@@ -11,8 +11,9 @@ import (
 type Row struct {
 	// Line is where the row begins, from 1.
 	Line int
-	// ID, Time and Group are the texts of the columns chosen for them, without spaces around; empty without a column.
-	ID, Time, Group string
+	// ID, Time, Group and Material are the texts of the columns chosen for them, without spaces around; empty without a
+	// column.
+	ID, Time, Group, Material string
 	// Readings are those there are, in the order of the value columns or of the rows of the subgroup.
 	Readings []decimal.Reading
 	// Break says that a segment begins with this row.
@@ -51,8 +52,10 @@ type Table struct {
 	// lines[i] is where row i begins, once that is other than i+2.
 	lines []int
 
-	id, time, group, exclude text
-	breaks                   []bool
+	id, time, group, exclude, material text
+	breaks                             []bool
+	// inspected has one entry a row where there is such a column; NaN where the row has no count.
+	inspected []float64
 }
 
 // text is one column of texts, end to end.
@@ -127,6 +130,7 @@ func (t *Table) Row(i int) Row {
 		ID:       string(t.id.at(i)),
 		Time:     string(t.time.at(i)),
 		Group:    string(t.group.at(i)),
+		Material: t.Material(i),
 		Readings: t.AppendReadings(nil, i),
 		Break:    t.Break(i),
 		Exclude:  string(t.exclude.at(i)),
@@ -143,6 +147,17 @@ func (t *Table) Line(i int) int {
 
 // Break says whether a segment begins with row i.
 func (t *Table) Break(i int) bool { return i < len(t.breaks) && t.breaks[i] }
+
+// Material gives the material of row i, empty without such a column.
+func (t *Table) Material(i int) string { return string(t.material.at(i)) }
+
+// Inspected gives how much was looked at for the count of row i; ok is false without such a column, or without a count.
+func (t *Table) Inspected(i int) (size float64, ok bool) {
+	if i >= len(t.inspected) || math.IsNaN(t.inspected[i]) {
+		return 0, false
+	}
+	return t.inspected[i], true
+}
 
 // Excluded says whether row i has a reason for exclusion, which Row gives.
 func (t *Table) Excluded(i int) bool { return len(t.exclude.at(i)) > 0 }

@@ -10,13 +10,7 @@ import (
 // texts takes in the fields kept as text, for a row of its own or the first row of a subgroup.
 func (b *builder) texts() error {
 	t := b.table
-	for _, c := range [...]struct {
-		at  int
-		col *text
-	}{{b.cols.id, &t.id}, {b.cols.time, &t.time}, {b.cols.subgroup, &t.group}} {
-		if c.at < 0 {
-			continue
-		}
+	for _, c := range b.kept {
 		field, err := b.text(c.at)
 		if err != nil {
 			return err
@@ -45,6 +39,23 @@ func (b *builder) texts() error {
 		t.breaks = append(t.breaks, mark)
 	}
 	return nil
+}
+
+// keptText is a column of texts and its place in a record.
+type keptText struct {
+	at  int
+	col *text
+}
+
+// keptTexts lists the columns of texts that were chosen.
+func (b *builder) keptTexts() (kept []keptText) {
+	t := b.table
+	for _, c := range []keptText{{b.cols.id, &t.id}, {b.cols.time, &t.time}, {b.cols.subgroup, &t.group}, {b.cols.material, &t.material}} {
+		if c.at >= 0 {
+			kept = append(kept, c)
+		}
+	}
+	return kept
 }
 
 // keep adds a text to its column of the table.
