@@ -85,7 +85,7 @@ type Chart struct {
 	Name  string    `protobuf:"bytes,1,opt,name=name,proto3" json:"name,omitempty"`
 	Title string    `protobuf:"bytes,2,opt,name=title,proto3" json:"title,omitempty"`
 	Kind  ChartKind `protobuf:"varint,3,opt,name=kind,proto3,enum=limitary.v1.ChartKind" json:"kind,omitempty"`
-	// Readings in a full subgroup; 1 for individuals.
+	// Readings in a full subgroup; the sample size of np; 1 for individuals, p, c and u.
 	SubgroupSize int32 `protobuf:"varint,4,opt,name=subgroup_size,json=subgroupSize,proto3" json:"subgroup_size,omitempty"`
 	// Unit of every reading, such as "mg/L"; "1" where there is none.
 	Unit string `protobuf:"bytes,5,opt,name=unit,proto3" json:"unit,omitempty"`
@@ -103,11 +103,17 @@ type Chart struct {
 	// Each material lot is its own track.
 	LotsAreTracks bool `protobuf:"varint,12,opt,name=lots_are_tracks,json=lotsAreTracks,proto3" json:"lots_are_tracks,omitempty"`
 	// Given by the service.
-	Revision      int64                  `protobuf:"varint,13,opt,name=revision,proto3" json:"revision,omitempty"`
-	Archived      bool                   `protobuf:"varint,14,opt,name=archived,proto3" json:"archived,omitempty"`
-	CreateTime    *timestamppb.Timestamp `protobuf:"bytes,15,opt,name=create_time,json=createTime,proto3" json:"create_time,omitempty"`
-	unknownFields protoimpl.UnknownFields
-	sizeCache     protoimpl.SizeCache
+	Revision   int64                  `protobuf:"varint,13,opt,name=revision,proto3" json:"revision,omitempty"`
+	Archived   bool                   `protobuf:"varint,14,opt,name=archived,proto3" json:"archived,omitempty"`
+	CreateTime *timestamppb.Timestamp `protobuf:"bytes,15,opt,name=create_time,json=createTime,proto3" json:"create_time,omitempty"`
+	// Readings count as (reading - reference)/sigma, by the material each result names. Never changes.
+	Standardised bool `protobuf:"varint,16,opt,name=standardised,proto3" json:"standardised,omitempty"`
+	// From where on a difference from the limits in force matters: of the centre, in sigmas, and of sigma, as a ratio
+	// either way; 0 takes 0.5 and 1.25.
+	RelevantShiftSigmas float64 `protobuf:"fixed64,17,opt,name=relevant_shift_sigmas,json=relevantShiftSigmas,proto3" json:"relevant_shift_sigmas,omitempty"`
+	RelevantSigmaRatio  float64 `protobuf:"fixed64,18,opt,name=relevant_sigma_ratio,json=relevantSigmaRatio,proto3" json:"relevant_sigma_ratio,omitempty"`
+	unknownFields       protoimpl.UnknownFields
+	sizeCache           protoimpl.SizeCache
 }
 
 func (x *Chart) Reset() {
@@ -243,6 +249,27 @@ func (x *Chart) GetCreateTime() *timestamppb.Timestamp {
 		return x.CreateTime
 	}
 	return nil
+}
+
+func (x *Chart) GetStandardised() bool {
+	if x != nil {
+		return x.Standardised
+	}
+	return false
+}
+
+func (x *Chart) GetRelevantShiftSigmas() float64 {
+	if x != nil {
+		return x.RelevantShiftSigmas
+	}
+	return 0
+}
+
+func (x *Chart) GetRelevantSigmaRatio() float64 {
+	if x != nil {
+		return x.RelevantSigmaRatio
+	}
+	return 0
 }
 
 type CreateChartRequest struct {
@@ -612,13 +639,15 @@ type UpdateChartRequest struct {
 	ExpectedRevision int64   `protobuf:"varint,3,opt,name=expected_revision,json=expectedRevision,proto3" json:"expected_revision,omitempty"`
 	Title            *string `protobuf:"bytes,4,opt,name=title,proto3,oneof" json:"title,omitempty"`
 	// Replaces all labels.
-	Labels        *Labels              `protobuf:"bytes,5,opt,name=labels,proto3" json:"labels,omitempty"`
-	Decimals      *int32               `protobuf:"varint,6,opt,name=decimals,proto3,oneof" json:"decimals,omitempty"`
-	PlanInterval  *durationpb.Duration `protobuf:"bytes,7,opt,name=plan_interval,json=planInterval,proto3" json:"plan_interval,omitempty"`
-	RepeatRule    *string              `protobuf:"bytes,8,opt,name=repeat_rule,json=repeatRule,proto3,oneof" json:"repeat_rule,omitempty"`
-	DisplayZone   *string              `protobuf:"bytes,9,opt,name=display_zone,json=displayZone,proto3,oneof" json:"display_zone,omitempty"`
-	unknownFields protoimpl.UnknownFields
-	sizeCache     protoimpl.SizeCache
+	Labels              *Labels              `protobuf:"bytes,5,opt,name=labels,proto3" json:"labels,omitempty"`
+	Decimals            *int32               `protobuf:"varint,6,opt,name=decimals,proto3,oneof" json:"decimals,omitempty"`
+	PlanInterval        *durationpb.Duration `protobuf:"bytes,7,opt,name=plan_interval,json=planInterval,proto3" json:"plan_interval,omitempty"`
+	RepeatRule          *string              `protobuf:"bytes,8,opt,name=repeat_rule,json=repeatRule,proto3,oneof" json:"repeat_rule,omitempty"`
+	DisplayZone         *string              `protobuf:"bytes,9,opt,name=display_zone,json=displayZone,proto3,oneof" json:"display_zone,omitempty"`
+	RelevantShiftSigmas *float64             `protobuf:"fixed64,10,opt,name=relevant_shift_sigmas,json=relevantShiftSigmas,proto3,oneof" json:"relevant_shift_sigmas,omitempty"`
+	RelevantSigmaRatio  *float64             `protobuf:"fixed64,11,opt,name=relevant_sigma_ratio,json=relevantSigmaRatio,proto3,oneof" json:"relevant_sigma_ratio,omitempty"`
+	unknownFields       protoimpl.UnknownFields
+	sizeCache           protoimpl.SizeCache
 }
 
 func (x *UpdateChartRequest) Reset() {
@@ -712,6 +741,20 @@ func (x *UpdateChartRequest) GetDisplayZone() string {
 		return *x.DisplayZone
 	}
 	return ""
+}
+
+func (x *UpdateChartRequest) GetRelevantShiftSigmas() float64 {
+	if x != nil && x.RelevantShiftSigmas != nil {
+		return *x.RelevantShiftSigmas
+	}
+	return 0
+}
+
+func (x *UpdateChartRequest) GetRelevantSigmaRatio() float64 {
+	if x != nil && x.RelevantSigmaRatio != nil {
+		return *x.RelevantSigmaRatio
+	}
+	return 0
 }
 
 type UpdateChartResponse struct {
@@ -1703,7 +1746,7 @@ var File_limitary_v1_chart_proto protoreflect.FileDescriptor
 
 const file_limitary_v1_chart_proto_rawDesc = "" +
 	"\n" +
-	"\x17limitary/v1/chart.proto\x12\vlimitary.v1\x1a\x1egoogle/protobuf/duration.proto\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x18limitary/v1/limits.proto\x1a\x19limitary/v1/request.proto\"\x94\x05\n" +
+	"\x17limitary/v1/chart.proto\x12\vlimitary.v1\x1a\x1egoogle/protobuf/duration.proto\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x18limitary/v1/limits.proto\x1a\x19limitary/v1/request.proto\"\x9e\x06\n" +
 	"\x05Chart\x12\x12\n" +
 	"\x04name\x18\x01 \x01(\tR\x04name\x12\x14\n" +
 	"\x05title\x18\x02 \x01(\tR\x05title\x12*\n" +
@@ -1723,7 +1766,10 @@ const file_limitary_v1_chart_proto_rawDesc = "" +
 	"\brevision\x18\r \x01(\x03R\brevision\x12\x1a\n" +
 	"\barchived\x18\x0e \x01(\bR\barchived\x12;\n" +
 	"\vcreate_time\x18\x0f \x01(\v2\x1a.google.protobuf.TimestampR\n" +
-	"createTime\x1a9\n" +
+	"createTime\x12\"\n" +
+	"\fstandardised\x18\x10 \x01(\bR\fstandardised\x122\n" +
+	"\x15relevant_shift_sigmas\x18\x11 \x01(\x01R\x13relevantShiftSigmas\x120\n" +
+	"\x14relevant_sigma_ratio\x18\x12 \x01(\x01R\x12relevantSigmaRatio\x1a9\n" +
 	"\vLabelsEntry\x12\x10\n" +
 	"\x03key\x18\x01 \x01(\tR\x03key\x12\x14\n" +
 	"\x05value\x18\x02 \x01(\tR\x05value:\x028\x01B\v\n" +
@@ -1752,7 +1798,7 @@ const file_limitary_v1_chart_proto_rawDesc = "" +
 	"\x06labels\x18\x01 \x03(\v2\x1f.limitary.v1.Labels.LabelsEntryR\x06labels\x1a9\n" +
 	"\vLabelsEntry\x12\x10\n" +
 	"\x03key\x18\x01 \x01(\tR\x03key\x12\x14\n" +
-	"\x05value\x18\x02 \x01(\tR\x05value:\x028\x01\"\xa3\x03\n" +
+	"\x05value\x18\x02 \x01(\tR\x05value:\x028\x01\"\xc6\x04\n" +
 	"\x12UpdateChartRequest\x12\x12\n" +
 	"\x04name\x18\x01 \x01(\tR\x04name\x12\x1d\n" +
 	"\n" +
@@ -1764,11 +1810,16 @@ const file_limitary_v1_chart_proto_rawDesc = "" +
 	"\rplan_interval\x18\a \x01(\v2\x19.google.protobuf.DurationR\fplanInterval\x12$\n" +
 	"\vrepeat_rule\x18\b \x01(\tH\x02R\n" +
 	"repeatRule\x88\x01\x01\x12&\n" +
-	"\fdisplay_zone\x18\t \x01(\tH\x03R\vdisplayZone\x88\x01\x01B\b\n" +
+	"\fdisplay_zone\x18\t \x01(\tH\x03R\vdisplayZone\x88\x01\x01\x127\n" +
+	"\x15relevant_shift_sigmas\x18\n" +
+	" \x01(\x01H\x04R\x13relevantShiftSigmas\x88\x01\x01\x125\n" +
+	"\x14relevant_sigma_ratio\x18\v \x01(\x01H\x05R\x12relevantSigmaRatio\x88\x01\x01B\b\n" +
 	"\x06_titleB\v\n" +
 	"\t_decimalsB\x0e\n" +
 	"\f_repeat_ruleB\x0f\n" +
-	"\r_display_zone\"?\n" +
+	"\r_display_zoneB\x18\n" +
+	"\x16_relevant_shift_sigmasB\x17\n" +
+	"\x15_relevant_sigma_ratio\"?\n" +
 	"\x13UpdateChartResponse\x12(\n" +
 	"\x05chart\x18\x01 \x01(\v2\x12.limitary.v1.ChartR\x05chart\"\x8d\x01\n" +
 	"\x13ArchiveChartRequest\x12\x12\n" +

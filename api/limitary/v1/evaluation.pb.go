@@ -101,6 +101,9 @@ const (
 	NotJudgedReason_NOT_JUDGED_REASON_BOUND_PROVES_NOTHING NotJudgedReason = 4
 	// The result was voided.
 	NotJudgedReason_NOT_JUDGED_REASON_VOIDED NotJudgedReason = 5
+	// Nothing says how far such a result may lie from the centre: its material is no level of the standardised track, or
+	// its relative range has a mean of zero.
+	NotJudgedReason_NOT_JUDGED_REASON_NO_SCALE NotJudgedReason = 6
 )
 
 // Enum value maps for NotJudgedReason.
@@ -112,6 +115,7 @@ var (
 		3: "NOT_JUDGED_REASON_TOO_FEW_READINGS",
 		4: "NOT_JUDGED_REASON_BOUND_PROVES_NOTHING",
 		5: "NOT_JUDGED_REASON_VOIDED",
+		6: "NOT_JUDGED_REASON_NO_SCALE",
 	}
 	NotJudgedReason_value = map[string]int32{
 		"NOT_JUDGED_REASON_UNSPECIFIED":          0,
@@ -120,6 +124,7 @@ var (
 		"NOT_JUDGED_REASON_TOO_FEW_READINGS":     3,
 		"NOT_JUDGED_REASON_BOUND_PROVES_NOTHING": 4,
 		"NOT_JUDGED_REASON_VOIDED":               5,
+		"NOT_JUDGED_REASON_NO_SCALE":             6,
 	}
 )
 
@@ -212,6 +217,7 @@ type InlineLimits struct {
 	// Standard deviation of a single reading, for subgroups smaller than the nominal size. Absent, it is the location
 	// trace's sigma times the square root of subgroup_size.
 	ProcessSigma  *float64 `protobuf:"fixed64,6,opt,name=process_sigma,json=processSigma,proto3,oneof" json:"process_sigma,omitempty"`
+	Model         *Model   `protobuf:"bytes,7,opt,name=model,proto3" json:"model,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -286,6 +292,13 @@ func (x *InlineLimits) GetProcessSigma() float64 {
 		return *x.ProcessSigma
 	}
 	return 0
+}
+
+func (x *InlineLimits) GetModel() *Model {
+	if x != nil {
+		return x.Model
+	}
+	return nil
 }
 
 // Limits kept by the service.
@@ -776,12 +789,14 @@ type TraceVerdict struct {
 	Statistic *float64               `protobuf:"fixed64,1,opt,name=statistic,proto3,oneof" json:"statistic,omitempty"`
 	Centre    *float64               `protobuf:"fixed64,2,opt,name=centre,proto3,oneof" json:"centre,omitempty"`
 	// The figure that follows from process sigma and the number of readings; it is not rounded.
-	Sigma         *float64 `protobuf:"fixed64,3,opt,name=sigma,proto3,oneof" json:"sigma,omitempty"`
-	LowerAction   *float64 `protobuf:"fixed64,4,opt,name=lower_action,json=lowerAction,proto3,oneof" json:"lower_action,omitempty"`
-	UpperAction   *float64 `protobuf:"fixed64,5,opt,name=upper_action,json=upperAction,proto3,oneof" json:"upper_action,omitempty"`
-	LowerWarning  *float64 `protobuf:"fixed64,6,opt,name=lower_warning,json=lowerWarning,proto3,oneof" json:"lower_warning,omitempty"`
-	UpperWarning  *float64 `protobuf:"fixed64,7,opt,name=upper_warning,json=upperWarning,proto3,oneof" json:"upper_warning,omitempty"`
-	Hits          []*Hit   `protobuf:"bytes,8,rep,name=hits,proto3" json:"hits,omitempty"`
+	Sigma        *float64 `protobuf:"fixed64,3,opt,name=sigma,proto3,oneof" json:"sigma,omitempty"`
+	LowerAction  *float64 `protobuf:"fixed64,4,opt,name=lower_action,json=lowerAction,proto3,oneof" json:"lower_action,omitempty"`
+	UpperAction  *float64 `protobuf:"fixed64,5,opt,name=upper_action,json=upperAction,proto3,oneof" json:"upper_action,omitempty"`
+	LowerWarning *float64 `protobuf:"fixed64,6,opt,name=lower_warning,json=lowerWarning,proto3,oneof" json:"lower_warning,omitempty"`
+	UpperWarning *float64 `protobuf:"fixed64,7,opt,name=upper_warning,json=upperWarning,proto3,oneof" json:"upper_warning,omitempty"`
+	Hits         []*Hit   `protobuf:"bytes,8,rep,name=hits,proto3" json:"hits,omitempty"`
+	// The same in the chart's unit, where the trace is judged on another scale.
+	Original      *OriginalScale `protobuf:"bytes,9,opt,name=original,proto3" json:"original,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -872,11 +887,18 @@ func (x *TraceVerdict) GetHits() []*Hit {
 	return nil
 }
 
+func (x *TraceVerdict) GetOriginal() *OriginalScale {
+	if x != nil {
+		return x.Original
+	}
+	return nil
+}
+
 var File_limitary_v1_evaluation_proto protoreflect.FileDescriptor
 
 const file_limitary_v1_evaluation_proto_rawDesc = "" +
 	"\n" +
-	"\x1climitary/v1/evaluation.proto\x12\vlimitary.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x18limitary/v1/limits.proto\x1a\x17limitary/v1/rules.proto\"\xd6\x02\n" +
+	"\x1climitary/v1/evaluation.proto\x12\vlimitary.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x18limitary/v1/limits.proto\x1a\x17limitary/v1/rules.proto\"\x80\x03\n" +
 	"\fInlineLimits\x12*\n" +
 	"\x04kind\x18\x01 \x01(\x0e2\x16.limitary.v1.ChartKindR\x04kind\x12#\n" +
 	"\rsubgroup_size\x18\x02 \x01(\x05R\fsubgroupSize\x122\n" +
@@ -885,7 +907,8 @@ const file_limitary_v1_evaluation_proto_rawDesc = "" +
 	"\n" +
 	"dispersion\x18\x05 \x01(\v2\x18.limitary.v1.TraceLimitsR\n" +
 	"dispersion\x12(\n" +
-	"\rprocess_sigma\x18\x06 \x01(\x01H\x01R\fprocessSigma\x88\x01\x01B\x15\n" +
+	"\rprocess_sigma\x18\x06 \x01(\x01H\x01R\fprocessSigma\x88\x01\x01\x12(\n" +
+	"\x05model\x18\a \x01(\v2\x12.limitary.v1.ModelR\x05modelB\x15\n" +
 	"\x13_published_decimalsB\x10\n" +
 	"\x0e_process_sigma\"u\n" +
 	"\aByChart\x12\x12\n" +
@@ -922,7 +945,7 @@ const file_limitary_v1_evaluation_proto_rawDesc = "" +
 	"\blocation\x18\x05 \x01(\v2\x19.limitary.v1.TraceVerdictR\blocation\x129\n" +
 	"\n" +
 	"dispersion\x18\x06 \x01(\v2\x19.limitary.v1.TraceVerdictR\n" +
-	"dispersion\"\x9c\x03\n" +
+	"dispersion\"\xd4\x03\n" +
 	"\fTraceVerdict\x12!\n" +
 	"\tstatistic\x18\x01 \x01(\x01H\x00R\tstatistic\x88\x01\x01\x12\x1b\n" +
 	"\x06centre\x18\x02 \x01(\x01H\x01R\x06centre\x88\x01\x01\x12\x19\n" +
@@ -931,7 +954,8 @@ const file_limitary_v1_evaluation_proto_rawDesc = "" +
 	"\fupper_action\x18\x05 \x01(\x01H\x04R\vupperAction\x88\x01\x01\x12(\n" +
 	"\rlower_warning\x18\x06 \x01(\x01H\x05R\flowerWarning\x88\x01\x01\x12(\n" +
 	"\rupper_warning\x18\a \x01(\x01H\x06R\fupperWarning\x88\x01\x01\x12$\n" +
-	"\x04hits\x18\b \x03(\v2\x10.limitary.v1.HitR\x04hitsB\f\n" +
+	"\x04hits\x18\b \x03(\v2\x10.limitary.v1.HitR\x04hits\x126\n" +
+	"\boriginal\x18\t \x01(\v2\x1a.limitary.v1.OriginalScaleR\boriginalB\f\n" +
 	"\n" +
 	"_statisticB\t\n" +
 	"\a_centreB\b\n" +
@@ -946,14 +970,15 @@ const file_limitary_v1_evaluation_proto_rawDesc = "" +
 	"\rSTANDING_LOOK\x10\x02\x12\x10\n" +
 	"\fSTANDING_ACT\x10\x03\x12\x11\n" +
 	"\rSTANDING_STOP\x10\x04\x12\x17\n" +
-	"\x13STANDING_NOT_JUDGED\x10\x05*\xf2\x01\n" +
+	"\x13STANDING_NOT_JUDGED\x10\x05*\x92\x02\n" +
 	"\x0fNotJudgedReason\x12!\n" +
 	"\x1dNOT_JUDGED_REASON_UNSPECIFIED\x10\x00\x12\x1f\n" +
 	"\x1bNOT_JUDGED_REASON_NO_RESULT\x10\x01\x12)\n" +
 	"%NOT_JUDGED_REASON_NO_VERSION_IN_FORCE\x10\x02\x12&\n" +
 	"\"NOT_JUDGED_REASON_TOO_FEW_READINGS\x10\x03\x12*\n" +
 	"&NOT_JUDGED_REASON_BOUND_PROVES_NOTHING\x10\x04\x12\x1c\n" +
-	"\x18NOT_JUDGED_REASON_VOIDED\x10\x05*1\n" +
+	"\x18NOT_JUDGED_REASON_VOIDED\x10\x05\x12\x1e\n" +
+	"\x1aNOT_JUDGED_REASON_NO_SCALE\x10\x06*1\n" +
 	"\x06Detail\x12\x16\n" +
 	"\x12DETAIL_UNSPECIFIED\x10\x00\x12\x0f\n" +
 	"\vDETAIL_FULL\x10\x01B%Z#limitary/api/limitary/v1;limitaryv1b\x06proto3"
@@ -986,36 +1011,40 @@ var file_limitary_v1_evaluation_proto_goTypes = []any{
 	(*TraceVerdict)(nil),          // 10: limitary.v1.TraceVerdict
 	(ChartKind)(0),                // 11: limitary.v1.ChartKind
 	(*TraceLimits)(nil),           // 12: limitary.v1.TraceLimits
-	(*timestamppb.Timestamp)(nil), // 13: google.protobuf.Timestamp
-	(*Series)(nil),                // 14: limitary.v1.Series
-	(*Points)(nil),                // 15: limitary.v1.Points
-	(*Hit)(nil),                   // 16: limitary.v1.Hit
+	(*Model)(nil),                 // 13: limitary.v1.Model
+	(*timestamppb.Timestamp)(nil), // 14: google.protobuf.Timestamp
+	(*Series)(nil),                // 15: limitary.v1.Series
+	(*Points)(nil),                // 16: limitary.v1.Points
+	(*Hit)(nil),                   // 17: limitary.v1.Hit
+	(*OriginalScale)(nil),         // 18: limitary.v1.OriginalScale
 }
 var file_limitary_v1_evaluation_proto_depIdxs = []int32{
 	11, // 0: limitary.v1.InlineLimits.kind:type_name -> limitary.v1.ChartKind
 	12, // 1: limitary.v1.InlineLimits.location:type_name -> limitary.v1.TraceLimits
 	12, // 2: limitary.v1.InlineLimits.dispersion:type_name -> limitary.v1.TraceLimits
-	13, // 3: limitary.v1.ByChart.at:type_name -> google.protobuf.Timestamp
-	4,  // 4: limitary.v1.Evaluation.chart:type_name -> limitary.v1.ByChart
-	3,  // 5: limitary.v1.Evaluation.inline:type_name -> limitary.v1.InlineLimits
-	14, // 6: limitary.v1.Evaluation.series:type_name -> limitary.v1.Series
-	15, // 7: limitary.v1.Evaluation.points:type_name -> limitary.v1.Points
-	5,  // 8: limitary.v1.EvaluateBatchRequest.evaluations:type_name -> limitary.v1.Evaluation
-	2,  // 9: limitary.v1.EvaluateBatchRequest.detail:type_name -> limitary.v1.Detail
-	8,  // 10: limitary.v1.EvaluateBatchResponse.evaluations:type_name -> limitary.v1.EvaluationResult
-	16, // 11: limitary.v1.EvaluationResult.hits:type_name -> limitary.v1.Hit
-	9,  // 12: limitary.v1.EvaluationResult.verdicts:type_name -> limitary.v1.PointVerdict
-	0,  // 13: limitary.v1.EvaluationResult.standing:type_name -> limitary.v1.Standing
-	0,  // 14: limitary.v1.PointVerdict.standing:type_name -> limitary.v1.Standing
-	1,  // 15: limitary.v1.PointVerdict.reason:type_name -> limitary.v1.NotJudgedReason
-	10, // 16: limitary.v1.PointVerdict.location:type_name -> limitary.v1.TraceVerdict
-	10, // 17: limitary.v1.PointVerdict.dispersion:type_name -> limitary.v1.TraceVerdict
-	16, // 18: limitary.v1.TraceVerdict.hits:type_name -> limitary.v1.Hit
-	19, // [19:19] is the sub-list for method output_type
-	19, // [19:19] is the sub-list for method input_type
-	19, // [19:19] is the sub-list for extension type_name
-	19, // [19:19] is the sub-list for extension extendee
-	0,  // [0:19] is the sub-list for field type_name
+	13, // 3: limitary.v1.InlineLimits.model:type_name -> limitary.v1.Model
+	14, // 4: limitary.v1.ByChart.at:type_name -> google.protobuf.Timestamp
+	4,  // 5: limitary.v1.Evaluation.chart:type_name -> limitary.v1.ByChart
+	3,  // 6: limitary.v1.Evaluation.inline:type_name -> limitary.v1.InlineLimits
+	15, // 7: limitary.v1.Evaluation.series:type_name -> limitary.v1.Series
+	16, // 8: limitary.v1.Evaluation.points:type_name -> limitary.v1.Points
+	5,  // 9: limitary.v1.EvaluateBatchRequest.evaluations:type_name -> limitary.v1.Evaluation
+	2,  // 10: limitary.v1.EvaluateBatchRequest.detail:type_name -> limitary.v1.Detail
+	8,  // 11: limitary.v1.EvaluateBatchResponse.evaluations:type_name -> limitary.v1.EvaluationResult
+	17, // 12: limitary.v1.EvaluationResult.hits:type_name -> limitary.v1.Hit
+	9,  // 13: limitary.v1.EvaluationResult.verdicts:type_name -> limitary.v1.PointVerdict
+	0,  // 14: limitary.v1.EvaluationResult.standing:type_name -> limitary.v1.Standing
+	0,  // 15: limitary.v1.PointVerdict.standing:type_name -> limitary.v1.Standing
+	1,  // 16: limitary.v1.PointVerdict.reason:type_name -> limitary.v1.NotJudgedReason
+	10, // 17: limitary.v1.PointVerdict.location:type_name -> limitary.v1.TraceVerdict
+	10, // 18: limitary.v1.PointVerdict.dispersion:type_name -> limitary.v1.TraceVerdict
+	17, // 19: limitary.v1.TraceVerdict.hits:type_name -> limitary.v1.Hit
+	18, // 20: limitary.v1.TraceVerdict.original:type_name -> limitary.v1.OriginalScale
+	21, // [21:21] is the sub-list for method output_type
+	21, // [21:21] is the sub-list for method input_type
+	21, // [21:21] is the sub-list for extension type_name
+	21, // [21:21] is the sub-list for extension extendee
+	0,  // [0:21] is the sub-list for field type_name
 }
 
 func init() { file_limitary_v1_evaluation_proto_init() }

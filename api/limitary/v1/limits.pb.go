@@ -35,21 +35,49 @@ const (
 	ChartKind_CHART_KIND_XBAR_R ChartKind = 2
 	// Subgroup means and standard deviations.
 	ChartKind_CHART_KIND_XBAR_S ChartKind = 3
+	// Means of analytical runs, whose sigma has a part between runs and one within, and standard deviations within runs.
+	ChartKind_CHART_KIND_RUN_MEANS ChartKind = 4
+	// Fraction of nonconforming items, samples of any size.
+	ChartKind_CHART_KIND_P ChartKind = 5
+	// Number of nonconforming items, samples of one size, which is the subgroup size.
+	ChartKind_CHART_KIND_NP ChartKind = 6
+	// Nonconformities in one inspection unit.
+	ChartKind_CHART_KIND_C ChartKind = 7
+	// Nonconformities per inspection unit, samples of any size.
+	ChartKind_CHART_KIND_U ChartKind = 8
+	// Range of replicate readings of one sample.
+	ChartKind_CHART_KIND_DUPLICATE_RANGE ChartKind = 9
+	// That range in percent of the mean.
+	ChartKind_CHART_KIND_RELATIVE_RANGE ChartKind = 10
 )
 
 // Enum value maps for ChartKind.
 var (
 	ChartKind_name = map[int32]string{
-		0: "CHART_KIND_UNSPECIFIED",
-		1: "CHART_KIND_INDIVIDUALS",
-		2: "CHART_KIND_XBAR_R",
-		3: "CHART_KIND_XBAR_S",
+		0:  "CHART_KIND_UNSPECIFIED",
+		1:  "CHART_KIND_INDIVIDUALS",
+		2:  "CHART_KIND_XBAR_R",
+		3:  "CHART_KIND_XBAR_S",
+		4:  "CHART_KIND_RUN_MEANS",
+		5:  "CHART_KIND_P",
+		6:  "CHART_KIND_NP",
+		7:  "CHART_KIND_C",
+		8:  "CHART_KIND_U",
+		9:  "CHART_KIND_DUPLICATE_RANGE",
+		10: "CHART_KIND_RELATIVE_RANGE",
 	}
 	ChartKind_value = map[string]int32{
-		"CHART_KIND_UNSPECIFIED": 0,
-		"CHART_KIND_INDIVIDUALS": 1,
-		"CHART_KIND_XBAR_R":      2,
-		"CHART_KIND_XBAR_S":      3,
+		"CHART_KIND_UNSPECIFIED":     0,
+		"CHART_KIND_INDIVIDUALS":     1,
+		"CHART_KIND_XBAR_R":          2,
+		"CHART_KIND_XBAR_S":          3,
+		"CHART_KIND_RUN_MEANS":       4,
+		"CHART_KIND_P":               5,
+		"CHART_KIND_NP":              6,
+		"CHART_KIND_C":               7,
+		"CHART_KIND_U":               8,
+		"CHART_KIND_DUPLICATE_RANGE": 9,
+		"CHART_KIND_RELATIVE_RANGE":  10,
 	}
 )
 
@@ -145,6 +173,109 @@ func (Basis) EnumDescriptor() ([]byte, []int) {
 	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{1}
 }
 
+// How the lines of counts follow from their mean.
+type CountMethod int32
+
+const (
+	CountMethod_COUNT_METHOD_UNSPECIFIED CountMethod = 0
+	// At multiples of sigma.
+	CountMethod_COUNT_METHOD_NORMAL CountMethod = 1
+	// At the whole counts that leave at most 0.00135 (action) or 0.02275 (warning) beyond them on one side.
+	CountMethod_COUNT_METHOD_EXACT CountMethod = 2
+)
+
+// Enum value maps for CountMethod.
+var (
+	CountMethod_name = map[int32]string{
+		0: "COUNT_METHOD_UNSPECIFIED",
+		1: "COUNT_METHOD_NORMAL",
+		2: "COUNT_METHOD_EXACT",
+	}
+	CountMethod_value = map[string]int32{
+		"COUNT_METHOD_UNSPECIFIED": 0,
+		"COUNT_METHOD_NORMAL":      1,
+		"COUNT_METHOD_EXACT":       2,
+	}
+)
+
+func (x CountMethod) Enum() *CountMethod {
+	p := new(CountMethod)
+	*p = x
+	return p
+}
+
+func (x CountMethod) String() string {
+	return protoimpl.X.EnumStringOf(x.Descriptor(), protoreflect.EnumNumber(x))
+}
+
+func (CountMethod) Descriptor() protoreflect.EnumDescriptor {
+	return file_limitary_v1_limits_proto_enumTypes[2].Descriptor()
+}
+
+func (CountMethod) Type() protoreflect.EnumType {
+	return &file_limitary_v1_limits_proto_enumTypes[2]
+}
+
+func (x CountMethod) Number() protoreflect.EnumNumber {
+	return protoreflect.EnumNumber(x)
+}
+
+// Deprecated: Use CountMethod.Descriptor instead.
+func (CountMethod) EnumDescriptor() ([]byte, []int) {
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{2}
+}
+
+type TransformKind int32
+
+const (
+	// Readings are judged as they are.
+	TransformKind_TRANSFORM_KIND_UNSPECIFIED TransformKind = 0
+	// Natural logarithm.
+	TransformKind_TRANSFORM_KIND_LOG         TransformKind = 1
+	TransformKind_TRANSFORM_KIND_SQUARE_ROOT TransformKind = 2
+)
+
+// Enum value maps for TransformKind.
+var (
+	TransformKind_name = map[int32]string{
+		0: "TRANSFORM_KIND_UNSPECIFIED",
+		1: "TRANSFORM_KIND_LOG",
+		2: "TRANSFORM_KIND_SQUARE_ROOT",
+	}
+	TransformKind_value = map[string]int32{
+		"TRANSFORM_KIND_UNSPECIFIED": 0,
+		"TRANSFORM_KIND_LOG":         1,
+		"TRANSFORM_KIND_SQUARE_ROOT": 2,
+	}
+)
+
+func (x TransformKind) Enum() *TransformKind {
+	p := new(TransformKind)
+	*p = x
+	return p
+}
+
+func (x TransformKind) String() string {
+	return protoimpl.X.EnumStringOf(x.Descriptor(), protoreflect.EnumNumber(x))
+}
+
+func (TransformKind) Descriptor() protoreflect.EnumDescriptor {
+	return file_limitary_v1_limits_proto_enumTypes[3].Descriptor()
+}
+
+func (TransformKind) Type() protoreflect.EnumType {
+	return &file_limitary_v1_limits_proto_enumTypes[3]
+}
+
+func (x TransformKind) Number() protoreflect.EnumNumber {
+	return protoreflect.EnumNumber(x)
+}
+
+// Deprecated: Use TransformKind.Descriptor instead.
+func (TransformKind) EnumDescriptor() ([]byte, []int) {
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{3}
+}
+
 // How process sigma is estimated. Unspecified takes the default of the kind.
 type Estimator int32
 
@@ -197,11 +328,11 @@ func (x Estimator) String() string {
 }
 
 func (Estimator) Descriptor() protoreflect.EnumDescriptor {
-	return file_limitary_v1_limits_proto_enumTypes[2].Descriptor()
+	return file_limitary_v1_limits_proto_enumTypes[4].Descriptor()
 }
 
 func (Estimator) Type() protoreflect.EnumType {
-	return &file_limitary_v1_limits_proto_enumTypes[2]
+	return &file_limitary_v1_limits_proto_enumTypes[4]
 }
 
 func (x Estimator) Number() protoreflect.EnumNumber {
@@ -210,7 +341,7 @@ func (x Estimator) Number() protoreflect.EnumNumber {
 
 // Deprecated: Use Estimator.Descriptor instead.
 func (Estimator) EnumDescriptor() ([]byte, []int) {
-	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{2}
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{4}
 }
 
 // Where a centre or a sigma comes from.
@@ -248,11 +379,11 @@ func (x Origin) String() string {
 }
 
 func (Origin) Descriptor() protoreflect.EnumDescriptor {
-	return file_limitary_v1_limits_proto_enumTypes[3].Descriptor()
+	return file_limitary_v1_limits_proto_enumTypes[5].Descriptor()
 }
 
 func (Origin) Type() protoreflect.EnumType {
-	return &file_limitary_v1_limits_proto_enumTypes[3]
+	return &file_limitary_v1_limits_proto_enumTypes[5]
 }
 
 func (x Origin) Number() protoreflect.EnumNumber {
@@ -261,7 +392,217 @@ func (x Origin) Number() protoreflect.EnumNumber {
 
 // Deprecated: Use Origin.Descriptor instead.
 func (Origin) EnumDescriptor() ([]byte, []int) {
-	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{3}
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{5}
+}
+
+// One side of a chart that is watched.
+type WatchedSide int32
+
+const (
+	WatchedSide_WATCHED_SIDE_UNSPECIFIED WatchedSide = 0
+	WatchedSide_WATCHED_SIDE_UPPER       WatchedSide = 1
+	WatchedSide_WATCHED_SIDE_LOWER       WatchedSide = 2
+)
+
+// Enum value maps for WatchedSide.
+var (
+	WatchedSide_name = map[int32]string{
+		0: "WATCHED_SIDE_UNSPECIFIED",
+		1: "WATCHED_SIDE_UPPER",
+		2: "WATCHED_SIDE_LOWER",
+	}
+	WatchedSide_value = map[string]int32{
+		"WATCHED_SIDE_UNSPECIFIED": 0,
+		"WATCHED_SIDE_UPPER":       1,
+		"WATCHED_SIDE_LOWER":       2,
+	}
+)
+
+func (x WatchedSide) Enum() *WatchedSide {
+	p := new(WatchedSide)
+	*p = x
+	return p
+}
+
+func (x WatchedSide) String() string {
+	return protoimpl.X.EnumStringOf(x.Descriptor(), protoreflect.EnumNumber(x))
+}
+
+func (WatchedSide) Descriptor() protoreflect.EnumDescriptor {
+	return file_limitary_v1_limits_proto_enumTypes[6].Descriptor()
+}
+
+func (WatchedSide) Type() protoreflect.EnumType {
+	return &file_limitary_v1_limits_proto_enumTypes[6]
+}
+
+func (x WatchedSide) Number() protoreflect.EnumNumber {
+	return protoreflect.EnumNumber(x)
+}
+
+// Deprecated: Use WatchedSide.Descriptor instead.
+func (WatchedSide) EnumDescriptor() ([]byte, []int) {
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{6}
+}
+
+// How counts may vary more between samples than counting explains; both need normal lines.
+type ExtraVariation int32
+
+const (
+	ExtraVariation_EXTRA_VARIATION_UNSPECIFIED ExtraVariation = 0
+	// One factor on every sigma, from the moving ranges of the standardised counts (Laney 2002).
+	ExtraVariation_EXTRA_VARIATION_FACTOR ExtraVariation = 1
+	// One variance between samples, added to that of counting.
+	ExtraVariation_EXTRA_VARIATION_BETWEEN_SAMPLES ExtraVariation = 2
+)
+
+// Enum value maps for ExtraVariation.
+var (
+	ExtraVariation_name = map[int32]string{
+		0: "EXTRA_VARIATION_UNSPECIFIED",
+		1: "EXTRA_VARIATION_FACTOR",
+		2: "EXTRA_VARIATION_BETWEEN_SAMPLES",
+	}
+	ExtraVariation_value = map[string]int32{
+		"EXTRA_VARIATION_UNSPECIFIED":     0,
+		"EXTRA_VARIATION_FACTOR":          1,
+		"EXTRA_VARIATION_BETWEEN_SAMPLES": 2,
+	}
+)
+
+func (x ExtraVariation) Enum() *ExtraVariation {
+	p := new(ExtraVariation)
+	*p = x
+	return p
+}
+
+func (x ExtraVariation) String() string {
+	return protoimpl.X.EnumStringOf(x.Descriptor(), protoreflect.EnumNumber(x))
+}
+
+func (ExtraVariation) Descriptor() protoreflect.EnumDescriptor {
+	return file_limitary_v1_limits_proto_enumTypes[7].Descriptor()
+}
+
+func (ExtraVariation) Type() protoreflect.EnumType {
+	return &file_limitary_v1_limits_proto_enumTypes[7]
+}
+
+func (x ExtraVariation) Number() protoreflect.EnumNumber {
+	return protoreflect.EnumNumber(x)
+}
+
+// Deprecated: Use ExtraVariation.Descriptor instead.
+func (ExtraVariation) EnumDescriptor() ([]byte, []int) {
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{7}
+}
+
+type ChangeDecision int32
+
+const (
+	ChangeDecision_CHANGE_DECISION_UNSPECIFIED     ChangeDecision = 0
+	ChangeDecision_CHANGE_DECISION_KEEP            ChangeDecision = 1
+	ChangeDecision_CHANGE_DECISION_CHANGE          ChangeDecision = 2
+	ChangeDecision_CHANGE_DECISION_NOT_ENOUGH_DATA ChangeDecision = 3
+)
+
+// Enum value maps for ChangeDecision.
+var (
+	ChangeDecision_name = map[int32]string{
+		0: "CHANGE_DECISION_UNSPECIFIED",
+		1: "CHANGE_DECISION_KEEP",
+		2: "CHANGE_DECISION_CHANGE",
+		3: "CHANGE_DECISION_NOT_ENOUGH_DATA",
+	}
+	ChangeDecision_value = map[string]int32{
+		"CHANGE_DECISION_UNSPECIFIED":     0,
+		"CHANGE_DECISION_KEEP":            1,
+		"CHANGE_DECISION_CHANGE":          2,
+		"CHANGE_DECISION_NOT_ENOUGH_DATA": 3,
+	}
+)
+
+func (x ChangeDecision) Enum() *ChangeDecision {
+	p := new(ChangeDecision)
+	*p = x
+	return p
+}
+
+func (x ChangeDecision) String() string {
+	return protoimpl.X.EnumStringOf(x.Descriptor(), protoreflect.EnumNumber(x))
+}
+
+func (ChangeDecision) Descriptor() protoreflect.EnumDescriptor {
+	return file_limitary_v1_limits_proto_enumTypes[8].Descriptor()
+}
+
+func (ChangeDecision) Type() protoreflect.EnumType {
+	return &file_limitary_v1_limits_proto_enumTypes[8]
+}
+
+func (x ChangeDecision) Number() protoreflect.EnumNumber {
+	return protoreflect.EnumNumber(x)
+}
+
+// Deprecated: Use ChangeDecision.Descriptor instead.
+func (ChangeDecision) EnumDescriptor() ([]byte, []int) {
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{8}
+}
+
+type DiagnosticOutcome int32
+
+const (
+	DiagnosticOutcome_DIAGNOSTIC_OUTCOME_UNSPECIFIED   DiagnosticOutcome = 0
+	DiagnosticOutcome_DIAGNOSTIC_OUTCOME_NOTHING_FOUND DiagnosticOutcome = 1
+	DiagnosticOutcome_DIAGNOSTIC_OUTCOME_FOUND         DiagnosticOutcome = 2
+	// Not made: something in the data makes its level meaningless.
+	DiagnosticOutcome_DIAGNOSTIC_OUTCOME_VOID            DiagnosticOutcome = 3
+	DiagnosticOutcome_DIAGNOSTIC_OUTCOME_NOT_ENOUGH_DATA DiagnosticOutcome = 4
+)
+
+// Enum value maps for DiagnosticOutcome.
+var (
+	DiagnosticOutcome_name = map[int32]string{
+		0: "DIAGNOSTIC_OUTCOME_UNSPECIFIED",
+		1: "DIAGNOSTIC_OUTCOME_NOTHING_FOUND",
+		2: "DIAGNOSTIC_OUTCOME_FOUND",
+		3: "DIAGNOSTIC_OUTCOME_VOID",
+		4: "DIAGNOSTIC_OUTCOME_NOT_ENOUGH_DATA",
+	}
+	DiagnosticOutcome_value = map[string]int32{
+		"DIAGNOSTIC_OUTCOME_UNSPECIFIED":     0,
+		"DIAGNOSTIC_OUTCOME_NOTHING_FOUND":   1,
+		"DIAGNOSTIC_OUTCOME_FOUND":           2,
+		"DIAGNOSTIC_OUTCOME_VOID":            3,
+		"DIAGNOSTIC_OUTCOME_NOT_ENOUGH_DATA": 4,
+	}
+)
+
+func (x DiagnosticOutcome) Enum() *DiagnosticOutcome {
+	p := new(DiagnosticOutcome)
+	*p = x
+	return p
+}
+
+func (x DiagnosticOutcome) String() string {
+	return protoimpl.X.EnumStringOf(x.Descriptor(), protoreflect.EnumNumber(x))
+}
+
+func (DiagnosticOutcome) Descriptor() protoreflect.EnumDescriptor {
+	return file_limitary_v1_limits_proto_enumTypes[9].Descriptor()
+}
+
+func (DiagnosticOutcome) Type() protoreflect.EnumType {
+	return &file_limitary_v1_limits_proto_enumTypes[9]
+}
+
+func (x DiagnosticOutcome) Number() protoreflect.EnumNumber {
+	return protoreflect.EnumNumber(x)
+}
+
+// Deprecated: Use DiagnosticOutcome.Descriptor instead.
+func (DiagnosticOutcome) EnumDescriptor() ([]byte, []int) {
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{9}
 }
 
 // One action or warning line.
@@ -327,6 +668,438 @@ func (x *Line) GetTail() float64 {
 	return 0
 }
 
+// What the scale of a point follows from besides process sigma.
+type Model struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// Standard deviation between runs (run_means, in the chart's unit), or of the true fraction or rate between samples (p
+	// and u); 0 is none.
+	BetweenSigma float64 `protobuf:"fixed64,1,opt,name=between_sigma,json=betweenSigma,proto3" json:"between_sigma,omitempty"`
+	// Factor on the sigma of counts; 0 is none.
+	Inflation   float64     `protobuf:"fixed64,2,opt,name=inflation,proto3" json:"inflation,omitempty"`
+	CountMethod CountMethod `protobuf:"varint,3,opt,name=count_method,json=countMethod,proto3,enum=limitary.v1.CountMethod" json:"count_method,omitempty"`
+	// The sample size for which the lines of a chart of counts are published; each point has its own.
+	Inspected float64    `protobuf:"fixed64,4,opt,name=inspected,proto3" json:"inspected,omitempty"`
+	Transform *Transform `protobuf:"bytes,5,opt,name=transform,proto3" json:"transform,omitempty"`
+	// Readings of these materials count as (reading - reference)/sigma.
+	Levels        []*Level         `protobuf:"bytes,6,rep,name=levels,proto3" json:"levels,omitempty"`
+	Spread        *DuplicateSpread `protobuf:"bytes,7,opt,name=spread,proto3" json:"spread,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *Model) Reset() {
+	*x = Model{}
+	mi := &file_limitary_v1_limits_proto_msgTypes[1]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *Model) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*Model) ProtoMessage() {}
+
+func (x *Model) ProtoReflect() protoreflect.Message {
+	mi := &file_limitary_v1_limits_proto_msgTypes[1]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use Model.ProtoReflect.Descriptor instead.
+func (*Model) Descriptor() ([]byte, []int) {
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{1}
+}
+
+func (x *Model) GetBetweenSigma() float64 {
+	if x != nil {
+		return x.BetweenSigma
+	}
+	return 0
+}
+
+func (x *Model) GetInflation() float64 {
+	if x != nil {
+		return x.Inflation
+	}
+	return 0
+}
+
+func (x *Model) GetCountMethod() CountMethod {
+	if x != nil {
+		return x.CountMethod
+	}
+	return CountMethod_COUNT_METHOD_UNSPECIFIED
+}
+
+func (x *Model) GetInspected() float64 {
+	if x != nil {
+		return x.Inspected
+	}
+	return 0
+}
+
+func (x *Model) GetTransform() *Transform {
+	if x != nil {
+		return x.Transform
+	}
+	return nil
+}
+
+func (x *Model) GetLevels() []*Level {
+	if x != nil {
+		return x.Levels
+	}
+	return nil
+}
+
+func (x *Model) GetSpread() *DuplicateSpread {
+	if x != nil {
+		return x.Spread
+	}
+	return nil
+}
+
+// The scale on which readings are judged. Centre, sigma and lines of the location trace are on that scale.
+type Transform struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	Kind  TransformKind          `protobuf:"varint,1,opt,name=kind,proto3,enum=limitary.v1.TransformKind" json:"kind,omitempty"`
+	// Added to every reading before, in the chart's unit.
+	Offset        float64 `protobuf:"fixed64,2,opt,name=offset,proto3" json:"offset,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *Transform) Reset() {
+	*x = Transform{}
+	mi := &file_limitary_v1_limits_proto_msgTypes[2]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *Transform) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*Transform) ProtoMessage() {}
+
+func (x *Transform) ProtoReflect() protoreflect.Message {
+	mi := &file_limitary_v1_limits_proto_msgTypes[2]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use Transform.ProtoReflect.Descriptor instead.
+func (*Transform) Descriptor() ([]byte, []int) {
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{2}
+}
+
+func (x *Transform) GetKind() TransformKind {
+	if x != nil {
+		return x.Kind
+	}
+	return TransformKind_TRANSFORM_KIND_UNSPECIFIED
+}
+
+func (x *Transform) GetOffset() float64 {
+	if x != nil {
+		return x.Offset
+	}
+	return 0
+}
+
+// One material of a standardised track.
+type Level struct {
+	state     protoimpl.MessageState `protogen:"open.v1"`
+	Material  string                 `protobuf:"bytes,1,opt,name=material,proto3" json:"material,omitempty"`
+	Reference float64                `protobuf:"fixed64,2,opt,name=reference,proto3" json:"reference,omitempty"`
+	// Of a single reading.
+	Sigma         float64 `protobuf:"fixed64,3,opt,name=sigma,proto3" json:"sigma,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *Level) Reset() {
+	*x = Level{}
+	mi := &file_limitary_v1_limits_proto_msgTypes[3]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *Level) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*Level) ProtoMessage() {}
+
+func (x *Level) ProtoReflect() protoreflect.Message {
+	mi := &file_limitary_v1_limits_proto_msgTypes[3]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use Level.ProtoReflect.Descriptor instead.
+func (*Level) Descriptor() ([]byte, []int) {
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{3}
+}
+
+func (x *Level) GetMaterial() string {
+	if x != nil {
+		return x.Material
+	}
+	return ""
+}
+
+func (x *Level) GetReference() float64 {
+	if x != nil {
+		return x.Reference
+	}
+	return 0
+}
+
+func (x *Level) GetSigma() float64 {
+	if x != nil {
+		return x.Sigma
+	}
+	return 0
+}
+
+// The standard deviation of a single reading of duplicates by their mean.
+type DuplicateSpread struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// By the means from which they hold; the first holds below as well.
+	Bands []*SpreadBand `protobuf:"bytes,1,rep,name=bands,proto3" json:"bands,omitempty"`
+	// Or the root of s0² + (b·mean)².
+	S0 float64 `protobuf:"fixed64,2,opt,name=s0,proto3" json:"s0,omitempty"`
+	B  float64 `protobuf:"fixed64,3,opt,name=b,proto3" json:"b,omitempty"`
+	// A relative_range chart plots the plain range below this mean, with absolute_sigma.
+	AbsoluteBelow float64 `protobuf:"fixed64,4,opt,name=absolute_below,json=absoluteBelow,proto3" json:"absolute_below,omitempty"`
+	AbsoluteSigma float64 `protobuf:"fixed64,5,opt,name=absolute_sigma,json=absoluteSigma,proto3" json:"absolute_sigma,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *DuplicateSpread) Reset() {
+	*x = DuplicateSpread{}
+	mi := &file_limitary_v1_limits_proto_msgTypes[4]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *DuplicateSpread) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*DuplicateSpread) ProtoMessage() {}
+
+func (x *DuplicateSpread) ProtoReflect() protoreflect.Message {
+	mi := &file_limitary_v1_limits_proto_msgTypes[4]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use DuplicateSpread.ProtoReflect.Descriptor instead.
+func (*DuplicateSpread) Descriptor() ([]byte, []int) {
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{4}
+}
+
+func (x *DuplicateSpread) GetBands() []*SpreadBand {
+	if x != nil {
+		return x.Bands
+	}
+	return nil
+}
+
+func (x *DuplicateSpread) GetS0() float64 {
+	if x != nil {
+		return x.S0
+	}
+	return 0
+}
+
+func (x *DuplicateSpread) GetB() float64 {
+	if x != nil {
+		return x.B
+	}
+	return 0
+}
+
+func (x *DuplicateSpread) GetAbsoluteBelow() float64 {
+	if x != nil {
+		return x.AbsoluteBelow
+	}
+	return 0
+}
+
+func (x *DuplicateSpread) GetAbsoluteSigma() float64 {
+	if x != nil {
+		return x.AbsoluteSigma
+	}
+	return 0
+}
+
+type SpreadBand struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	From  float64                `protobuf:"fixed64,1,opt,name=from,proto3" json:"from,omitempty"`
+	// In percent of the mean on a relative_range chart.
+	Sigma         float64 `protobuf:"fixed64,2,opt,name=sigma,proto3" json:"sigma,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *SpreadBand) Reset() {
+	*x = SpreadBand{}
+	mi := &file_limitary_v1_limits_proto_msgTypes[5]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *SpreadBand) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*SpreadBand) ProtoMessage() {}
+
+func (x *SpreadBand) ProtoReflect() protoreflect.Message {
+	mi := &file_limitary_v1_limits_proto_msgTypes[5]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use SpreadBand.ProtoReflect.Descriptor instead.
+func (*SpreadBand) Descriptor() ([]byte, []int) {
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{5}
+}
+
+func (x *SpreadBand) GetFrom() float64 {
+	if x != nil {
+		return x.From
+	}
+	return 0
+}
+
+func (x *SpreadBand) GetSigma() float64 {
+	if x != nil {
+		return x.Sigma
+	}
+	return 0
+}
+
+// Places of a trace in the chart's unit, where it is judged on another scale. The centre is then a median.
+type OriginalScale struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	Statistic     *float64               `protobuf:"fixed64,1,opt,name=statistic,proto3,oneof" json:"statistic,omitempty"`
+	Centre        *float64               `protobuf:"fixed64,2,opt,name=centre,proto3,oneof" json:"centre,omitempty"`
+	LowerAction   *float64               `protobuf:"fixed64,3,opt,name=lower_action,json=lowerAction,proto3,oneof" json:"lower_action,omitempty"`
+	UpperAction   *float64               `protobuf:"fixed64,4,opt,name=upper_action,json=upperAction,proto3,oneof" json:"upper_action,omitempty"`
+	LowerWarning  *float64               `protobuf:"fixed64,5,opt,name=lower_warning,json=lowerWarning,proto3,oneof" json:"lower_warning,omitempty"`
+	UpperWarning  *float64               `protobuf:"fixed64,6,opt,name=upper_warning,json=upperWarning,proto3,oneof" json:"upper_warning,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *OriginalScale) Reset() {
+	*x = OriginalScale{}
+	mi := &file_limitary_v1_limits_proto_msgTypes[6]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *OriginalScale) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*OriginalScale) ProtoMessage() {}
+
+func (x *OriginalScale) ProtoReflect() protoreflect.Message {
+	mi := &file_limitary_v1_limits_proto_msgTypes[6]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use OriginalScale.ProtoReflect.Descriptor instead.
+func (*OriginalScale) Descriptor() ([]byte, []int) {
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{6}
+}
+
+func (x *OriginalScale) GetStatistic() float64 {
+	if x != nil && x.Statistic != nil {
+		return *x.Statistic
+	}
+	return 0
+}
+
+func (x *OriginalScale) GetCentre() float64 {
+	if x != nil && x.Centre != nil {
+		return *x.Centre
+	}
+	return 0
+}
+
+func (x *OriginalScale) GetLowerAction() float64 {
+	if x != nil && x.LowerAction != nil {
+		return *x.LowerAction
+	}
+	return 0
+}
+
+func (x *OriginalScale) GetUpperAction() float64 {
+	if x != nil && x.UpperAction != nil {
+		return *x.UpperAction
+	}
+	return 0
+}
+
+func (x *OriginalScale) GetLowerWarning() float64 {
+	if x != nil && x.LowerWarning != nil {
+		return *x.LowerWarning
+	}
+	return 0
+}
+
+func (x *OriginalScale) GetUpperWarning() float64 {
+	if x != nil && x.UpperWarning != nil {
+		return *x.UpperWarning
+	}
+	return 0
+}
+
 // The limits and rules of one trace, in the unit of the plotted statistic.
 type TraceLimits struct {
 	state  protoimpl.MessageState `protogen:"open.v1"`
@@ -341,14 +1114,16 @@ type TraceLimits struct {
 	// beside them, the set they were taken from.
 	Rules []*RuleSpec `protobuf:"bytes,7,rep,name=rules,proto3" json:"rules,omitempty"`
 	// Id of a published set, such as "nelson-1984".
-	RuleSet       string `protobuf:"bytes,8,opt,name=rule_set,json=ruleSet,proto3" json:"rule_set,omitempty"`
+	RuleSet string `protobuf:"bytes,8,opt,name=rule_set,json=ruleSet,proto3" json:"rule_set,omitempty"`
+	// In an answer, on a transformed scale: the same in the chart's unit.
+	Original      *OriginalScale `protobuf:"bytes,9,opt,name=original,proto3" json:"original,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
 
 func (x *TraceLimits) Reset() {
 	*x = TraceLimits{}
-	mi := &file_limitary_v1_limits_proto_msgTypes[1]
+	mi := &file_limitary_v1_limits_proto_msgTypes[7]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -360,7 +1135,7 @@ func (x *TraceLimits) String() string {
 func (*TraceLimits) ProtoMessage() {}
 
 func (x *TraceLimits) ProtoReflect() protoreflect.Message {
-	mi := &file_limitary_v1_limits_proto_msgTypes[1]
+	mi := &file_limitary_v1_limits_proto_msgTypes[7]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -373,7 +1148,7 @@ func (x *TraceLimits) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use TraceLimits.ProtoReflect.Descriptor instead.
 func (*TraceLimits) Descriptor() ([]byte, []int) {
-	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{1}
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{7}
 }
 
 func (x *TraceLimits) GetCentre() float64 {
@@ -432,6 +1207,13 @@ func (x *TraceLimits) GetRuleSet() string {
 	return ""
 }
 
+func (x *TraceLimits) GetOriginal() *OriginalScale {
+	if x != nil {
+		return x.Original
+	}
+	return nil
+}
+
 // One subgroup or statistic.
 type Point struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
@@ -445,14 +1227,16 @@ type Point struct {
 	Centre *float64 `protobuf:"fixed64,4,opt,name=centre,proto3,oneof" json:"centre,omitempty"`
 	Sigma  *float64 `protobuf:"fixed64,5,opt,name=sigma,proto3,oneof" json:"sigma,omitempty"`
 	// A new segment starts here: no pattern and no moving range reaches back across it.
-	BreakBefore   bool `protobuf:"varint,6,opt,name=break_before,json=breakBefore,proto3" json:"break_before,omitempty"`
+	BreakBefore bool `protobuf:"varint,6,opt,name=break_before,json=breakBefore,proto3" json:"break_before,omitempty"`
+	// The level of a standardised track.
+	Material      string `protobuf:"bytes,7,opt,name=material,proto3" json:"material,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
 
 func (x *Point) Reset() {
 	*x = Point{}
-	mi := &file_limitary_v1_limits_proto_msgTypes[2]
+	mi := &file_limitary_v1_limits_proto_msgTypes[8]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -464,7 +1248,7 @@ func (x *Point) String() string {
 func (*Point) ProtoMessage() {}
 
 func (x *Point) ProtoReflect() protoreflect.Message {
-	mi := &file_limitary_v1_limits_proto_msgTypes[2]
+	mi := &file_limitary_v1_limits_proto_msgTypes[8]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -477,7 +1261,7 @@ func (x *Point) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Point.ProtoReflect.Descriptor instead.
 func (*Point) Descriptor() ([]byte, []int) {
-	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{2}
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{8}
 }
 
 func (x *Point) GetValue() isPoint_Value {
@@ -535,6 +1319,13 @@ func (x *Point) GetBreakBefore() bool {
 	return false
 }
 
+func (x *Point) GetMaterial() string {
+	if x != nil {
+		return x.Material
+	}
+	return ""
+}
+
 type isPoint_Value interface {
 	isPoint_Value()
 }
@@ -568,7 +1359,7 @@ type Readings struct {
 
 func (x *Readings) Reset() {
 	*x = Readings{}
-	mi := &file_limitary_v1_limits_proto_msgTypes[3]
+	mi := &file_limitary_v1_limits_proto_msgTypes[9]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -580,7 +1371,7 @@ func (x *Readings) String() string {
 func (*Readings) ProtoMessage() {}
 
 func (x *Readings) ProtoReflect() protoreflect.Message {
-	mi := &file_limitary_v1_limits_proto_msgTypes[3]
+	mi := &file_limitary_v1_limits_proto_msgTypes[9]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -593,7 +1384,7 @@ func (x *Readings) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Readings.ProtoReflect.Descriptor instead.
 func (*Readings) Descriptor() ([]byte, []int) {
-	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{3}
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{9}
 }
 
 func (x *Readings) GetValues() []float64 {
@@ -614,7 +1405,7 @@ type Count struct {
 
 func (x *Count) Reset() {
 	*x = Count{}
-	mi := &file_limitary_v1_limits_proto_msgTypes[4]
+	mi := &file_limitary_v1_limits_proto_msgTypes[10]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -626,7 +1417,7 @@ func (x *Count) String() string {
 func (*Count) ProtoMessage() {}
 
 func (x *Count) ProtoReflect() protoreflect.Message {
-	mi := &file_limitary_v1_limits_proto_msgTypes[4]
+	mi := &file_limitary_v1_limits_proto_msgTypes[10]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -639,7 +1430,7 @@ func (x *Count) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Count.ProtoReflect.Descriptor instead.
 func (*Count) Descriptor() ([]byte, []int) {
-	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{4}
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{10}
 }
 
 func (x *Count) GetNonconforming() float64 {
@@ -666,7 +1457,7 @@ type Points struct {
 
 func (x *Points) Reset() {
 	*x = Points{}
-	mi := &file_limitary_v1_limits_proto_msgTypes[5]
+	mi := &file_limitary_v1_limits_proto_msgTypes[11]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -678,7 +1469,7 @@ func (x *Points) String() string {
 func (*Points) ProtoMessage() {}
 
 func (x *Points) ProtoReflect() protoreflect.Message {
-	mi := &file_limitary_v1_limits_proto_msgTypes[5]
+	mi := &file_limitary_v1_limits_proto_msgTypes[11]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -691,7 +1482,7 @@ func (x *Points) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Points.ProtoReflect.Descriptor instead.
 func (*Points) Descriptor() ([]byte, []int) {
-	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{5}
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{11}
 }
 
 func (x *Points) GetPoints() []*Point {
@@ -711,7 +1502,7 @@ type Series struct {
 
 func (x *Series) Reset() {
 	*x = Series{}
-	mi := &file_limitary_v1_limits_proto_msgTypes[6]
+	mi := &file_limitary_v1_limits_proto_msgTypes[12]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -723,7 +1514,7 @@ func (x *Series) String() string {
 func (*Series) ProtoMessage() {}
 
 func (x *Series) ProtoReflect() protoreflect.Message {
-	mi := &file_limitary_v1_limits_proto_msgTypes[6]
+	mi := &file_limitary_v1_limits_proto_msgTypes[12]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -736,7 +1527,7 @@ func (x *Series) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Series.ProtoReflect.Descriptor instead.
 func (*Series) Descriptor() ([]byte, []int) {
-	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{6}
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{12}
 }
 
 func (x *Series) GetValues() []float64 {
@@ -759,7 +1550,7 @@ type FixedLines struct {
 
 func (x *FixedLines) Reset() {
 	*x = FixedLines{}
-	mi := &file_limitary_v1_limits_proto_msgTypes[7]
+	mi := &file_limitary_v1_limits_proto_msgTypes[13]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -771,7 +1562,7 @@ func (x *FixedLines) String() string {
 func (*FixedLines) ProtoMessage() {}
 
 func (x *FixedLines) ProtoReflect() protoreflect.Message {
-	mi := &file_limitary_v1_limits_proto_msgTypes[7]
+	mi := &file_limitary_v1_limits_proto_msgTypes[13]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -784,7 +1575,7 @@ func (x *FixedLines) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use FixedLines.ProtoReflect.Descriptor instead.
 func (*FixedLines) Descriptor() ([]byte, []int) {
-	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{7}
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{13}
 }
 
 func (x *FixedLines) GetLowerAction() *Line {
@@ -828,7 +1619,7 @@ type Exclusion struct {
 
 func (x *Exclusion) Reset() {
 	*x = Exclusion{}
-	mi := &file_limitary_v1_limits_proto_msgTypes[8]
+	mi := &file_limitary_v1_limits_proto_msgTypes[14]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -840,7 +1631,7 @@ func (x *Exclusion) String() string {
 func (*Exclusion) ProtoMessage() {}
 
 func (x *Exclusion) ProtoReflect() protoreflect.Message {
-	mi := &file_limitary_v1_limits_proto_msgTypes[8]
+	mi := &file_limitary_v1_limits_proto_msgTypes[14]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -853,7 +1644,7 @@ func (x *Exclusion) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Exclusion.ProtoReflect.Descriptor instead.
 func (*Exclusion) Descriptor() ([]byte, []int) {
-	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{8}
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{14}
 }
 
 func (x *Exclusion) GetPoint() int32 {
@@ -870,11 +1661,648 @@ func (x *Exclusion) GetReason() string {
 	return ""
 }
 
+// What limits of some kinds can be asked for.
+type KindOptions struct {
+	state     protoimpl.MessageState `protogen:"open.v1"`
+	Transform *Transform             `protobuf:"bytes,1,opt,name=transform,proto3" json:"transform,omitempty"`
+	// Of a standardised chart.
+	Levels []*Level `protobuf:"bytes,2,rep,name=levels,proto3" json:"levels,omitempty"`
+	// Only this side of the location trace has lines, and rules with sides watch it alone.
+	OneSided WatchedSide `protobuf:"varint,3,opt,name=one_sided,json=oneSided,proto3,enum=limitary.v1.WatchedSide" json:"one_sided,omitempty"`
+	// Given instead of estimated: the standard deviation between runs. run_means.
+	BetweenSigma *float64 `protobuf:"fixed64,4,opt,name=between_sigma,json=betweenSigma,proto3,oneof" json:"between_sigma,omitempty"`
+	// Unspecified: exact where the smallest expected count is below 9.
+	CountMethod    CountMethod    `protobuf:"varint,5,opt,name=count_method,json=countMethod,proto3,enum=limitary.v1.CountMethod" json:"count_method,omitempty"`
+	ExtraVariation ExtraVariation `protobuf:"varint,6,opt,name=extra_variation,json=extraVariation,proto3,enum=limitary.v1.ExtraVariation" json:"extra_variation,omitempty"`
+	// In place of the mean of counts that are all zero, in units of the centre.
+	MeanUpperBound *float64 `protobuf:"fixed64,7,opt,name=mean_upper_bound,json=meanUpperBound,proto3,oneof" json:"mean_upper_bound,omitempty"`
+	// Means from which each band of concentration holds. duplicate_range, relative_range.
+	BandFrom []float64 `protobuf:"fixed64,8,rep,packed,name=band_from,json=bandFrom,proto3" json:"band_from,omitempty"`
+	// Given instead of estimated: the sigma of each band.
+	BandSigma []float64 `protobuf:"fixed64,9,rep,packed,name=band_sigma,json=bandSigma,proto3" json:"band_sigma,omitempty"`
+	// Sigma of duplicates as the root of s0² + (b·mean)²; estimated unless both are given. duplicate_range.
+	SpreadFunction bool     `protobuf:"varint,10,opt,name=spread_function,json=spreadFunction,proto3" json:"spread_function,omitempty"`
+	S0             *float64 `protobuf:"fixed64,11,opt,name=s0,proto3,oneof" json:"s0,omitempty"`
+	B              *float64 `protobuf:"fixed64,12,opt,name=b,proto3,oneof" json:"b,omitempty"`
+	// Below this mean the plain range is plotted. relative_range.
+	AbsoluteBelow float64 `protobuf:"fixed64,13,opt,name=absolute_below,json=absoluteBelow,proto3" json:"absolute_below,omitempty"`
+	// Given instead of estimated: the sigma that holds there.
+	AbsoluteSigma *float64 `protobuf:"fixed64,14,opt,name=absolute_sigma,json=absoluteSigma,proto3,oneof" json:"absolute_sigma,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *KindOptions) Reset() {
+	*x = KindOptions{}
+	mi := &file_limitary_v1_limits_proto_msgTypes[15]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *KindOptions) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*KindOptions) ProtoMessage() {}
+
+func (x *KindOptions) ProtoReflect() protoreflect.Message {
+	mi := &file_limitary_v1_limits_proto_msgTypes[15]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use KindOptions.ProtoReflect.Descriptor instead.
+func (*KindOptions) Descriptor() ([]byte, []int) {
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{15}
+}
+
+func (x *KindOptions) GetTransform() *Transform {
+	if x != nil {
+		return x.Transform
+	}
+	return nil
+}
+
+func (x *KindOptions) GetLevels() []*Level {
+	if x != nil {
+		return x.Levels
+	}
+	return nil
+}
+
+func (x *KindOptions) GetOneSided() WatchedSide {
+	if x != nil {
+		return x.OneSided
+	}
+	return WatchedSide_WATCHED_SIDE_UNSPECIFIED
+}
+
+func (x *KindOptions) GetBetweenSigma() float64 {
+	if x != nil && x.BetweenSigma != nil {
+		return *x.BetweenSigma
+	}
+	return 0
+}
+
+func (x *KindOptions) GetCountMethod() CountMethod {
+	if x != nil {
+		return x.CountMethod
+	}
+	return CountMethod_COUNT_METHOD_UNSPECIFIED
+}
+
+func (x *KindOptions) GetExtraVariation() ExtraVariation {
+	if x != nil {
+		return x.ExtraVariation
+	}
+	return ExtraVariation_EXTRA_VARIATION_UNSPECIFIED
+}
+
+func (x *KindOptions) GetMeanUpperBound() float64 {
+	if x != nil && x.MeanUpperBound != nil {
+		return *x.MeanUpperBound
+	}
+	return 0
+}
+
+func (x *KindOptions) GetBandFrom() []float64 {
+	if x != nil {
+		return x.BandFrom
+	}
+	return nil
+}
+
+func (x *KindOptions) GetBandSigma() []float64 {
+	if x != nil {
+		return x.BandSigma
+	}
+	return nil
+}
+
+func (x *KindOptions) GetSpreadFunction() bool {
+	if x != nil {
+		return x.SpreadFunction
+	}
+	return false
+}
+
+func (x *KindOptions) GetS0() float64 {
+	if x != nil && x.S0 != nil {
+		return *x.S0
+	}
+	return 0
+}
+
+func (x *KindOptions) GetB() float64 {
+	if x != nil && x.B != nil {
+		return *x.B
+	}
+	return 0
+}
+
+func (x *KindOptions) GetAbsoluteBelow() float64 {
+	if x != nil {
+		return x.AbsoluteBelow
+	}
+	return 0
+}
+
+func (x *KindOptions) GetAbsoluteSigma() float64 {
+	if x != nil && x.AbsoluteSigma != nil {
+		return *x.AbsoluteSigma
+	}
+	return 0
+}
+
+// The limits in force, to be set against new data without a stored version.
+type InForce struct {
+	state        protoimpl.MessageState `protogen:"open.v1"`
+	Centre       float64                `protobuf:"fixed64,1,opt,name=centre,proto3" json:"centre,omitempty"`
+	ProcessSigma float64                `protobuf:"fixed64,2,opt,name=process_sigma,json=processSigma,proto3" json:"process_sigma,omitempty"`
+	// Targets have no sampling error of their own.
+	CentreGiven bool `protobuf:"varint,3,opt,name=centre_given,json=centreGiven,proto3" json:"centre_given,omitempty"`
+	SigmaGiven  bool `protobuf:"varint,4,opt,name=sigma_given,json=sigmaGiven,proto3" json:"sigma_given,omitempty"`
+	// Subgroups and readings behind them, and the degrees of freedom and name of the estimate of sigma.
+	N                int32     `protobuf:"varint,5,opt,name=n,proto3" json:"n,omitempty"`
+	Readings         int32     `protobuf:"varint,6,opt,name=readings,proto3" json:"readings,omitempty"`
+	DegreesOfFreedom float64   `protobuf:"fixed64,7,opt,name=degrees_of_freedom,json=degreesOfFreedom,proto3" json:"degrees_of_freedom,omitempty"`
+	Estimator        Estimator `protobuf:"varint,8,opt,name=estimator,proto3,enum=limitary.v1.Estimator" json:"estimator,omitempty"`
+	// From where on a difference matters; absent, 0.5 sigmas and a ratio of 1.25.
+	RelevantShiftSigmas *float64 `protobuf:"fixed64,9,opt,name=relevant_shift_sigmas,json=relevantShiftSigmas,proto3,oneof" json:"relevant_shift_sigmas,omitempty"`
+	RelevantSigmaRatio  *float64 `protobuf:"fixed64,10,opt,name=relevant_sigma_ratio,json=relevantSigmaRatio,proto3,oneof" json:"relevant_sigma_ratio,omitempty"`
+	// The comparison is made because of a signal; p is then not valid.
+	AfterSignal bool `protobuf:"varint,11,opt,name=after_signal,json=afterSignal,proto3" json:"after_signal,omitempty"`
+	// How often the limits were looked at in twelve months, this time included.
+	Looks int32 `protobuf:"varint,12,opt,name=looks,proto3" json:"looks,omitempty"`
+	// The standard deviation between runs, for run_means.
+	BetweenSigma  *float64 `protobuf:"fixed64,13,opt,name=between_sigma,json=betweenSigma,proto3,oneof" json:"between_sigma,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *InForce) Reset() {
+	*x = InForce{}
+	mi := &file_limitary_v1_limits_proto_msgTypes[16]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *InForce) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*InForce) ProtoMessage() {}
+
+func (x *InForce) ProtoReflect() protoreflect.Message {
+	mi := &file_limitary_v1_limits_proto_msgTypes[16]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use InForce.ProtoReflect.Descriptor instead.
+func (*InForce) Descriptor() ([]byte, []int) {
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{16}
+}
+
+func (x *InForce) GetCentre() float64 {
+	if x != nil {
+		return x.Centre
+	}
+	return 0
+}
+
+func (x *InForce) GetProcessSigma() float64 {
+	if x != nil {
+		return x.ProcessSigma
+	}
+	return 0
+}
+
+func (x *InForce) GetCentreGiven() bool {
+	if x != nil {
+		return x.CentreGiven
+	}
+	return false
+}
+
+func (x *InForce) GetSigmaGiven() bool {
+	if x != nil {
+		return x.SigmaGiven
+	}
+	return false
+}
+
+func (x *InForce) GetN() int32 {
+	if x != nil {
+		return x.N
+	}
+	return 0
+}
+
+func (x *InForce) GetReadings() int32 {
+	if x != nil {
+		return x.Readings
+	}
+	return 0
+}
+
+func (x *InForce) GetDegreesOfFreedom() float64 {
+	if x != nil {
+		return x.DegreesOfFreedom
+	}
+	return 0
+}
+
+func (x *InForce) GetEstimator() Estimator {
+	if x != nil {
+		return x.Estimator
+	}
+	return Estimator_ESTIMATOR_UNSPECIFIED
+}
+
+func (x *InForce) GetRelevantShiftSigmas() float64 {
+	if x != nil && x.RelevantShiftSigmas != nil {
+		return *x.RelevantShiftSigmas
+	}
+	return 0
+}
+
+func (x *InForce) GetRelevantSigmaRatio() float64 {
+	if x != nil && x.RelevantSigmaRatio != nil {
+		return *x.RelevantSigmaRatio
+	}
+	return 0
+}
+
+func (x *InForce) GetAfterSignal() bool {
+	if x != nil {
+		return x.AfterSignal
+	}
+	return false
+}
+
+func (x *InForce) GetLooks() int32 {
+	if x != nil {
+		return x.Looks
+	}
+	return 0
+}
+
+func (x *InForce) GetBetweenSigma() float64 {
+	if x != nil && x.BetweenSigma != nil {
+		return *x.BetweenSigma
+	}
+	return 0
+}
+
+// Whether limits in force should be kept, given results that are not in their basis.
+type ChangeTest struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// The version in force that was compared with; 0 where figures were sent.
+	Against int32 `protobuf:"varint,1,opt,name=against,proto3" json:"against,omitempty"`
+	// New results, and those left out: excluded, or in the basis of the version in force.
+	Results    int32 `protobuf:"varint,2,opt,name=results,proto3" json:"results,omitempty"`
+	Excluded   int32 `protobuf:"varint,3,opt,name=excluded,proto3" json:"excluded,omitempty"`
+	InOldBasis int32 `protobuf:"varint,4,opt,name=in_old_basis,json=inOldBasis,proto3" json:"in_old_basis,omitempty"`
+	// Centre: the difference in sigmas of the plotted statistic in force.
+	Centre *ChangeFigure `protobuf:"bytes,5,opt,name=centre,proto3" json:"centre,omitempty"`
+	// Spread of single readings: the ratio to the sigma in force.
+	Spread *ChangeFigure `protobuf:"bytes,6,opt,name=spread,proto3" json:"spread,omitempty"`
+	// Spread of subgroup means; absent for individuals.
+	Means *ChangeFigure `protobuf:"bytes,7,opt,name=means,proto3" json:"means,omitempty"`
+	// CHANGE where any figure says so, KEEP where all do.
+	Decision ChangeDecision `protobuf:"varint,8,opt,name=decision,proto3,enum=limitary.v1.ChangeDecision" json:"decision,omitempty"`
+	// How often the limits were looked at in twelve months, this time included, and the chance that the interval of at
+	// least one of so many independent looks misses.
+	Looks       int32   `protobuf:"varint,9,opt,name=looks,proto3" json:"looks,omitempty"`
+	OneWrongMax float64 `protobuf:"fixed64,10,opt,name=one_wrong_max,json=oneWrongMax,proto3" json:"one_wrong_max,omitempty"`
+	// Correlation of neighbouring new results, and how many independent ones they are worth.
+	Lag1               float64  `protobuf:"fixed64,11,opt,name=lag1,proto3" json:"lag1,omitempty"`
+	EffectiveForCentre float64  `protobuf:"fixed64,12,opt,name=effective_for_centre,json=effectiveForCentre,proto3" json:"effective_for_centre,omitempty"`
+	EffectiveForSpread float64  `protobuf:"fixed64,13,opt,name=effective_for_spread,json=effectiveForSpread,proto3" json:"effective_for_spread,omitempty"`
+	Text               string   `protobuf:"bytes,14,opt,name=text,proto3" json:"text,omitempty"`
+	Notes              []string `protobuf:"bytes,15,rep,name=notes,proto3" json:"notes,omitempty"`
+	unknownFields      protoimpl.UnknownFields
+	sizeCache          protoimpl.SizeCache
+}
+
+func (x *ChangeTest) Reset() {
+	*x = ChangeTest{}
+	mi := &file_limitary_v1_limits_proto_msgTypes[17]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *ChangeTest) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*ChangeTest) ProtoMessage() {}
+
+func (x *ChangeTest) ProtoReflect() protoreflect.Message {
+	mi := &file_limitary_v1_limits_proto_msgTypes[17]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use ChangeTest.ProtoReflect.Descriptor instead.
+func (*ChangeTest) Descriptor() ([]byte, []int) {
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{17}
+}
+
+func (x *ChangeTest) GetAgainst() int32 {
+	if x != nil {
+		return x.Against
+	}
+	return 0
+}
+
+func (x *ChangeTest) GetResults() int32 {
+	if x != nil {
+		return x.Results
+	}
+	return 0
+}
+
+func (x *ChangeTest) GetExcluded() int32 {
+	if x != nil {
+		return x.Excluded
+	}
+	return 0
+}
+
+func (x *ChangeTest) GetInOldBasis() int32 {
+	if x != nil {
+		return x.InOldBasis
+	}
+	return 0
+}
+
+func (x *ChangeTest) GetCentre() *ChangeFigure {
+	if x != nil {
+		return x.Centre
+	}
+	return nil
+}
+
+func (x *ChangeTest) GetSpread() *ChangeFigure {
+	if x != nil {
+		return x.Spread
+	}
+	return nil
+}
+
+func (x *ChangeTest) GetMeans() *ChangeFigure {
+	if x != nil {
+		return x.Means
+	}
+	return nil
+}
+
+func (x *ChangeTest) GetDecision() ChangeDecision {
+	if x != nil {
+		return x.Decision
+	}
+	return ChangeDecision_CHANGE_DECISION_UNSPECIFIED
+}
+
+func (x *ChangeTest) GetLooks() int32 {
+	if x != nil {
+		return x.Looks
+	}
+	return 0
+}
+
+func (x *ChangeTest) GetOneWrongMax() float64 {
+	if x != nil {
+		return x.OneWrongMax
+	}
+	return 0
+}
+
+func (x *ChangeTest) GetLag1() float64 {
+	if x != nil {
+		return x.Lag1
+	}
+	return 0
+}
+
+func (x *ChangeTest) GetEffectiveForCentre() float64 {
+	if x != nil {
+		return x.EffectiveForCentre
+	}
+	return 0
+}
+
+func (x *ChangeTest) GetEffectiveForSpread() float64 {
+	if x != nil {
+		return x.EffectiveForSpread
+	}
+	return 0
+}
+
+func (x *ChangeTest) GetText() string {
+	if x != nil {
+		return x.Text
+	}
+	return ""
+}
+
+func (x *ChangeTest) GetNotes() []string {
+	if x != nil {
+		return x.Notes
+	}
+	return nil
+}
+
+type ChangeFigure struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// Absent where nothing could be estimated.
+	Estimate *float64 `protobuf:"fixed64,1,opt,name=estimate,proto3,oneof" json:"estimate,omitempty"`
+	// A 95 % interval.
+	Lower *float64 `protobuf:"fixed64,2,opt,name=lower,proto3,oneof" json:"lower,omitempty"`
+	Upper *float64 `protobuf:"fixed64,3,opt,name=upper,proto3,oneof" json:"upper,omitempty"`
+	// Between these a difference, or ratio, does not matter.
+	RelevantLower float64        `protobuf:"fixed64,4,opt,name=relevant_lower,json=relevantLower,proto3" json:"relevant_lower,omitempty"`
+	RelevantUpper float64        `protobuf:"fixed64,5,opt,name=relevant_upper,json=relevantUpper,proto3" json:"relevant_upper,omitempty"`
+	Decision      ChangeDecision `protobuf:"varint,6,opt,name=decision,proto3,enum=limitary.v1.ChangeDecision" json:"decision,omitempty"`
+	// Why it is not decided.
+	Reason string `protobuf:"bytes,7,opt,name=reason,proto3" json:"reason,omitempty"`
+	// The interval leaves out "no difference", whether or not that matters.
+	Differs bool `protobuf:"varint,8,opt,name=differs,proto3" json:"differs,omitempty"`
+	// About how many new results, those at hand included, would settle it.
+	Needed *int32 `protobuf:"varint,9,opt,name=needed,proto3,oneof" json:"needed,omitempty"`
+	// The answer against the figure in force as it stands, whatever error its own basis left in it.
+	PublishedDecision ChangeDecision `protobuf:"varint,10,opt,name=published_decision,json=publishedDecision,proto3,enum=limitary.v1.ChangeDecision" json:"published_decision,omitempty"`
+	// Of no difference. Not valid where the comparison was made because of what the data showed.
+	P       *float64 `protobuf:"fixed64,11,opt,name=p,proto3,oneof" json:"p,omitempty"`
+	PValid  bool     `protobuf:"varint,12,opt,name=p_valid,json=pValid,proto3" json:"p_valid,omitempty"`
+	PReason string   `protobuf:"bytes,13,opt,name=p_reason,json=pReason,proto3" json:"p_reason,omitempty"`
+	// Of the plain t or F test, which takes results for normal and independent.
+	PlainP        *float64 `protobuf:"fixed64,14,opt,name=plain_p,json=plainP,proto3,oneof" json:"plain_p,omitempty"`
+	Text          string   `protobuf:"bytes,15,opt,name=text,proto3" json:"text,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *ChangeFigure) Reset() {
+	*x = ChangeFigure{}
+	mi := &file_limitary_v1_limits_proto_msgTypes[18]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *ChangeFigure) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*ChangeFigure) ProtoMessage() {}
+
+func (x *ChangeFigure) ProtoReflect() protoreflect.Message {
+	mi := &file_limitary_v1_limits_proto_msgTypes[18]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use ChangeFigure.ProtoReflect.Descriptor instead.
+func (*ChangeFigure) Descriptor() ([]byte, []int) {
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{18}
+}
+
+func (x *ChangeFigure) GetEstimate() float64 {
+	if x != nil && x.Estimate != nil {
+		return *x.Estimate
+	}
+	return 0
+}
+
+func (x *ChangeFigure) GetLower() float64 {
+	if x != nil && x.Lower != nil {
+		return *x.Lower
+	}
+	return 0
+}
+
+func (x *ChangeFigure) GetUpper() float64 {
+	if x != nil && x.Upper != nil {
+		return *x.Upper
+	}
+	return 0
+}
+
+func (x *ChangeFigure) GetRelevantLower() float64 {
+	if x != nil {
+		return x.RelevantLower
+	}
+	return 0
+}
+
+func (x *ChangeFigure) GetRelevantUpper() float64 {
+	if x != nil {
+		return x.RelevantUpper
+	}
+	return 0
+}
+
+func (x *ChangeFigure) GetDecision() ChangeDecision {
+	if x != nil {
+		return x.Decision
+	}
+	return ChangeDecision_CHANGE_DECISION_UNSPECIFIED
+}
+
+func (x *ChangeFigure) GetReason() string {
+	if x != nil {
+		return x.Reason
+	}
+	return ""
+}
+
+func (x *ChangeFigure) GetDiffers() bool {
+	if x != nil {
+		return x.Differs
+	}
+	return false
+}
+
+func (x *ChangeFigure) GetNeeded() int32 {
+	if x != nil && x.Needed != nil {
+		return *x.Needed
+	}
+	return 0
+}
+
+func (x *ChangeFigure) GetPublishedDecision() ChangeDecision {
+	if x != nil {
+		return x.PublishedDecision
+	}
+	return ChangeDecision_CHANGE_DECISION_UNSPECIFIED
+}
+
+func (x *ChangeFigure) GetP() float64 {
+	if x != nil && x.P != nil {
+		return *x.P
+	}
+	return 0
+}
+
+func (x *ChangeFigure) GetPValid() bool {
+	if x != nil {
+		return x.PValid
+	}
+	return false
+}
+
+func (x *ChangeFigure) GetPReason() string {
+	if x != nil {
+		return x.PReason
+	}
+	return ""
+}
+
+func (x *ChangeFigure) GetPlainP() float64 {
+	if x != nil && x.PlainP != nil {
+		return *x.PlainP
+	}
+	return 0
+}
+
+func (x *ChangeFigure) GetText() string {
+	if x != nil {
+		return x.Text
+	}
+	return ""
+}
+
 type ComputeLimitsRequest struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
 	// Required.
 	Kind ChartKind `protobuf:"varint,1,opt,name=kind,proto3,enum=limitary.v1.ChartKind" json:"kind,omitempty"`
-	// Readings in a full subgroup; 1 for individuals.
+	// Readings in a full subgroup; the sample size of np; 1 for individuals, p, c and u.
 	SubgroupSize int32 `protobuf:"varint,2,opt,name=subgroup_size,json=subgroupSize,proto3" json:"subgroup_size,omitempty"`
 	// Types that are valid to be assigned to Data:
 	//
@@ -890,14 +2318,17 @@ type ComputeLimitsRequest struct {
 	LocationLines   *FixedLines `protobuf:"bytes,9,opt,name=location_lines,json=locationLines,proto3" json:"location_lines,omitempty"`
 	DispersionLines *FixedLines `protobuf:"bytes,10,opt,name=dispersion_lines,json=dispersionLines,proto3" json:"dispersion_lines,omitempty"`
 	// At most 2,000.
-	Exclusions    []*Exclusion `protobuf:"bytes,11,rep,name=exclusions,proto3" json:"exclusions,omitempty"`
+	Exclusions []*Exclusion `protobuf:"bytes,11,rep,name=exclusions,proto3" json:"exclusions,omitempty"`
+	Options    *KindOptions `protobuf:"bytes,12,opt,name=options,proto3" json:"options,omitempty"`
+	// Also answers whether these limits should be kept, given the data, of which none may be in their basis.
+	InForce       *InForce `protobuf:"bytes,13,opt,name=in_force,json=inForce,proto3" json:"in_force,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
 
 func (x *ComputeLimitsRequest) Reset() {
 	*x = ComputeLimitsRequest{}
-	mi := &file_limitary_v1_limits_proto_msgTypes[9]
+	mi := &file_limitary_v1_limits_proto_msgTypes[19]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -909,7 +2340,7 @@ func (x *ComputeLimitsRequest) String() string {
 func (*ComputeLimitsRequest) ProtoMessage() {}
 
 func (x *ComputeLimitsRequest) ProtoReflect() protoreflect.Message {
-	mi := &file_limitary_v1_limits_proto_msgTypes[9]
+	mi := &file_limitary_v1_limits_proto_msgTypes[19]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -922,7 +2353,7 @@ func (x *ComputeLimitsRequest) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use ComputeLimitsRequest.ProtoReflect.Descriptor instead.
 func (*ComputeLimitsRequest) Descriptor() ([]byte, []int) {
-	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{9}
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{19}
 }
 
 func (x *ComputeLimitsRequest) GetKind() ChartKind {
@@ -1013,6 +2444,20 @@ func (x *ComputeLimitsRequest) GetExclusions() []*Exclusion {
 	return nil
 }
 
+func (x *ComputeLimitsRequest) GetOptions() *KindOptions {
+	if x != nil {
+		return x.Options
+	}
+	return nil
+}
+
+func (x *ComputeLimitsRequest) GetInForce() *InForce {
+	if x != nil {
+		return x.InForce
+	}
+	return nil
+}
+
 type isComputeLimitsRequest_Data interface {
 	isComputeLimitsRequest_Data()
 }
@@ -1030,6 +2475,932 @@ func (*ComputeLimitsRequest_Points) isComputeLimitsRequest_Data() {}
 
 func (*ComputeLimitsRequest_Series) isComputeLimitsRequest_Data() {}
 
+// One part of the variance of a reading.
+type VarianceComponent struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// WITHIN, BETWEEN or TOTAL.
+	Name             string  `protobuf:"bytes,1,opt,name=name,proto3" json:"name,omitempty"`
+	Sigma            float64 `protobuf:"fixed64,2,opt,name=sigma,proto3" json:"sigma,omitempty"`
+	DegreesOfFreedom float64 `protobuf:"fixed64,3,opt,name=degrees_of_freedom,json=degreesOfFreedom,proto3" json:"degrees_of_freedom,omitempty"`
+	// A 95 % interval; an end is absent where the data leave it open.
+	Lower *float64 `protobuf:"fixed64,4,opt,name=lower,proto3,oneof" json:"lower,omitempty"`
+	Upper *float64 `protobuf:"fixed64,5,opt,name=upper,proto3,oneof" json:"upper,omitempty"`
+	// The estimate of the variance was negative and is taken as 0.
+	Truncated     bool `protobuf:"varint,6,opt,name=truncated,proto3" json:"truncated,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *VarianceComponent) Reset() {
+	*x = VarianceComponent{}
+	mi := &file_limitary_v1_limits_proto_msgTypes[20]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *VarianceComponent) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*VarianceComponent) ProtoMessage() {}
+
+func (x *VarianceComponent) ProtoReflect() protoreflect.Message {
+	mi := &file_limitary_v1_limits_proto_msgTypes[20]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use VarianceComponent.ProtoReflect.Descriptor instead.
+func (*VarianceComponent) Descriptor() ([]byte, []int) {
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{20}
+}
+
+func (x *VarianceComponent) GetName() string {
+	if x != nil {
+		return x.Name
+	}
+	return ""
+}
+
+func (x *VarianceComponent) GetSigma() float64 {
+	if x != nil {
+		return x.Sigma
+	}
+	return 0
+}
+
+func (x *VarianceComponent) GetDegreesOfFreedom() float64 {
+	if x != nil {
+		return x.DegreesOfFreedom
+	}
+	return 0
+}
+
+func (x *VarianceComponent) GetLower() float64 {
+	if x != nil && x.Lower != nil {
+		return *x.Lower
+	}
+	return 0
+}
+
+func (x *VarianceComponent) GetUpper() float64 {
+	if x != nil && x.Upper != nil {
+		return *x.Upper
+	}
+	return 0
+}
+
+func (x *VarianceComponent) GetTruncated() bool {
+	if x != nil {
+		return x.Truncated
+	}
+	return false
+}
+
+// One part of how sigma depends on the mean of duplicates.
+type SigmaPart struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// ALL, BAND, ABSOLUTE, or the figures S0 and B of a function.
+	Name string `protobuf:"bytes,1,opt,name=name,proto3" json:"name,omitempty"`
+	// The mean from which a band holds.
+	From             float64  `protobuf:"fixed64,2,opt,name=from,proto3" json:"from,omitempty"`
+	Groups           int32    `protobuf:"varint,3,opt,name=groups,proto3" json:"groups,omitempty"`
+	Sigma            float64  `protobuf:"fixed64,4,opt,name=sigma,proto3" json:"sigma,omitempty"`
+	Origin           Origin   `protobuf:"varint,5,opt,name=origin,proto3,enum=limitary.v1.Origin" json:"origin,omitempty"`
+	DegreesOfFreedom float64  `protobuf:"fixed64,6,opt,name=degrees_of_freedom,json=degreesOfFreedom,proto3" json:"degrees_of_freedom,omitempty"`
+	Lower            *float64 `protobuf:"fixed64,7,opt,name=lower,proto3,oneof" json:"lower,omitempty"`
+	Upper            *float64 `protobuf:"fixed64,8,opt,name=upper,proto3,oneof" json:"upper,omitempty"`
+	unknownFields    protoimpl.UnknownFields
+	sizeCache        protoimpl.SizeCache
+}
+
+func (x *SigmaPart) Reset() {
+	*x = SigmaPart{}
+	mi := &file_limitary_v1_limits_proto_msgTypes[21]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *SigmaPart) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*SigmaPart) ProtoMessage() {}
+
+func (x *SigmaPart) ProtoReflect() protoreflect.Message {
+	mi := &file_limitary_v1_limits_proto_msgTypes[21]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use SigmaPart.ProtoReflect.Descriptor instead.
+func (*SigmaPart) Descriptor() ([]byte, []int) {
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{21}
+}
+
+func (x *SigmaPart) GetName() string {
+	if x != nil {
+		return x.Name
+	}
+	return ""
+}
+
+func (x *SigmaPart) GetFrom() float64 {
+	if x != nil {
+		return x.From
+	}
+	return 0
+}
+
+func (x *SigmaPart) GetGroups() int32 {
+	if x != nil {
+		return x.Groups
+	}
+	return 0
+}
+
+func (x *SigmaPart) GetSigma() float64 {
+	if x != nil {
+		return x.Sigma
+	}
+	return 0
+}
+
+func (x *SigmaPart) GetOrigin() Origin {
+	if x != nil {
+		return x.Origin
+	}
+	return Origin_ORIGIN_UNSPECIFIED
+}
+
+func (x *SigmaPart) GetDegreesOfFreedom() float64 {
+	if x != nil {
+		return x.DegreesOfFreedom
+	}
+	return 0
+}
+
+func (x *SigmaPart) GetLower() float64 {
+	if x != nil && x.Lower != nil {
+		return *x.Lower
+	}
+	return 0
+}
+
+func (x *SigmaPart) GetUpper() float64 {
+	if x != nil && x.Upper != nil {
+		return *x.Upper
+	}
+	return 0
+}
+
+// The probability that a process as estimated leaves beyond a line.
+type TailFigure struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	Trace TraceRole              `protobuf:"varint,1,opt,name=trace,proto3,enum=limitary.v1.TraceRole" json:"trace,omitempty"`
+	Line  string                 `protobuf:"bytes,2,opt,name=line,proto3" json:"line,omitempty"`
+	// Sample size or readings it holds for.
+	Size        float64 `protobuf:"fixed64,3,opt,name=size,proto3" json:"size,omitempty"`
+	Probability float64 `protobuf:"fixed64,4,opt,name=probability,proto3" json:"probability,omitempty"`
+	// What was asked for.
+	Nominal       float64 `protobuf:"fixed64,5,opt,name=nominal,proto3" json:"nominal,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *TailFigure) Reset() {
+	*x = TailFigure{}
+	mi := &file_limitary_v1_limits_proto_msgTypes[22]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *TailFigure) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*TailFigure) ProtoMessage() {}
+
+func (x *TailFigure) ProtoReflect() protoreflect.Message {
+	mi := &file_limitary_v1_limits_proto_msgTypes[22]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use TailFigure.ProtoReflect.Descriptor instead.
+func (*TailFigure) Descriptor() ([]byte, []int) {
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{22}
+}
+
+func (x *TailFigure) GetTrace() TraceRole {
+	if x != nil {
+		return x.Trace
+	}
+	return TraceRole_TRACE_ROLE_UNSPECIFIED
+}
+
+func (x *TailFigure) GetLine() string {
+	if x != nil {
+		return x.Line
+	}
+	return ""
+}
+
+func (x *TailFigure) GetSize() float64 {
+	if x != nil {
+		return x.Size
+	}
+	return 0
+}
+
+func (x *TailFigure) GetProbability() float64 {
+	if x != nil {
+		return x.Probability
+	}
+	return 0
+}
+
+func (x *TailFigure) GetNominal() float64 {
+	if x != nil {
+		return x.Nominal
+	}
+	return 0
+}
+
+// Points beyond the action lines of the location trace while nothing is wrong: the nominal rate, and what limits
+// estimated from so few results have.
+type FalseAlarmRate struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	Nominal       float64                `protobuf:"fixed64,1,opt,name=nominal,proto3" json:"nominal,omitempty"`
+	Median        float64                `protobuf:"fixed64,2,opt,name=median,proto3" json:"median,omitempty"`
+	P10           float64                `protobuf:"fixed64,3,opt,name=p10,proto3" json:"p10,omitempty"`
+	P90           float64                `protobuf:"fixed64,4,opt,name=p90,proto3" json:"p90,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *FalseAlarmRate) Reset() {
+	*x = FalseAlarmRate{}
+	mi := &file_limitary_v1_limits_proto_msgTypes[23]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *FalseAlarmRate) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*FalseAlarmRate) ProtoMessage() {}
+
+func (x *FalseAlarmRate) ProtoReflect() protoreflect.Message {
+	mi := &file_limitary_v1_limits_proto_msgTypes[23]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use FalseAlarmRate.ProtoReflect.Descriptor instead.
+func (*FalseAlarmRate) Descriptor() ([]byte, []int) {
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{23}
+}
+
+func (x *FalseAlarmRate) GetNominal() float64 {
+	if x != nil {
+		return x.Nominal
+	}
+	return 0
+}
+
+func (x *FalseAlarmRate) GetMedian() float64 {
+	if x != nil {
+		return x.Median
+	}
+	return 0
+}
+
+func (x *FalseAlarmRate) GetP10() float64 {
+	if x != nil {
+		return x.P10
+	}
+	return 0
+}
+
+func (x *FalseAlarmRate) GetP90() float64 {
+	if x != nil {
+		return x.P90
+	}
+	return 0
+}
+
+// Given figures against the data.
+type Compared struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// Mean of the data less the given centre, with a 95 % interval.
+	Bias      *float64 `protobuf:"fixed64,1,opt,name=bias,proto3,oneof" json:"bias,omitempty"`
+	BiasLower *float64 `protobuf:"fixed64,2,opt,name=bias_lower,json=biasLower,proto3,oneof" json:"bias_lower,omitempty"`
+	BiasUpper *float64 `protobuf:"fixed64,3,opt,name=bias_upper,json=biasUpper,proto3,oneof" json:"bias_upper,omitempty"`
+	// Sigma estimated over sigma given, with a 95 % interval.
+	Ratio      *float64 `protobuf:"fixed64,4,opt,name=ratio,proto3,oneof" json:"ratio,omitempty"`
+	RatioLower *float64 `protobuf:"fixed64,5,opt,name=ratio_lower,json=ratioLower,proto3,oneof" json:"ratio_lower,omitempty"`
+	RatioUpper *float64 `protobuf:"fixed64,6,opt,name=ratio_upper,json=ratioUpper,proto3,oneof" json:"ratio_upper,omitempty"`
+	// The standard deviation between runs, estimated over given, with a 95 % interval.
+	BetweenRatio      *float64 `protobuf:"fixed64,7,opt,name=between_ratio,json=betweenRatio,proto3,oneof" json:"between_ratio,omitempty"`
+	BetweenRatioLower *float64 `protobuf:"fixed64,8,opt,name=between_ratio_lower,json=betweenRatioLower,proto3,oneof" json:"between_ratio_lower,omitempty"`
+	BetweenRatioUpper *float64 `protobuf:"fixed64,9,opt,name=between_ratio_upper,json=betweenRatioUpper,proto3,oneof" json:"between_ratio_upper,omitempty"`
+	unknownFields     protoimpl.UnknownFields
+	sizeCache         protoimpl.SizeCache
+}
+
+func (x *Compared) Reset() {
+	*x = Compared{}
+	mi := &file_limitary_v1_limits_proto_msgTypes[24]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *Compared) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*Compared) ProtoMessage() {}
+
+func (x *Compared) ProtoReflect() protoreflect.Message {
+	mi := &file_limitary_v1_limits_proto_msgTypes[24]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use Compared.ProtoReflect.Descriptor instead.
+func (*Compared) Descriptor() ([]byte, []int) {
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{24}
+}
+
+func (x *Compared) GetBias() float64 {
+	if x != nil && x.Bias != nil {
+		return *x.Bias
+	}
+	return 0
+}
+
+func (x *Compared) GetBiasLower() float64 {
+	if x != nil && x.BiasLower != nil {
+		return *x.BiasLower
+	}
+	return 0
+}
+
+func (x *Compared) GetBiasUpper() float64 {
+	if x != nil && x.BiasUpper != nil {
+		return *x.BiasUpper
+	}
+	return 0
+}
+
+func (x *Compared) GetRatio() float64 {
+	if x != nil && x.Ratio != nil {
+		return *x.Ratio
+	}
+	return 0
+}
+
+func (x *Compared) GetRatioLower() float64 {
+	if x != nil && x.RatioLower != nil {
+		return *x.RatioLower
+	}
+	return 0
+}
+
+func (x *Compared) GetRatioUpper() float64 {
+	if x != nil && x.RatioUpper != nil {
+		return *x.RatioUpper
+	}
+	return 0
+}
+
+func (x *Compared) GetBetweenRatio() float64 {
+	if x != nil && x.BetweenRatio != nil {
+		return *x.BetweenRatio
+	}
+	return 0
+}
+
+func (x *Compared) GetBetweenRatioLower() float64 {
+	if x != nil && x.BetweenRatioLower != nil {
+		return *x.BetweenRatioLower
+	}
+	return 0
+}
+
+func (x *Compared) GetBetweenRatioUpper() float64 {
+	if x != nil && x.BetweenRatioUpper != nil {
+		return *x.BetweenRatioUpper
+	}
+	return 0
+}
+
+// One question asked of the basis.
+type DiagnosticTest struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// That of the finding it may give.
+	Code string `protobuf:"bytes,1,opt,name=code,proto3" json:"code,omitempty"`
+	Name string `protobuf:"bytes,2,opt,name=name,proto3" json:"name,omitempty"`
+	// What it was computed from, such as "individual values" or "subgroup means", and how many of these.
+	Subject   string   `protobuf:"bytes,3,opt,name=subject,proto3" json:"subject,omitempty"`
+	N         int32    `protobuf:"varint,4,opt,name=n,proto3" json:"n,omitempty"`
+	Statistic *float64 `protobuf:"fixed64,5,opt,name=statistic,proto3,oneof" json:"statistic,omitempty"`
+	// One of the two, where the test was made.
+	P        *float64 `protobuf:"fixed64,6,opt,name=p,proto3,oneof" json:"p,omitempty"`
+	Critical *float64 `protobuf:"fixed64,7,opt,name=critical,proto3,oneof" json:"critical,omitempty"`
+	// 0 for what is no test of chance.
+	Level         float64           `protobuf:"fixed64,8,opt,name=level,proto3" json:"level,omitempty"`
+	Outcome       DiagnosticOutcome `protobuf:"varint,9,opt,name=outcome,proto3,enum=limitary.v1.DiagnosticOutcome" json:"outcome,omitempty"`
+	Reason        string            `protobuf:"bytes,10,opt,name=reason,proto3" json:"reason,omitempty"`
+	CouldMiss     string            `protobuf:"bytes,11,opt,name=could_miss,json=couldMiss,proto3" json:"could_miss,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *DiagnosticTest) Reset() {
+	*x = DiagnosticTest{}
+	mi := &file_limitary_v1_limits_proto_msgTypes[25]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *DiagnosticTest) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*DiagnosticTest) ProtoMessage() {}
+
+func (x *DiagnosticTest) ProtoReflect() protoreflect.Message {
+	mi := &file_limitary_v1_limits_proto_msgTypes[25]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use DiagnosticTest.ProtoReflect.Descriptor instead.
+func (*DiagnosticTest) Descriptor() ([]byte, []int) {
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{25}
+}
+
+func (x *DiagnosticTest) GetCode() string {
+	if x != nil {
+		return x.Code
+	}
+	return ""
+}
+
+func (x *DiagnosticTest) GetName() string {
+	if x != nil {
+		return x.Name
+	}
+	return ""
+}
+
+func (x *DiagnosticTest) GetSubject() string {
+	if x != nil {
+		return x.Subject
+	}
+	return ""
+}
+
+func (x *DiagnosticTest) GetN() int32 {
+	if x != nil {
+		return x.N
+	}
+	return 0
+}
+
+func (x *DiagnosticTest) GetStatistic() float64 {
+	if x != nil && x.Statistic != nil {
+		return *x.Statistic
+	}
+	return 0
+}
+
+func (x *DiagnosticTest) GetP() float64 {
+	if x != nil && x.P != nil {
+		return *x.P
+	}
+	return 0
+}
+
+func (x *DiagnosticTest) GetCritical() float64 {
+	if x != nil && x.Critical != nil {
+		return *x.Critical
+	}
+	return 0
+}
+
+func (x *DiagnosticTest) GetLevel() float64 {
+	if x != nil {
+		return x.Level
+	}
+	return 0
+}
+
+func (x *DiagnosticTest) GetOutcome() DiagnosticOutcome {
+	if x != nil {
+		return x.Outcome
+	}
+	return DiagnosticOutcome_DIAGNOSTIC_OUTCOME_UNSPECIFIED
+}
+
+func (x *DiagnosticTest) GetReason() string {
+	if x != nil {
+		return x.Reason
+	}
+	return ""
+}
+
+func (x *DiagnosticTest) GetCouldMiss() string {
+	if x != nil {
+		return x.CouldMiss
+	}
+	return ""
+}
+
+// Points at which a set-up rule completes in the basis, beside those expected in clean data of its length.
+type SetupCount struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	Rule          string                 `protobuf:"bytes,1,opt,name=rule,proto3" json:"rule,omitempty"`
+	Description   string                 `protobuf:"bytes,2,opt,name=description,proto3" json:"description,omitempty"`
+	Observed      int32                  `protobuf:"varint,3,opt,name=observed,proto3" json:"observed,omitempty"`
+	Expected      float64                `protobuf:"fixed64,4,opt,name=expected,proto3" json:"expected,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *SetupCount) Reset() {
+	*x = SetupCount{}
+	mi := &file_limitary_v1_limits_proto_msgTypes[26]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *SetupCount) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*SetupCount) ProtoMessage() {}
+
+func (x *SetupCount) ProtoReflect() protoreflect.Message {
+	mi := &file_limitary_v1_limits_proto_msgTypes[26]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use SetupCount.ProtoReflect.Descriptor instead.
+func (*SetupCount) Descriptor() ([]byte, []int) {
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{26}
+}
+
+func (x *SetupCount) GetRule() string {
+	if x != nil {
+		return x.Rule
+	}
+	return ""
+}
+
+func (x *SetupCount) GetDescription() string {
+	if x != nil {
+		return x.Description
+	}
+	return ""
+}
+
+func (x *SetupCount) GetObserved() int32 {
+	if x != nil {
+		return x.Observed
+	}
+	return 0
+}
+
+func (x *SetupCount) GetExpected() float64 {
+	if x != nil {
+		return x.Expected
+	}
+	return 0
+}
+
+// Counts in bins of one width, the first from lower on, on the judged scale.
+type Histogram struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	Lower float64                `protobuf:"fixed64,1,opt,name=lower,proto3" json:"lower,omitempty"`
+	Width float64                `protobuf:"fixed64,2,opt,name=width,proto3" json:"width,omitempty"`
+	// The rounding step that the bins follow; 0 if none.
+	Step   float64 `protobuf:"fixed64,3,opt,name=step,proto3" json:"step,omitempty"`
+	Counts []int32 `protobuf:"varint,4,rep,packed,name=counts,proto3" json:"counts,omitempty"`
+	// Name of the rule for the width.
+	Rule          string `protobuf:"bytes,5,opt,name=rule,proto3" json:"rule,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *Histogram) Reset() {
+	*x = Histogram{}
+	mi := &file_limitary_v1_limits_proto_msgTypes[27]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *Histogram) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*Histogram) ProtoMessage() {}
+
+func (x *Histogram) ProtoReflect() protoreflect.Message {
+	mi := &file_limitary_v1_limits_proto_msgTypes[27]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use Histogram.ProtoReflect.Descriptor instead.
+func (*Histogram) Descriptor() ([]byte, []int) {
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{27}
+}
+
+func (x *Histogram) GetLower() float64 {
+	if x != nil {
+		return x.Lower
+	}
+	return 0
+}
+
+func (x *Histogram) GetWidth() float64 {
+	if x != nil {
+		return x.Width
+	}
+	return 0
+}
+
+func (x *Histogram) GetStep() float64 {
+	if x != nil {
+		return x.Step
+	}
+	return 0
+}
+
+func (x *Histogram) GetCounts() []int32 {
+	if x != nil {
+		return x.Counts
+	}
+	return nil
+}
+
+func (x *Histogram) GetRule() string {
+	if x != nil {
+		return x.Rule
+	}
+	return ""
+}
+
+// A histogram, and ordered values against normal quantiles (thinned where there are many), of one subject.
+type Picture struct {
+	state           protoimpl.MessageState `protogen:"open.v1"`
+	Subject         string                 `protobuf:"bytes,1,opt,name=subject,proto3" json:"subject,omitempty"`
+	Histogram       *Histogram             `protobuf:"bytes,2,opt,name=histogram,proto3" json:"histogram,omitempty"`
+	NormalQuantiles []float64              `protobuf:"fixed64,3,rep,packed,name=normal_quantiles,json=normalQuantiles,proto3" json:"normal_quantiles,omitempty"`
+	OrderedValues   []float64              `protobuf:"fixed64,4,rep,packed,name=ordered_values,json=orderedValues,proto3" json:"ordered_values,omitempty"`
+	unknownFields   protoimpl.UnknownFields
+	sizeCache       protoimpl.SizeCache
+}
+
+func (x *Picture) Reset() {
+	*x = Picture{}
+	mi := &file_limitary_v1_limits_proto_msgTypes[28]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *Picture) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*Picture) ProtoMessage() {}
+
+func (x *Picture) ProtoReflect() protoreflect.Message {
+	mi := &file_limitary_v1_limits_proto_msgTypes[28]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use Picture.ProtoReflect.Descriptor instead.
+func (*Picture) Descriptor() ([]byte, []int) {
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{28}
+}
+
+func (x *Picture) GetSubject() string {
+	if x != nil {
+		return x.Subject
+	}
+	return ""
+}
+
+func (x *Picture) GetHistogram() *Histogram {
+	if x != nil {
+		return x.Histogram
+	}
+	return nil
+}
+
+func (x *Picture) GetNormalQuantiles() []float64 {
+	if x != nil {
+		return x.NormalQuantiles
+	}
+	return nil
+}
+
+func (x *Picture) GetOrderedValues() []float64 {
+	if x != nil {
+		return x.OrderedValues
+	}
+	return nil
+}
+
+// What the data of a basis say against limits computed from them.
+type Diagnostics struct {
+	state    protoimpl.MessageState `protogen:"open.v1"`
+	Groups   int32                  `protobuf:"varint,1,opt,name=groups,proto3" json:"groups,omitempty"`
+	Readings int32                  `protobuf:"varint,2,opt,name=readings,proto3" json:"readings,omitempty"`
+	Days     *int32                 `protobuf:"varint,3,opt,name=days,proto3,oneof" json:"days,omitempty"`
+	Runs     *int32                 `protobuf:"varint,4,opt,name=runs,proto3,oneof" json:"runs,omitempty"`
+	// Rounding step in the chart's unit, 0 where none was found, and the share of readings equal to another one.
+	Step  float64           `protobuf:"fixed64,5,opt,name=step,proto3" json:"step,omitempty"`
+	Tied  float64           `protobuf:"fixed64,6,opt,name=tied,proto3" json:"tied,omitempty"`
+	Tests []*DiagnosticTest `protobuf:"bytes,7,rep,name=tests,proto3" json:"tests,omitempty"`
+	Setup []*SetupCount     `protobuf:"bytes,8,rep,name=setup,proto3" json:"setup,omitempty"`
+	// The chance that clean data give at least one finding, as simulated for the kind, and what it would be if the tests
+	// were independent and exact.
+	JointRate     float64    `protobuf:"fixed64,9,opt,name=joint_rate,json=jointRate,proto3" json:"joint_rate,omitempty"`
+	JointBound    float64    `protobuf:"fixed64,10,opt,name=joint_bound,json=jointBound,proto3" json:"joint_bound,omitempty"`
+	Pictures      []*Picture `protobuf:"bytes,11,rep,name=pictures,proto3" json:"pictures,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *Diagnostics) Reset() {
+	*x = Diagnostics{}
+	mi := &file_limitary_v1_limits_proto_msgTypes[29]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *Diagnostics) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*Diagnostics) ProtoMessage() {}
+
+func (x *Diagnostics) ProtoReflect() protoreflect.Message {
+	mi := &file_limitary_v1_limits_proto_msgTypes[29]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use Diagnostics.ProtoReflect.Descriptor instead.
+func (*Diagnostics) Descriptor() ([]byte, []int) {
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{29}
+}
+
+func (x *Diagnostics) GetGroups() int32 {
+	if x != nil {
+		return x.Groups
+	}
+	return 0
+}
+
+func (x *Diagnostics) GetReadings() int32 {
+	if x != nil {
+		return x.Readings
+	}
+	return 0
+}
+
+func (x *Diagnostics) GetDays() int32 {
+	if x != nil && x.Days != nil {
+		return *x.Days
+	}
+	return 0
+}
+
+func (x *Diagnostics) GetRuns() int32 {
+	if x != nil && x.Runs != nil {
+		return *x.Runs
+	}
+	return 0
+}
+
+func (x *Diagnostics) GetStep() float64 {
+	if x != nil {
+		return x.Step
+	}
+	return 0
+}
+
+func (x *Diagnostics) GetTied() float64 {
+	if x != nil {
+		return x.Tied
+	}
+	return 0
+}
+
+func (x *Diagnostics) GetTests() []*DiagnosticTest {
+	if x != nil {
+		return x.Tests
+	}
+	return nil
+}
+
+func (x *Diagnostics) GetSetup() []*SetupCount {
+	if x != nil {
+		return x.Setup
+	}
+	return nil
+}
+
+func (x *Diagnostics) GetJointRate() float64 {
+	if x != nil {
+		return x.JointRate
+	}
+	return 0
+}
+
+func (x *Diagnostics) GetJointBound() float64 {
+	if x != nil {
+		return x.JointBound
+	}
+	return 0
+}
+
+func (x *Diagnostics) GetPictures() []*Picture {
+	if x != nil {
+		return x.Pictures
+	}
+	return nil
+}
+
 // One estimate of process sigma; all that apply are shown side by side.
 type SigmaEstimate struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
@@ -1046,7 +3417,7 @@ type SigmaEstimate struct {
 
 func (x *SigmaEstimate) Reset() {
 	*x = SigmaEstimate{}
-	mi := &file_limitary_v1_limits_proto_msgTypes[10]
+	mi := &file_limitary_v1_limits_proto_msgTypes[30]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1058,7 +3429,7 @@ func (x *SigmaEstimate) String() string {
 func (*SigmaEstimate) ProtoMessage() {}
 
 func (x *SigmaEstimate) ProtoReflect() protoreflect.Message {
-	mi := &file_limitary_v1_limits_proto_msgTypes[10]
+	mi := &file_limitary_v1_limits_proto_msgTypes[30]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1071,7 +3442,7 @@ func (x *SigmaEstimate) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use SigmaEstimate.ProtoReflect.Descriptor instead.
 func (*SigmaEstimate) Descriptor() ([]byte, []int) {
-	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{10}
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{30}
 }
 
 func (x *SigmaEstimate) GetName() string {
@@ -1124,7 +3495,7 @@ type Interval struct {
 
 func (x *Interval) Reset() {
 	*x = Interval{}
-	mi := &file_limitary_v1_limits_proto_msgTypes[11]
+	mi := &file_limitary_v1_limits_proto_msgTypes[31]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1136,7 +3507,7 @@ func (x *Interval) String() string {
 func (*Interval) ProtoMessage() {}
 
 func (x *Interval) ProtoReflect() protoreflect.Message {
-	mi := &file_limitary_v1_limits_proto_msgTypes[11]
+	mi := &file_limitary_v1_limits_proto_msgTypes[31]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1149,7 +3520,7 @@ func (x *Interval) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Interval.ProtoReflect.Descriptor instead.
 func (*Interval) Descriptor() ([]byte, []int) {
-	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{11}
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{31}
 }
 
 func (x *Interval) GetName() string {
@@ -1195,7 +3566,7 @@ type Finding struct {
 
 func (x *Finding) Reset() {
 	*x = Finding{}
-	mi := &file_limitary_v1_limits_proto_msgTypes[12]
+	mi := &file_limitary_v1_limits_proto_msgTypes[32]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1207,7 +3578,7 @@ func (x *Finding) String() string {
 func (*Finding) ProtoMessage() {}
 
 func (x *Finding) ProtoReflect() protoreflect.Message {
-	mi := &file_limitary_v1_limits_proto_msgTypes[12]
+	mi := &file_limitary_v1_limits_proto_msgTypes[32]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1220,7 +3591,7 @@ func (x *Finding) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Finding.ProtoReflect.Descriptor instead.
 func (*Finding) Descriptor() ([]byte, []int) {
-	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{12}
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{32}
 }
 
 func (x *Finding) GetCode() string {
@@ -1281,19 +3652,27 @@ type ComputeLimitsResponse struct {
 	CentreOrigin Origin `protobuf:"varint,9,opt,name=centre_origin,json=centreOrigin,proto3,enum=limitary.v1.Origin" json:"centre_origin,omitempty"`
 	SigmaOrigin  Origin `protobuf:"varint,10,opt,name=sigma_origin,json=sigmaOrigin,proto3,enum=limitary.v1.Origin" json:"sigma_origin,omitempty"`
 	// Fewer points than advised.
-	Provisional    bool             `protobuf:"varint,11,opt,name=provisional,proto3" json:"provisional,omitempty"`
-	AdvisedMinimum int32            `protobuf:"varint,12,opt,name=advised_minimum,json=advisedMinimum,proto3" json:"advised_minimum,omitempty"`
-	Estimates      []*SigmaEstimate `protobuf:"bytes,13,rep,name=estimates,proto3" json:"estimates,omitempty"`
-	Intervals      []*Interval      `protobuf:"bytes,14,rep,name=intervals,proto3" json:"intervals,omitempty"`
-	Exclusions     []*Exclusion     `protobuf:"bytes,15,rep,name=exclusions,proto3" json:"exclusions,omitempty"`
-	Findings       []*Finding       `protobuf:"bytes,16,rep,name=findings,proto3" json:"findings,omitempty"`
+	Provisional    bool                 `protobuf:"varint,11,opt,name=provisional,proto3" json:"provisional,omitempty"`
+	AdvisedMinimum int32                `protobuf:"varint,12,opt,name=advised_minimum,json=advisedMinimum,proto3" json:"advised_minimum,omitempty"`
+	Estimates      []*SigmaEstimate     `protobuf:"bytes,13,rep,name=estimates,proto3" json:"estimates,omitempty"`
+	Intervals      []*Interval          `protobuf:"bytes,14,rep,name=intervals,proto3" json:"intervals,omitempty"`
+	Exclusions     []*Exclusion         `protobuf:"bytes,15,rep,name=exclusions,proto3" json:"exclusions,omitempty"`
+	Findings       []*Finding           `protobuf:"bytes,16,rep,name=findings,proto3" json:"findings,omitempty"`
+	Model          *Model               `protobuf:"bytes,17,opt,name=model,proto3" json:"model,omitempty"`
+	Components     []*VarianceComponent `protobuf:"bytes,18,rep,name=components,proto3" json:"components,omitempty"`
+	Tails          []*TailFigure        `protobuf:"bytes,19,rep,name=tails,proto3" json:"tails,omitempty"`
+	FalseAlarm     *FalseAlarmRate      `protobuf:"bytes,20,opt,name=false_alarm,json=falseAlarm,proto3" json:"false_alarm,omitempty"`
+	Compared       *Compared            `protobuf:"bytes,21,opt,name=compared,proto3" json:"compared,omitempty"`
+	Diagnostics    *Diagnostics         `protobuf:"bytes,22,opt,name=diagnostics,proto3" json:"diagnostics,omitempty"`
+	ChangeTest     *ChangeTest          `protobuf:"bytes,23,opt,name=change_test,json=changeTest,proto3" json:"change_test,omitempty"`
+	Parts          []*SigmaPart         `protobuf:"bytes,24,rep,name=parts,proto3" json:"parts,omitempty"`
 	unknownFields  protoimpl.UnknownFields
 	sizeCache      protoimpl.SizeCache
 }
 
 func (x *ComputeLimitsResponse) Reset() {
 	*x = ComputeLimitsResponse{}
-	mi := &file_limitary_v1_limits_proto_msgTypes[13]
+	mi := &file_limitary_v1_limits_proto_msgTypes[33]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1305,7 +3684,7 @@ func (x *ComputeLimitsResponse) String() string {
 func (*ComputeLimitsResponse) ProtoMessage() {}
 
 func (x *ComputeLimitsResponse) ProtoReflect() protoreflect.Message {
-	mi := &file_limitary_v1_limits_proto_msgTypes[13]
+	mi := &file_limitary_v1_limits_proto_msgTypes[33]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1318,7 +3697,7 @@ func (x *ComputeLimitsResponse) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use ComputeLimitsResponse.ProtoReflect.Descriptor instead.
 func (*ComputeLimitsResponse) Descriptor() ([]byte, []int) {
-	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{13}
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{33}
 }
 
 func (x *ComputeLimitsResponse) GetKind() ChartKind {
@@ -1433,6 +3812,62 @@ func (x *ComputeLimitsResponse) GetFindings() []*Finding {
 	return nil
 }
 
+func (x *ComputeLimitsResponse) GetModel() *Model {
+	if x != nil {
+		return x.Model
+	}
+	return nil
+}
+
+func (x *ComputeLimitsResponse) GetComponents() []*VarianceComponent {
+	if x != nil {
+		return x.Components
+	}
+	return nil
+}
+
+func (x *ComputeLimitsResponse) GetTails() []*TailFigure {
+	if x != nil {
+		return x.Tails
+	}
+	return nil
+}
+
+func (x *ComputeLimitsResponse) GetFalseAlarm() *FalseAlarmRate {
+	if x != nil {
+		return x.FalseAlarm
+	}
+	return nil
+}
+
+func (x *ComputeLimitsResponse) GetCompared() *Compared {
+	if x != nil {
+		return x.Compared
+	}
+	return nil
+}
+
+func (x *ComputeLimitsResponse) GetDiagnostics() *Diagnostics {
+	if x != nil {
+		return x.Diagnostics
+	}
+	return nil
+}
+
+func (x *ComputeLimitsResponse) GetChangeTest() *ChangeTest {
+	if x != nil {
+		return x.ChangeTest
+	}
+	return nil
+}
+
+func (x *ComputeLimitsResponse) GetParts() []*SigmaPart {
+	if x != nil {
+		return x.Parts
+	}
+	return nil
+}
+
 var File_limitary_v1_limits_proto protoreflect.FileDescriptor
 
 const file_limitary_v1_limits_proto_rawDesc = "" +
@@ -1442,7 +3877,46 @@ const file_limitary_v1_limits_proto_rawDesc = "" +
 	"\x05value\x18\x01 \x01(\x01H\x00R\x05value\x88\x01\x01\x12(\n" +
 	"\x05basis\x18\x02 \x01(\x0e2\x12.limitary.v1.BasisR\x05basis\x12\x12\n" +
 	"\x04tail\x18\x03 \x01(\x01R\x04tailB\b\n" +
-	"\x06_value\"\xfe\x02\n" +
+	"\x06_value\"\xbd\x02\n" +
+	"\x05Model\x12#\n" +
+	"\rbetween_sigma\x18\x01 \x01(\x01R\fbetweenSigma\x12\x1c\n" +
+	"\tinflation\x18\x02 \x01(\x01R\tinflation\x12;\n" +
+	"\fcount_method\x18\x03 \x01(\x0e2\x18.limitary.v1.CountMethodR\vcountMethod\x12\x1c\n" +
+	"\tinspected\x18\x04 \x01(\x01R\tinspected\x124\n" +
+	"\ttransform\x18\x05 \x01(\v2\x16.limitary.v1.TransformR\ttransform\x12*\n" +
+	"\x06levels\x18\x06 \x03(\v2\x12.limitary.v1.LevelR\x06levels\x124\n" +
+	"\x06spread\x18\a \x01(\v2\x1c.limitary.v1.DuplicateSpreadR\x06spread\"S\n" +
+	"\tTransform\x12.\n" +
+	"\x04kind\x18\x01 \x01(\x0e2\x1a.limitary.v1.TransformKindR\x04kind\x12\x16\n" +
+	"\x06offset\x18\x02 \x01(\x01R\x06offset\"W\n" +
+	"\x05Level\x12\x1a\n" +
+	"\bmaterial\x18\x01 \x01(\tR\bmaterial\x12\x1c\n" +
+	"\treference\x18\x02 \x01(\x01R\treference\x12\x14\n" +
+	"\x05sigma\x18\x03 \x01(\x01R\x05sigma\"\xac\x01\n" +
+	"\x0fDuplicateSpread\x12-\n" +
+	"\x05bands\x18\x01 \x03(\v2\x17.limitary.v1.SpreadBandR\x05bands\x12\x0e\n" +
+	"\x02s0\x18\x02 \x01(\x01R\x02s0\x12\f\n" +
+	"\x01b\x18\x03 \x01(\x01R\x01b\x12%\n" +
+	"\x0eabsolute_below\x18\x04 \x01(\x01R\rabsoluteBelow\x12%\n" +
+	"\x0eabsolute_sigma\x18\x05 \x01(\x01R\rabsoluteSigma\"6\n" +
+	"\n" +
+	"SpreadBand\x12\x12\n" +
+	"\x04from\x18\x01 \x01(\x01R\x04from\x12\x14\n" +
+	"\x05sigma\x18\x02 \x01(\x01R\x05sigma\"\xd2\x02\n" +
+	"\rOriginalScale\x12!\n" +
+	"\tstatistic\x18\x01 \x01(\x01H\x00R\tstatistic\x88\x01\x01\x12\x1b\n" +
+	"\x06centre\x18\x02 \x01(\x01H\x01R\x06centre\x88\x01\x01\x12&\n" +
+	"\flower_action\x18\x03 \x01(\x01H\x02R\vlowerAction\x88\x01\x01\x12&\n" +
+	"\fupper_action\x18\x04 \x01(\x01H\x03R\vupperAction\x88\x01\x01\x12(\n" +
+	"\rlower_warning\x18\x05 \x01(\x01H\x04R\flowerWarning\x88\x01\x01\x12(\n" +
+	"\rupper_warning\x18\x06 \x01(\x01H\x05R\fupperWarning\x88\x01\x01B\f\n" +
+	"\n" +
+	"_statisticB\t\n" +
+	"\a_centreB\x0f\n" +
+	"\r_lower_actionB\x0f\n" +
+	"\r_upper_actionB\x10\n" +
+	"\x0e_lower_warningB\x10\n" +
+	"\x0e_upper_warning\"\xb6\x03\n" +
 	"\vTraceLimits\x12\x1b\n" +
 	"\x06centre\x18\x01 \x01(\x01H\x00R\x06centre\x88\x01\x01\x12\x19\n" +
 	"\x05sigma\x18\x02 \x01(\x01H\x01R\x05sigma\x88\x01\x01\x124\n" +
@@ -1451,16 +3925,18 @@ const file_limitary_v1_limits_proto_rawDesc = "" +
 	"\rlower_warning\x18\x05 \x01(\v2\x11.limitary.v1.LineR\flowerWarning\x126\n" +
 	"\rupper_warning\x18\x06 \x01(\v2\x11.limitary.v1.LineR\fupperWarning\x12+\n" +
 	"\x05rules\x18\a \x03(\v2\x15.limitary.v1.RuleSpecR\x05rules\x12\x19\n" +
-	"\brule_set\x18\b \x01(\tR\aruleSetB\t\n" +
+	"\brule_set\x18\b \x01(\tR\aruleSet\x126\n" +
+	"\boriginal\x18\t \x01(\v2\x1a.limitary.v1.OriginalScaleR\boriginalB\t\n" +
 	"\a_centreB\b\n" +
-	"\x06_sigma\"\x81\x02\n" +
+	"\x06_sigma\"\x9d\x02\n" +
 	"\x05Point\x123\n" +
 	"\breadings\x18\x01 \x01(\v2\x15.limitary.v1.ReadingsH\x00R\breadings\x12*\n" +
 	"\x05count\x18\x02 \x01(\v2\x12.limitary.v1.CountH\x00R\x05count\x12\x1e\n" +
 	"\tstatistic\x18\x03 \x01(\x01H\x00R\tstatistic\x12\x1b\n" +
 	"\x06centre\x18\x04 \x01(\x01H\x01R\x06centre\x88\x01\x01\x12\x19\n" +
 	"\x05sigma\x18\x05 \x01(\x01H\x02R\x05sigma\x88\x01\x01\x12!\n" +
-	"\fbreak_before\x18\x06 \x01(\bR\vbreakBeforeB\a\n" +
+	"\fbreak_before\x18\x06 \x01(\bR\vbreakBefore\x12\x1a\n" +
+	"\bmaterial\x18\a \x01(\tR\bmaterialB\a\n" +
 	"\x05valueB\t\n" +
 	"\a_centreB\b\n" +
 	"\x06_sigma\"\"\n" +
@@ -1481,7 +3957,91 @@ const file_limitary_v1_limits_proto_rawDesc = "" +
 	"\rupper_warning\x18\x04 \x01(\v2\x11.limitary.v1.LineR\fupperWarning\"9\n" +
 	"\tExclusion\x12\x14\n" +
 	"\x05point\x18\x01 \x01(\x05R\x05point\x12\x16\n" +
-	"\x06reason\x18\x02 \x01(\tR\x06reason\"\xee\x04\n" +
+	"\x06reason\x18\x02 \x01(\tR\x06reason\"\xa9\x05\n" +
+	"\vKindOptions\x124\n" +
+	"\ttransform\x18\x01 \x01(\v2\x16.limitary.v1.TransformR\ttransform\x12*\n" +
+	"\x06levels\x18\x02 \x03(\v2\x12.limitary.v1.LevelR\x06levels\x125\n" +
+	"\tone_sided\x18\x03 \x01(\x0e2\x18.limitary.v1.WatchedSideR\boneSided\x12(\n" +
+	"\rbetween_sigma\x18\x04 \x01(\x01H\x00R\fbetweenSigma\x88\x01\x01\x12;\n" +
+	"\fcount_method\x18\x05 \x01(\x0e2\x18.limitary.v1.CountMethodR\vcountMethod\x12D\n" +
+	"\x0fextra_variation\x18\x06 \x01(\x0e2\x1b.limitary.v1.ExtraVariationR\x0eextraVariation\x12-\n" +
+	"\x10mean_upper_bound\x18\a \x01(\x01H\x01R\x0emeanUpperBound\x88\x01\x01\x12\x1b\n" +
+	"\tband_from\x18\b \x03(\x01R\bbandFrom\x12\x1d\n" +
+	"\n" +
+	"band_sigma\x18\t \x03(\x01R\tbandSigma\x12'\n" +
+	"\x0fspread_function\x18\n" +
+	" \x01(\bR\x0espreadFunction\x12\x13\n" +
+	"\x02s0\x18\v \x01(\x01H\x02R\x02s0\x88\x01\x01\x12\x11\n" +
+	"\x01b\x18\f \x01(\x01H\x03R\x01b\x88\x01\x01\x12%\n" +
+	"\x0eabsolute_below\x18\r \x01(\x01R\rabsoluteBelow\x12*\n" +
+	"\x0eabsolute_sigma\x18\x0e \x01(\x01H\x04R\rabsoluteSigma\x88\x01\x01B\x10\n" +
+	"\x0e_between_sigmaB\x13\n" +
+	"\x11_mean_upper_boundB\x05\n" +
+	"\x03_s0B\x04\n" +
+	"\x02_bB\x11\n" +
+	"\x0f_absolute_sigma\"\xb0\x04\n" +
+	"\aInForce\x12\x16\n" +
+	"\x06centre\x18\x01 \x01(\x01R\x06centre\x12#\n" +
+	"\rprocess_sigma\x18\x02 \x01(\x01R\fprocessSigma\x12!\n" +
+	"\fcentre_given\x18\x03 \x01(\bR\vcentreGiven\x12\x1f\n" +
+	"\vsigma_given\x18\x04 \x01(\bR\n" +
+	"sigmaGiven\x12\f\n" +
+	"\x01n\x18\x05 \x01(\x05R\x01n\x12\x1a\n" +
+	"\breadings\x18\x06 \x01(\x05R\breadings\x12,\n" +
+	"\x12degrees_of_freedom\x18\a \x01(\x01R\x10degreesOfFreedom\x124\n" +
+	"\testimator\x18\b \x01(\x0e2\x16.limitary.v1.EstimatorR\testimator\x127\n" +
+	"\x15relevant_shift_sigmas\x18\t \x01(\x01H\x00R\x13relevantShiftSigmas\x88\x01\x01\x125\n" +
+	"\x14relevant_sigma_ratio\x18\n" +
+	" \x01(\x01H\x01R\x12relevantSigmaRatio\x88\x01\x01\x12!\n" +
+	"\fafter_signal\x18\v \x01(\bR\vafterSignal\x12\x14\n" +
+	"\x05looks\x18\f \x01(\x05R\x05looks\x12(\n" +
+	"\rbetween_sigma\x18\r \x01(\x01H\x02R\fbetweenSigma\x88\x01\x01B\x18\n" +
+	"\x16_relevant_shift_sigmasB\x17\n" +
+	"\x15_relevant_sigma_ratioB\x10\n" +
+	"\x0e_between_sigma\"\xaa\x04\n" +
+	"\n" +
+	"ChangeTest\x12\x18\n" +
+	"\aagainst\x18\x01 \x01(\x05R\aagainst\x12\x18\n" +
+	"\aresults\x18\x02 \x01(\x05R\aresults\x12\x1a\n" +
+	"\bexcluded\x18\x03 \x01(\x05R\bexcluded\x12 \n" +
+	"\fin_old_basis\x18\x04 \x01(\x05R\n" +
+	"inOldBasis\x121\n" +
+	"\x06centre\x18\x05 \x01(\v2\x19.limitary.v1.ChangeFigureR\x06centre\x121\n" +
+	"\x06spread\x18\x06 \x01(\v2\x19.limitary.v1.ChangeFigureR\x06spread\x12/\n" +
+	"\x05means\x18\a \x01(\v2\x19.limitary.v1.ChangeFigureR\x05means\x127\n" +
+	"\bdecision\x18\b \x01(\x0e2\x1b.limitary.v1.ChangeDecisionR\bdecision\x12\x14\n" +
+	"\x05looks\x18\t \x01(\x05R\x05looks\x12\"\n" +
+	"\rone_wrong_max\x18\n" +
+	" \x01(\x01R\voneWrongMax\x12\x12\n" +
+	"\x04lag1\x18\v \x01(\x01R\x04lag1\x120\n" +
+	"\x14effective_for_centre\x18\f \x01(\x01R\x12effectiveForCentre\x120\n" +
+	"\x14effective_for_spread\x18\r \x01(\x01R\x12effectiveForSpread\x12\x12\n" +
+	"\x04text\x18\x0e \x01(\tR\x04text\x12\x14\n" +
+	"\x05notes\x18\x0f \x03(\tR\x05notes\"\xbe\x04\n" +
+	"\fChangeFigure\x12\x1f\n" +
+	"\bestimate\x18\x01 \x01(\x01H\x00R\bestimate\x88\x01\x01\x12\x19\n" +
+	"\x05lower\x18\x02 \x01(\x01H\x01R\x05lower\x88\x01\x01\x12\x19\n" +
+	"\x05upper\x18\x03 \x01(\x01H\x02R\x05upper\x88\x01\x01\x12%\n" +
+	"\x0erelevant_lower\x18\x04 \x01(\x01R\rrelevantLower\x12%\n" +
+	"\x0erelevant_upper\x18\x05 \x01(\x01R\rrelevantUpper\x127\n" +
+	"\bdecision\x18\x06 \x01(\x0e2\x1b.limitary.v1.ChangeDecisionR\bdecision\x12\x16\n" +
+	"\x06reason\x18\a \x01(\tR\x06reason\x12\x18\n" +
+	"\adiffers\x18\b \x01(\bR\adiffers\x12\x1b\n" +
+	"\x06needed\x18\t \x01(\x05H\x03R\x06needed\x88\x01\x01\x12J\n" +
+	"\x12published_decision\x18\n" +
+	" \x01(\x0e2\x1b.limitary.v1.ChangeDecisionR\x11publishedDecision\x12\x11\n" +
+	"\x01p\x18\v \x01(\x01H\x04R\x01p\x88\x01\x01\x12\x17\n" +
+	"\ap_valid\x18\f \x01(\bR\x06pValid\x12\x19\n" +
+	"\bp_reason\x18\r \x01(\tR\apReason\x12\x1c\n" +
+	"\aplain_p\x18\x0e \x01(\x01H\x05R\x06plainP\x88\x01\x01\x12\x12\n" +
+	"\x04text\x18\x0f \x01(\tR\x04textB\v\n" +
+	"\t_estimateB\b\n" +
+	"\x06_lowerB\b\n" +
+	"\x06_upperB\t\n" +
+	"\a_neededB\x04\n" +
+	"\x02_pB\n" +
+	"\n" +
+	"\b_plain_p\"\xd3\x05\n" +
 	"\x14ComputeLimitsRequest\x12*\n" +
 	"\x04kind\x18\x01 \x01(\x0e2\x16.limitary.v1.ChartKindR\x04kind\x12#\n" +
 	"\rsubgroup_size\x18\x02 \x01(\x05R\fsubgroupSize\x12-\n" +
@@ -1496,11 +4056,120 @@ const file_limitary_v1_limits_proto_rawDesc = "" +
 	" \x01(\v2\x17.limitary.v1.FixedLinesR\x0fdispersionLines\x126\n" +
 	"\n" +
 	"exclusions\x18\v \x03(\v2\x16.limitary.v1.ExclusionR\n" +
-	"exclusionsB\x06\n" +
+	"exclusions\x122\n" +
+	"\aoptions\x18\f \x01(\v2\x18.limitary.v1.KindOptionsR\aoptions\x12/\n" +
+	"\bin_force\x18\r \x01(\v2\x14.limitary.v1.InForceR\ainForceB\x06\n" +
 	"\x04dataB\x15\n" +
 	"\x13_published_decimalsB\t\n" +
 	"\a_centreB\x10\n" +
-	"\x0e_process_sigma\"\x8d\x01\n" +
+	"\x0e_process_sigma\"\xd3\x01\n" +
+	"\x11VarianceComponent\x12\x12\n" +
+	"\x04name\x18\x01 \x01(\tR\x04name\x12\x14\n" +
+	"\x05sigma\x18\x02 \x01(\x01R\x05sigma\x12,\n" +
+	"\x12degrees_of_freedom\x18\x03 \x01(\x01R\x10degreesOfFreedom\x12\x19\n" +
+	"\x05lower\x18\x04 \x01(\x01H\x00R\x05lower\x88\x01\x01\x12\x19\n" +
+	"\x05upper\x18\x05 \x01(\x01H\x01R\x05upper\x88\x01\x01\x12\x1c\n" +
+	"\ttruncated\x18\x06 \x01(\bR\ttruncatedB\b\n" +
+	"\x06_lowerB\b\n" +
+	"\x06_upper\"\x86\x02\n" +
+	"\tSigmaPart\x12\x12\n" +
+	"\x04name\x18\x01 \x01(\tR\x04name\x12\x12\n" +
+	"\x04from\x18\x02 \x01(\x01R\x04from\x12\x16\n" +
+	"\x06groups\x18\x03 \x01(\x05R\x06groups\x12\x14\n" +
+	"\x05sigma\x18\x04 \x01(\x01R\x05sigma\x12+\n" +
+	"\x06origin\x18\x05 \x01(\x0e2\x13.limitary.v1.OriginR\x06origin\x12,\n" +
+	"\x12degrees_of_freedom\x18\x06 \x01(\x01R\x10degreesOfFreedom\x12\x19\n" +
+	"\x05lower\x18\a \x01(\x01H\x00R\x05lower\x88\x01\x01\x12\x19\n" +
+	"\x05upper\x18\b \x01(\x01H\x01R\x05upper\x88\x01\x01B\b\n" +
+	"\x06_lowerB\b\n" +
+	"\x06_upper\"\x9e\x01\n" +
+	"\n" +
+	"TailFigure\x12,\n" +
+	"\x05trace\x18\x01 \x01(\x0e2\x16.limitary.v1.TraceRoleR\x05trace\x12\x12\n" +
+	"\x04line\x18\x02 \x01(\tR\x04line\x12\x12\n" +
+	"\x04size\x18\x03 \x01(\x01R\x04size\x12 \n" +
+	"\vprobability\x18\x04 \x01(\x01R\vprobability\x12\x18\n" +
+	"\anominal\x18\x05 \x01(\x01R\anominal\"f\n" +
+	"\x0eFalseAlarmRate\x12\x18\n" +
+	"\anominal\x18\x01 \x01(\x01R\anominal\x12\x16\n" +
+	"\x06median\x18\x02 \x01(\x01R\x06median\x12\x10\n" +
+	"\x03p10\x18\x03 \x01(\x01R\x03p10\x12\x10\n" +
+	"\x03p90\x18\x04 \x01(\x01R\x03p90\"\xf9\x03\n" +
+	"\bCompared\x12\x17\n" +
+	"\x04bias\x18\x01 \x01(\x01H\x00R\x04bias\x88\x01\x01\x12\"\n" +
+	"\n" +
+	"bias_lower\x18\x02 \x01(\x01H\x01R\tbiasLower\x88\x01\x01\x12\"\n" +
+	"\n" +
+	"bias_upper\x18\x03 \x01(\x01H\x02R\tbiasUpper\x88\x01\x01\x12\x19\n" +
+	"\x05ratio\x18\x04 \x01(\x01H\x03R\x05ratio\x88\x01\x01\x12$\n" +
+	"\vratio_lower\x18\x05 \x01(\x01H\x04R\n" +
+	"ratioLower\x88\x01\x01\x12$\n" +
+	"\vratio_upper\x18\x06 \x01(\x01H\x05R\n" +
+	"ratioUpper\x88\x01\x01\x12(\n" +
+	"\rbetween_ratio\x18\a \x01(\x01H\x06R\fbetweenRatio\x88\x01\x01\x123\n" +
+	"\x13between_ratio_lower\x18\b \x01(\x01H\aR\x11betweenRatioLower\x88\x01\x01\x123\n" +
+	"\x13between_ratio_upper\x18\t \x01(\x01H\bR\x11betweenRatioUpper\x88\x01\x01B\a\n" +
+	"\x05_biasB\r\n" +
+	"\v_bias_lowerB\r\n" +
+	"\v_bias_upperB\b\n" +
+	"\x06_ratioB\x0e\n" +
+	"\f_ratio_lowerB\x0e\n" +
+	"\f_ratio_upperB\x10\n" +
+	"\x0e_between_ratioB\x16\n" +
+	"\x14_between_ratio_lowerB\x16\n" +
+	"\x14_between_ratio_upper\"\xdf\x02\n" +
+	"\x0eDiagnosticTest\x12\x12\n" +
+	"\x04code\x18\x01 \x01(\tR\x04code\x12\x12\n" +
+	"\x04name\x18\x02 \x01(\tR\x04name\x12\x18\n" +
+	"\asubject\x18\x03 \x01(\tR\asubject\x12\f\n" +
+	"\x01n\x18\x04 \x01(\x05R\x01n\x12!\n" +
+	"\tstatistic\x18\x05 \x01(\x01H\x00R\tstatistic\x88\x01\x01\x12\x11\n" +
+	"\x01p\x18\x06 \x01(\x01H\x01R\x01p\x88\x01\x01\x12\x1f\n" +
+	"\bcritical\x18\a \x01(\x01H\x02R\bcritical\x88\x01\x01\x12\x14\n" +
+	"\x05level\x18\b \x01(\x01R\x05level\x128\n" +
+	"\aoutcome\x18\t \x01(\x0e2\x1e.limitary.v1.DiagnosticOutcomeR\aoutcome\x12\x16\n" +
+	"\x06reason\x18\n" +
+	" \x01(\tR\x06reason\x12\x1d\n" +
+	"\n" +
+	"could_miss\x18\v \x01(\tR\tcouldMissB\f\n" +
+	"\n" +
+	"_statisticB\x04\n" +
+	"\x02_pB\v\n" +
+	"\t_critical\"z\n" +
+	"\n" +
+	"SetupCount\x12\x12\n" +
+	"\x04rule\x18\x01 \x01(\tR\x04rule\x12 \n" +
+	"\vdescription\x18\x02 \x01(\tR\vdescription\x12\x1a\n" +
+	"\bobserved\x18\x03 \x01(\x05R\bobserved\x12\x1a\n" +
+	"\bexpected\x18\x04 \x01(\x01R\bexpected\"w\n" +
+	"\tHistogram\x12\x14\n" +
+	"\x05lower\x18\x01 \x01(\x01R\x05lower\x12\x14\n" +
+	"\x05width\x18\x02 \x01(\x01R\x05width\x12\x12\n" +
+	"\x04step\x18\x03 \x01(\x01R\x04step\x12\x16\n" +
+	"\x06counts\x18\x04 \x03(\x05R\x06counts\x12\x12\n" +
+	"\x04rule\x18\x05 \x01(\tR\x04rule\"\xab\x01\n" +
+	"\aPicture\x12\x18\n" +
+	"\asubject\x18\x01 \x01(\tR\asubject\x124\n" +
+	"\thistogram\x18\x02 \x01(\v2\x16.limitary.v1.HistogramR\thistogram\x12)\n" +
+	"\x10normal_quantiles\x18\x03 \x03(\x01R\x0fnormalQuantiles\x12%\n" +
+	"\x0eordered_values\x18\x04 \x03(\x01R\rorderedValues\"\x81\x03\n" +
+	"\vDiagnostics\x12\x16\n" +
+	"\x06groups\x18\x01 \x01(\x05R\x06groups\x12\x1a\n" +
+	"\breadings\x18\x02 \x01(\x05R\breadings\x12\x17\n" +
+	"\x04days\x18\x03 \x01(\x05H\x00R\x04days\x88\x01\x01\x12\x17\n" +
+	"\x04runs\x18\x04 \x01(\x05H\x01R\x04runs\x88\x01\x01\x12\x12\n" +
+	"\x04step\x18\x05 \x01(\x01R\x04step\x12\x12\n" +
+	"\x04tied\x18\x06 \x01(\x01R\x04tied\x121\n" +
+	"\x05tests\x18\a \x03(\v2\x1b.limitary.v1.DiagnosticTestR\x05tests\x12-\n" +
+	"\x05setup\x18\b \x03(\v2\x17.limitary.v1.SetupCountR\x05setup\x12\x1d\n" +
+	"\n" +
+	"joint_rate\x18\t \x01(\x01R\tjointRate\x12\x1f\n" +
+	"\vjoint_bound\x18\n" +
+	" \x01(\x01R\n" +
+	"jointBound\x120\n" +
+	"\bpictures\x18\v \x03(\v2\x14.limitary.v1.PictureR\bpicturesB\a\n" +
+	"\x05_daysB\a\n" +
+	"\x05_runs\"\x8d\x01\n" +
 	"\rSigmaEstimate\x12\x12\n" +
 	"\x04name\x18\x01 \x01(\tR\x04name\x12\x14\n" +
 	"\x05sigma\x18\x02 \x01(\x01R\x05sigma\x12,\n" +
@@ -1519,7 +4188,7 @@ const file_limitary_v1_limits_proto_rawDesc = "" +
 	"\x04text\x18\x04 \x01(\tR\x04text\x12\x16\n" +
 	"\x06advice\x18\x05 \x01(\tR\x06advice\x12\x1d\n" +
 	"\n" +
-	"could_miss\x18\x06 \x01(\tR\tcouldMiss\"\xec\x05\n" +
+	"could_miss\x18\x06 \x01(\tR\tcouldMiss\"\x9a\t\n" +
 	"\x15ComputeLimitsResponse\x12*\n" +
 	"\x04kind\x18\x01 \x01(\x0e2\x16.limitary.v1.ChartKindR\x04kind\x12#\n" +
 	"\rsubgroup_size\x18\x02 \x01(\x05R\fsubgroupSize\x12-\n" +
@@ -1541,19 +4210,47 @@ const file_limitary_v1_limits_proto_rawDesc = "" +
 	"\n" +
 	"exclusions\x18\x0f \x03(\v2\x16.limitary.v1.ExclusionR\n" +
 	"exclusions\x120\n" +
-	"\bfindings\x18\x10 \x03(\v2\x14.limitary.v1.FindingR\bfindings*q\n" +
+	"\bfindings\x18\x10 \x03(\v2\x14.limitary.v1.FindingR\bfindings\x12(\n" +
+	"\x05model\x18\x11 \x01(\v2\x12.limitary.v1.ModelR\x05model\x12>\n" +
+	"\n" +
+	"components\x18\x12 \x03(\v2\x1e.limitary.v1.VarianceComponentR\n" +
+	"components\x12-\n" +
+	"\x05tails\x18\x13 \x03(\v2\x17.limitary.v1.TailFigureR\x05tails\x12<\n" +
+	"\vfalse_alarm\x18\x14 \x01(\v2\x1b.limitary.v1.FalseAlarmRateR\n" +
+	"falseAlarm\x121\n" +
+	"\bcompared\x18\x15 \x01(\v2\x15.limitary.v1.ComparedR\bcompared\x12:\n" +
+	"\vdiagnostics\x18\x16 \x01(\v2\x18.limitary.v1.DiagnosticsR\vdiagnostics\x128\n" +
+	"\vchange_test\x18\x17 \x01(\v2\x17.limitary.v1.ChangeTestR\n" +
+	"changeTest\x12,\n" +
+	"\x05parts\x18\x18 \x03(\v2\x16.limitary.v1.SigmaPartR\x05parts*\x93\x02\n" +
 	"\tChartKind\x12\x1a\n" +
 	"\x16CHART_KIND_UNSPECIFIED\x10\x00\x12\x1a\n" +
 	"\x16CHART_KIND_INDIVIDUALS\x10\x01\x12\x15\n" +
 	"\x11CHART_KIND_XBAR_R\x10\x02\x12\x15\n" +
-	"\x11CHART_KIND_XBAR_S\x10\x03*\x94\x01\n" +
+	"\x11CHART_KIND_XBAR_S\x10\x03\x12\x18\n" +
+	"\x14CHART_KIND_RUN_MEANS\x10\x04\x12\x10\n" +
+	"\fCHART_KIND_P\x10\x05\x12\x11\n" +
+	"\rCHART_KIND_NP\x10\x06\x12\x10\n" +
+	"\fCHART_KIND_C\x10\a\x12\x10\n" +
+	"\fCHART_KIND_U\x10\b\x12\x1e\n" +
+	"\x1aCHART_KIND_DUPLICATE_RANGE\x10\t\x12\x1d\n" +
+	"\x19CHART_KIND_RELATIVE_RANGE\x10\n" +
+	"*\x94\x01\n" +
 	"\x05Basis\x12\x15\n" +
 	"\x11BASIS_UNSPECIFIED\x10\x00\x12\x18\n" +
 	"\x14BASIS_SIGMA_MULTIPLE\x10\x01\x12\x1a\n" +
 	"\x16BASIS_TAIL_PROBABILITY\x10\x02\x12\x1a\n" +
 	"\x16BASIS_METHOD_CRITERION\x10\x03\x12\x10\n" +
 	"\fBASIS_TARGET\x10\x04\x12\x10\n" +
-	"\fBASIS_ABSENT\x10\x05*\xd1\x01\n" +
+	"\fBASIS_ABSENT\x10\x05*\\\n" +
+	"\vCountMethod\x12\x1c\n" +
+	"\x18COUNT_METHOD_UNSPECIFIED\x10\x00\x12\x17\n" +
+	"\x13COUNT_METHOD_NORMAL\x10\x01\x12\x16\n" +
+	"\x12COUNT_METHOD_EXACT\x10\x02*g\n" +
+	"\rTransformKind\x12\x1e\n" +
+	"\x1aTRANSFORM_KIND_UNSPECIFIED\x10\x00\x12\x16\n" +
+	"\x12TRANSFORM_KIND_LOG\x10\x01\x12\x1e\n" +
+	"\x1aTRANSFORM_KIND_SQUARE_ROOT\x10\x02*\xd1\x01\n" +
 	"\tEstimator\x12\x19\n" +
 	"\x15ESTIMATOR_UNSPECIFIED\x10\x00\x12\x1f\n" +
 	"\x1bESTIMATOR_MEAN_MOVING_RANGE\x10\x01\x12!\n" +
@@ -1565,7 +4262,26 @@ const file_limitary_v1_limits_proto_rawDesc = "" +
 	"\x06Origin\x12\x16\n" +
 	"\x12ORIGIN_UNSPECIFIED\x10\x00\x12\x14\n" +
 	"\x10ORIGIN_ESTIMATED\x10\x01\x12\x10\n" +
-	"\fORIGIN_GIVEN\x10\x02B%Z#limitary/api/limitary/v1;limitaryv1b\x06proto3"
+	"\fORIGIN_GIVEN\x10\x02*[\n" +
+	"\vWatchedSide\x12\x1c\n" +
+	"\x18WATCHED_SIDE_UNSPECIFIED\x10\x00\x12\x16\n" +
+	"\x12WATCHED_SIDE_UPPER\x10\x01\x12\x16\n" +
+	"\x12WATCHED_SIDE_LOWER\x10\x02*r\n" +
+	"\x0eExtraVariation\x12\x1f\n" +
+	"\x1bEXTRA_VARIATION_UNSPECIFIED\x10\x00\x12\x1a\n" +
+	"\x16EXTRA_VARIATION_FACTOR\x10\x01\x12#\n" +
+	"\x1fEXTRA_VARIATION_BETWEEN_SAMPLES\x10\x02*\x8c\x01\n" +
+	"\x0eChangeDecision\x12\x1f\n" +
+	"\x1bCHANGE_DECISION_UNSPECIFIED\x10\x00\x12\x18\n" +
+	"\x14CHANGE_DECISION_KEEP\x10\x01\x12\x1a\n" +
+	"\x16CHANGE_DECISION_CHANGE\x10\x02\x12#\n" +
+	"\x1fCHANGE_DECISION_NOT_ENOUGH_DATA\x10\x03*\xc0\x01\n" +
+	"\x11DiagnosticOutcome\x12\"\n" +
+	"\x1eDIAGNOSTIC_OUTCOME_UNSPECIFIED\x10\x00\x12$\n" +
+	" DIAGNOSTIC_OUTCOME_NOTHING_FOUND\x10\x01\x12\x1c\n" +
+	"\x18DIAGNOSTIC_OUTCOME_FOUND\x10\x02\x12\x1b\n" +
+	"\x17DIAGNOSTIC_OUTCOME_VOID\x10\x03\x12&\n" +
+	"\"DIAGNOSTIC_OUTCOME_NOT_ENOUGH_DATA\x10\x04B%Z#limitary/api/limitary/v1;limitaryv1b\x06proto3"
 
 var (
 	file_limitary_v1_limits_proto_rawDescOnce sync.Once
@@ -1579,64 +4295,127 @@ func file_limitary_v1_limits_proto_rawDescGZIP() []byte {
 	return file_limitary_v1_limits_proto_rawDescData
 }
 
-var file_limitary_v1_limits_proto_enumTypes = make([]protoimpl.EnumInfo, 4)
-var file_limitary_v1_limits_proto_msgTypes = make([]protoimpl.MessageInfo, 14)
+var file_limitary_v1_limits_proto_enumTypes = make([]protoimpl.EnumInfo, 10)
+var file_limitary_v1_limits_proto_msgTypes = make([]protoimpl.MessageInfo, 34)
 var file_limitary_v1_limits_proto_goTypes = []any{
 	(ChartKind)(0),                // 0: limitary.v1.ChartKind
 	(Basis)(0),                    // 1: limitary.v1.Basis
-	(Estimator)(0),                // 2: limitary.v1.Estimator
-	(Origin)(0),                   // 3: limitary.v1.Origin
-	(*Line)(nil),                  // 4: limitary.v1.Line
-	(*TraceLimits)(nil),           // 5: limitary.v1.TraceLimits
-	(*Point)(nil),                 // 6: limitary.v1.Point
-	(*Readings)(nil),              // 7: limitary.v1.Readings
-	(*Count)(nil),                 // 8: limitary.v1.Count
-	(*Points)(nil),                // 9: limitary.v1.Points
-	(*Series)(nil),                // 10: limitary.v1.Series
-	(*FixedLines)(nil),            // 11: limitary.v1.FixedLines
-	(*Exclusion)(nil),             // 12: limitary.v1.Exclusion
-	(*ComputeLimitsRequest)(nil),  // 13: limitary.v1.ComputeLimitsRequest
-	(*SigmaEstimate)(nil),         // 14: limitary.v1.SigmaEstimate
-	(*Interval)(nil),              // 15: limitary.v1.Interval
-	(*Finding)(nil),               // 16: limitary.v1.Finding
-	(*ComputeLimitsResponse)(nil), // 17: limitary.v1.ComputeLimitsResponse
-	(*RuleSpec)(nil),              // 18: limitary.v1.RuleSpec
+	(CountMethod)(0),              // 2: limitary.v1.CountMethod
+	(TransformKind)(0),            // 3: limitary.v1.TransformKind
+	(Estimator)(0),                // 4: limitary.v1.Estimator
+	(Origin)(0),                   // 5: limitary.v1.Origin
+	(WatchedSide)(0),              // 6: limitary.v1.WatchedSide
+	(ExtraVariation)(0),           // 7: limitary.v1.ExtraVariation
+	(ChangeDecision)(0),           // 8: limitary.v1.ChangeDecision
+	(DiagnosticOutcome)(0),        // 9: limitary.v1.DiagnosticOutcome
+	(*Line)(nil),                  // 10: limitary.v1.Line
+	(*Model)(nil),                 // 11: limitary.v1.Model
+	(*Transform)(nil),             // 12: limitary.v1.Transform
+	(*Level)(nil),                 // 13: limitary.v1.Level
+	(*DuplicateSpread)(nil),       // 14: limitary.v1.DuplicateSpread
+	(*SpreadBand)(nil),            // 15: limitary.v1.SpreadBand
+	(*OriginalScale)(nil),         // 16: limitary.v1.OriginalScale
+	(*TraceLimits)(nil),           // 17: limitary.v1.TraceLimits
+	(*Point)(nil),                 // 18: limitary.v1.Point
+	(*Readings)(nil),              // 19: limitary.v1.Readings
+	(*Count)(nil),                 // 20: limitary.v1.Count
+	(*Points)(nil),                // 21: limitary.v1.Points
+	(*Series)(nil),                // 22: limitary.v1.Series
+	(*FixedLines)(nil),            // 23: limitary.v1.FixedLines
+	(*Exclusion)(nil),             // 24: limitary.v1.Exclusion
+	(*KindOptions)(nil),           // 25: limitary.v1.KindOptions
+	(*InForce)(nil),               // 26: limitary.v1.InForce
+	(*ChangeTest)(nil),            // 27: limitary.v1.ChangeTest
+	(*ChangeFigure)(nil),          // 28: limitary.v1.ChangeFigure
+	(*ComputeLimitsRequest)(nil),  // 29: limitary.v1.ComputeLimitsRequest
+	(*VarianceComponent)(nil),     // 30: limitary.v1.VarianceComponent
+	(*SigmaPart)(nil),             // 31: limitary.v1.SigmaPart
+	(*TailFigure)(nil),            // 32: limitary.v1.TailFigure
+	(*FalseAlarmRate)(nil),        // 33: limitary.v1.FalseAlarmRate
+	(*Compared)(nil),              // 34: limitary.v1.Compared
+	(*DiagnosticTest)(nil),        // 35: limitary.v1.DiagnosticTest
+	(*SetupCount)(nil),            // 36: limitary.v1.SetupCount
+	(*Histogram)(nil),             // 37: limitary.v1.Histogram
+	(*Picture)(nil),               // 38: limitary.v1.Picture
+	(*Diagnostics)(nil),           // 39: limitary.v1.Diagnostics
+	(*SigmaEstimate)(nil),         // 40: limitary.v1.SigmaEstimate
+	(*Interval)(nil),              // 41: limitary.v1.Interval
+	(*Finding)(nil),               // 42: limitary.v1.Finding
+	(*ComputeLimitsResponse)(nil), // 43: limitary.v1.ComputeLimitsResponse
+	(*RuleSpec)(nil),              // 44: limitary.v1.RuleSpec
+	(TraceRole)(0),                // 45: limitary.v1.TraceRole
 }
 var file_limitary_v1_limits_proto_depIdxs = []int32{
 	1,  // 0: limitary.v1.Line.basis:type_name -> limitary.v1.Basis
-	4,  // 1: limitary.v1.TraceLimits.lower_action:type_name -> limitary.v1.Line
-	4,  // 2: limitary.v1.TraceLimits.upper_action:type_name -> limitary.v1.Line
-	4,  // 3: limitary.v1.TraceLimits.lower_warning:type_name -> limitary.v1.Line
-	4,  // 4: limitary.v1.TraceLimits.upper_warning:type_name -> limitary.v1.Line
-	18, // 5: limitary.v1.TraceLimits.rules:type_name -> limitary.v1.RuleSpec
-	7,  // 6: limitary.v1.Point.readings:type_name -> limitary.v1.Readings
-	8,  // 7: limitary.v1.Point.count:type_name -> limitary.v1.Count
-	6,  // 8: limitary.v1.Points.points:type_name -> limitary.v1.Point
-	4,  // 9: limitary.v1.FixedLines.lower_action:type_name -> limitary.v1.Line
-	4,  // 10: limitary.v1.FixedLines.upper_action:type_name -> limitary.v1.Line
-	4,  // 11: limitary.v1.FixedLines.lower_warning:type_name -> limitary.v1.Line
-	4,  // 12: limitary.v1.FixedLines.upper_warning:type_name -> limitary.v1.Line
-	0,  // 13: limitary.v1.ComputeLimitsRequest.kind:type_name -> limitary.v1.ChartKind
-	9,  // 14: limitary.v1.ComputeLimitsRequest.points:type_name -> limitary.v1.Points
-	10, // 15: limitary.v1.ComputeLimitsRequest.series:type_name -> limitary.v1.Series
-	2,  // 16: limitary.v1.ComputeLimitsRequest.estimator:type_name -> limitary.v1.Estimator
-	11, // 17: limitary.v1.ComputeLimitsRequest.location_lines:type_name -> limitary.v1.FixedLines
-	11, // 18: limitary.v1.ComputeLimitsRequest.dispersion_lines:type_name -> limitary.v1.FixedLines
-	12, // 19: limitary.v1.ComputeLimitsRequest.exclusions:type_name -> limitary.v1.Exclusion
-	0,  // 20: limitary.v1.ComputeLimitsResponse.kind:type_name -> limitary.v1.ChartKind
-	5,  // 21: limitary.v1.ComputeLimitsResponse.location:type_name -> limitary.v1.TraceLimits
-	5,  // 22: limitary.v1.ComputeLimitsResponse.dispersion:type_name -> limitary.v1.TraceLimits
-	3,  // 23: limitary.v1.ComputeLimitsResponse.centre_origin:type_name -> limitary.v1.Origin
-	3,  // 24: limitary.v1.ComputeLimitsResponse.sigma_origin:type_name -> limitary.v1.Origin
-	14, // 25: limitary.v1.ComputeLimitsResponse.estimates:type_name -> limitary.v1.SigmaEstimate
-	15, // 26: limitary.v1.ComputeLimitsResponse.intervals:type_name -> limitary.v1.Interval
-	12, // 27: limitary.v1.ComputeLimitsResponse.exclusions:type_name -> limitary.v1.Exclusion
-	16, // 28: limitary.v1.ComputeLimitsResponse.findings:type_name -> limitary.v1.Finding
-	29, // [29:29] is the sub-list for method output_type
-	29, // [29:29] is the sub-list for method input_type
-	29, // [29:29] is the sub-list for extension type_name
-	29, // [29:29] is the sub-list for extension extendee
-	0,  // [0:29] is the sub-list for field type_name
+	2,  // 1: limitary.v1.Model.count_method:type_name -> limitary.v1.CountMethod
+	12, // 2: limitary.v1.Model.transform:type_name -> limitary.v1.Transform
+	13, // 3: limitary.v1.Model.levels:type_name -> limitary.v1.Level
+	14, // 4: limitary.v1.Model.spread:type_name -> limitary.v1.DuplicateSpread
+	3,  // 5: limitary.v1.Transform.kind:type_name -> limitary.v1.TransformKind
+	15, // 6: limitary.v1.DuplicateSpread.bands:type_name -> limitary.v1.SpreadBand
+	10, // 7: limitary.v1.TraceLimits.lower_action:type_name -> limitary.v1.Line
+	10, // 8: limitary.v1.TraceLimits.upper_action:type_name -> limitary.v1.Line
+	10, // 9: limitary.v1.TraceLimits.lower_warning:type_name -> limitary.v1.Line
+	10, // 10: limitary.v1.TraceLimits.upper_warning:type_name -> limitary.v1.Line
+	44, // 11: limitary.v1.TraceLimits.rules:type_name -> limitary.v1.RuleSpec
+	16, // 12: limitary.v1.TraceLimits.original:type_name -> limitary.v1.OriginalScale
+	19, // 13: limitary.v1.Point.readings:type_name -> limitary.v1.Readings
+	20, // 14: limitary.v1.Point.count:type_name -> limitary.v1.Count
+	18, // 15: limitary.v1.Points.points:type_name -> limitary.v1.Point
+	10, // 16: limitary.v1.FixedLines.lower_action:type_name -> limitary.v1.Line
+	10, // 17: limitary.v1.FixedLines.upper_action:type_name -> limitary.v1.Line
+	10, // 18: limitary.v1.FixedLines.lower_warning:type_name -> limitary.v1.Line
+	10, // 19: limitary.v1.FixedLines.upper_warning:type_name -> limitary.v1.Line
+	12, // 20: limitary.v1.KindOptions.transform:type_name -> limitary.v1.Transform
+	13, // 21: limitary.v1.KindOptions.levels:type_name -> limitary.v1.Level
+	6,  // 22: limitary.v1.KindOptions.one_sided:type_name -> limitary.v1.WatchedSide
+	2,  // 23: limitary.v1.KindOptions.count_method:type_name -> limitary.v1.CountMethod
+	7,  // 24: limitary.v1.KindOptions.extra_variation:type_name -> limitary.v1.ExtraVariation
+	4,  // 25: limitary.v1.InForce.estimator:type_name -> limitary.v1.Estimator
+	28, // 26: limitary.v1.ChangeTest.centre:type_name -> limitary.v1.ChangeFigure
+	28, // 27: limitary.v1.ChangeTest.spread:type_name -> limitary.v1.ChangeFigure
+	28, // 28: limitary.v1.ChangeTest.means:type_name -> limitary.v1.ChangeFigure
+	8,  // 29: limitary.v1.ChangeTest.decision:type_name -> limitary.v1.ChangeDecision
+	8,  // 30: limitary.v1.ChangeFigure.decision:type_name -> limitary.v1.ChangeDecision
+	8,  // 31: limitary.v1.ChangeFigure.published_decision:type_name -> limitary.v1.ChangeDecision
+	0,  // 32: limitary.v1.ComputeLimitsRequest.kind:type_name -> limitary.v1.ChartKind
+	21, // 33: limitary.v1.ComputeLimitsRequest.points:type_name -> limitary.v1.Points
+	22, // 34: limitary.v1.ComputeLimitsRequest.series:type_name -> limitary.v1.Series
+	4,  // 35: limitary.v1.ComputeLimitsRequest.estimator:type_name -> limitary.v1.Estimator
+	23, // 36: limitary.v1.ComputeLimitsRequest.location_lines:type_name -> limitary.v1.FixedLines
+	23, // 37: limitary.v1.ComputeLimitsRequest.dispersion_lines:type_name -> limitary.v1.FixedLines
+	24, // 38: limitary.v1.ComputeLimitsRequest.exclusions:type_name -> limitary.v1.Exclusion
+	25, // 39: limitary.v1.ComputeLimitsRequest.options:type_name -> limitary.v1.KindOptions
+	26, // 40: limitary.v1.ComputeLimitsRequest.in_force:type_name -> limitary.v1.InForce
+	5,  // 41: limitary.v1.SigmaPart.origin:type_name -> limitary.v1.Origin
+	45, // 42: limitary.v1.TailFigure.trace:type_name -> limitary.v1.TraceRole
+	9,  // 43: limitary.v1.DiagnosticTest.outcome:type_name -> limitary.v1.DiagnosticOutcome
+	37, // 44: limitary.v1.Picture.histogram:type_name -> limitary.v1.Histogram
+	35, // 45: limitary.v1.Diagnostics.tests:type_name -> limitary.v1.DiagnosticTest
+	36, // 46: limitary.v1.Diagnostics.setup:type_name -> limitary.v1.SetupCount
+	38, // 47: limitary.v1.Diagnostics.pictures:type_name -> limitary.v1.Picture
+	0,  // 48: limitary.v1.ComputeLimitsResponse.kind:type_name -> limitary.v1.ChartKind
+	17, // 49: limitary.v1.ComputeLimitsResponse.location:type_name -> limitary.v1.TraceLimits
+	17, // 50: limitary.v1.ComputeLimitsResponse.dispersion:type_name -> limitary.v1.TraceLimits
+	5,  // 51: limitary.v1.ComputeLimitsResponse.centre_origin:type_name -> limitary.v1.Origin
+	5,  // 52: limitary.v1.ComputeLimitsResponse.sigma_origin:type_name -> limitary.v1.Origin
+	40, // 53: limitary.v1.ComputeLimitsResponse.estimates:type_name -> limitary.v1.SigmaEstimate
+	41, // 54: limitary.v1.ComputeLimitsResponse.intervals:type_name -> limitary.v1.Interval
+	24, // 55: limitary.v1.ComputeLimitsResponse.exclusions:type_name -> limitary.v1.Exclusion
+	42, // 56: limitary.v1.ComputeLimitsResponse.findings:type_name -> limitary.v1.Finding
+	11, // 57: limitary.v1.ComputeLimitsResponse.model:type_name -> limitary.v1.Model
+	30, // 58: limitary.v1.ComputeLimitsResponse.components:type_name -> limitary.v1.VarianceComponent
+	32, // 59: limitary.v1.ComputeLimitsResponse.tails:type_name -> limitary.v1.TailFigure
+	33, // 60: limitary.v1.ComputeLimitsResponse.false_alarm:type_name -> limitary.v1.FalseAlarmRate
+	34, // 61: limitary.v1.ComputeLimitsResponse.compared:type_name -> limitary.v1.Compared
+	39, // 62: limitary.v1.ComputeLimitsResponse.diagnostics:type_name -> limitary.v1.Diagnostics
+	27, // 63: limitary.v1.ComputeLimitsResponse.change_test:type_name -> limitary.v1.ChangeTest
+	31, // 64: limitary.v1.ComputeLimitsResponse.parts:type_name -> limitary.v1.SigmaPart
+	65, // [65:65] is the sub-list for method output_type
+	65, // [65:65] is the sub-list for method input_type
+	65, // [65:65] is the sub-list for extension type_name
+	65, // [65:65] is the sub-list for extension extendee
+	0,  // [0:65] is the sub-list for field type_name
 }
 
 func init() { file_limitary_v1_limits_proto_init() }
@@ -1646,23 +4425,32 @@ func file_limitary_v1_limits_proto_init() {
 	}
 	file_limitary_v1_rules_proto_init()
 	file_limitary_v1_limits_proto_msgTypes[0].OneofWrappers = []any{}
-	file_limitary_v1_limits_proto_msgTypes[1].OneofWrappers = []any{}
-	file_limitary_v1_limits_proto_msgTypes[2].OneofWrappers = []any{
+	file_limitary_v1_limits_proto_msgTypes[6].OneofWrappers = []any{}
+	file_limitary_v1_limits_proto_msgTypes[7].OneofWrappers = []any{}
+	file_limitary_v1_limits_proto_msgTypes[8].OneofWrappers = []any{
 		(*Point_Readings)(nil),
 		(*Point_Count)(nil),
 		(*Point_Statistic)(nil),
 	}
-	file_limitary_v1_limits_proto_msgTypes[9].OneofWrappers = []any{
+	file_limitary_v1_limits_proto_msgTypes[15].OneofWrappers = []any{}
+	file_limitary_v1_limits_proto_msgTypes[16].OneofWrappers = []any{}
+	file_limitary_v1_limits_proto_msgTypes[18].OneofWrappers = []any{}
+	file_limitary_v1_limits_proto_msgTypes[19].OneofWrappers = []any{
 		(*ComputeLimitsRequest_Points)(nil),
 		(*ComputeLimitsRequest_Series)(nil),
 	}
+	file_limitary_v1_limits_proto_msgTypes[20].OneofWrappers = []any{}
+	file_limitary_v1_limits_proto_msgTypes[21].OneofWrappers = []any{}
+	file_limitary_v1_limits_proto_msgTypes[24].OneofWrappers = []any{}
+	file_limitary_v1_limits_proto_msgTypes[25].OneofWrappers = []any{}
+	file_limitary_v1_limits_proto_msgTypes[29].OneofWrappers = []any{}
 	type x struct{}
 	out := protoimpl.TypeBuilder{
 		File: protoimpl.DescBuilder{
 			GoPackagePath: reflect.TypeOf(x{}).PkgPath(),
 			RawDescriptor: unsafe.Slice(unsafe.StringData(file_limitary_v1_limits_proto_rawDesc), len(file_limitary_v1_limits_proto_rawDesc)),
-			NumEnums:      4,
-			NumMessages:   14,
+			NumEnums:      10,
+			NumMessages:   34,
 			NumExtensions: 0,
 			NumServices:   0,
 		},

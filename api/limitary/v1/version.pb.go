@@ -429,9 +429,12 @@ type ProposeVersionRequest struct {
 	Instructions *Instructions `protobuf:"bytes,16,opt,name=instructions,proto3" json:"instructions,omitempty"`
 	// Codes of the cautions the author accepts, as the refusal CAUTION_NOT_ACCEPTED lists them. They stay in the version as
 	// findings.
-	AcceptedCautions []string `protobuf:"bytes,17,rep,name=accepted_cautions,json=acceptedCautions,proto3" json:"accepted_cautions,omitempty"`
-	unknownFields    protoimpl.UnknownFields
-	sizeCache        protoimpl.SizeCache
+	AcceptedCautions []string     `protobuf:"bytes,17,rep,name=accepted_cautions,json=acceptedCautions,proto3" json:"accepted_cautions,omitempty"`
+	Options          *KindOptions `protobuf:"bytes,18,opt,name=options,proto3" json:"options,omitempty"`
+	// The proposal is made because of a signal: the change test's p is then not valid.
+	AfterSignal   bool `protobuf:"varint,19,opt,name=after_signal,json=afterSignal,proto3" json:"after_signal,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
 }
 
 func (x *ProposeVersionRequest) Reset() {
@@ -592,6 +595,20 @@ func (x *ProposeVersionRequest) GetAcceptedCautions() []string {
 		return x.AcceptedCautions
 	}
 	return nil
+}
+
+func (x *ProposeVersionRequest) GetOptions() *KindOptions {
+	if x != nil {
+		return x.Options
+	}
+	return nil
+}
+
+func (x *ProposeVersionRequest) GetAfterSignal() bool {
+	if x != nil {
+		return x.AfterSignal
+	}
+	return false
 }
 
 type isProposeVersionRequest_Basis interface {
@@ -809,10 +826,18 @@ type Version struct {
 	// For a proposal: the patterns in progress it would end, as of this reading.
 	PatternsEnded []*PatternEnded `protobuf:"bytes,36,rep,name=patterns_ended,json=patternsEnded,proto3" json:"patterns_ended,omitempty"`
 	// In force now on at least one track.
-	InForce         bool   `protobuf:"varint,37,opt,name=in_force,json=inForce,proto3" json:"in_force,omitempty"`
-	WithdrawnReason string `protobuf:"bytes,38,opt,name=withdrawn_reason,json=withdrawnReason,proto3" json:"withdrawn_reason,omitempty"`
-	unknownFields   protoimpl.UnknownFields
-	sizeCache       protoimpl.SizeCache
+	InForce         bool                 `protobuf:"varint,37,opt,name=in_force,json=inForce,proto3" json:"in_force,omitempty"`
+	WithdrawnReason string               `protobuf:"bytes,38,opt,name=withdrawn_reason,json=withdrawnReason,proto3" json:"withdrawn_reason,omitempty"`
+	Model           *Model               `protobuf:"bytes,39,opt,name=model,proto3" json:"model,omitempty"`
+	Components      []*VarianceComponent `protobuf:"bytes,40,rep,name=components,proto3" json:"components,omitempty"`
+	Tails           []*TailFigure        `protobuf:"bytes,41,rep,name=tails,proto3" json:"tails,omitempty"`
+	FalseAlarm      *FalseAlarmRate      `protobuf:"bytes,42,opt,name=false_alarm,json=falseAlarm,proto3" json:"false_alarm,omitempty"`
+	Compared        *Compared            `protobuf:"bytes,43,opt,name=compared,proto3" json:"compared,omitempty"`
+	// Against the version in force when it was proposed; absent where there was none, or no new data.
+	ChangeTest    *ChangeTest  `protobuf:"bytes,44,opt,name=change_test,json=changeTest,proto3" json:"change_test,omitempty"`
+	Parts         []*SigmaPart `protobuf:"bytes,45,rep,name=parts,proto3" json:"parts,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
 }
 
 func (x *Version) Reset() {
@@ -1109,6 +1134,55 @@ func (x *Version) GetWithdrawnReason() string {
 		return x.WithdrawnReason
 	}
 	return ""
+}
+
+func (x *Version) GetModel() *Model {
+	if x != nil {
+		return x.Model
+	}
+	return nil
+}
+
+func (x *Version) GetComponents() []*VarianceComponent {
+	if x != nil {
+		return x.Components
+	}
+	return nil
+}
+
+func (x *Version) GetTails() []*TailFigure {
+	if x != nil {
+		return x.Tails
+	}
+	return nil
+}
+
+func (x *Version) GetFalseAlarm() *FalseAlarmRate {
+	if x != nil {
+		return x.FalseAlarm
+	}
+	return nil
+}
+
+func (x *Version) GetCompared() *Compared {
+	if x != nil {
+		return x.Compared
+	}
+	return nil
+}
+
+func (x *Version) GetChangeTest() *ChangeTest {
+	if x != nil {
+		return x.ChangeTest
+	}
+	return nil
+}
+
+func (x *Version) GetParts() []*SigmaPart {
+	if x != nil {
+		return x.Parts
+	}
+	return nil
 }
 
 type ProposeVersionResponse struct {
@@ -1790,7 +1864,7 @@ const file_limitary_v1_version_proto_rawDesc = "" +
 	"\n" +
 	"TraceRules\x12+\n" +
 	"\x05rules\x18\x01 \x03(\v2\x15.limitary.v1.RuleSpecR\x05rules\x12\x19\n" +
-	"\brule_set\x18\x02 \x01(\tR\aruleSet\"\xfd\x06\n" +
+	"\brule_set\x18\x02 \x01(\tR\aruleSet\"\xd4\a\n" +
 	"\x15ProposeVersionRequest\x12\x14\n" +
 	"\x05chart\x18\x01 \x01(\tR\x05chart\x12\x1d\n" +
 	"\n" +
@@ -1810,7 +1884,9 @@ const file_limitary_v1_version_proto_rawDesc = "" +
 	"\x0eeffective_from\x18\x0e \x01(\v2\x1a.google.protobuf.TimestampR\reffectiveFrom\x12\x16\n" +
 	"\x06reason\x18\x0f \x01(\tR\x06reason\x12=\n" +
 	"\finstructions\x18\x10 \x01(\v2\x19.limitary.v1.InstructionsR\finstructions\x12+\n" +
-	"\x11accepted_cautions\x18\x11 \x03(\tR\x10acceptedCautionsB\a\n" +
+	"\x11accepted_cautions\x18\x11 \x03(\tR\x10acceptedCautions\x122\n" +
+	"\aoptions\x18\x12 \x01(\v2\x18.limitary.v1.KindOptionsR\aoptions\x12!\n" +
+	"\fafter_signal\x18\x13 \x01(\bR\vafterSignalB\a\n" +
 	"\x05basisB\t\n" +
 	"\a_centreB\x10\n" +
 	"\x0e_process_sigmaB\x15\n" +
@@ -1826,7 +1902,7 @@ const file_limitary_v1_version_proto_rawDesc = "" +
 	"\x04side\x18\x04 \x01(\x0e2\x11.limitary.v1.SideR\x04side\x12\x12\n" +
 	"\x04have\x18\x05 \x01(\x05R\x04have\x12\x12\n" +
 	"\x04need\x18\x06 \x01(\x05R\x04need\x12\x12\n" +
-	"\x04text\x18\a \x01(\tR\x04text\"\xd0\f\n" +
+	"\x04text\x18\a \x01(\tR\x04text\"\xc2\x0f\n" +
 	"\aVersion\x12\x14\n" +
 	"\x05chart\x18\x01 \x01(\tR\x05chart\x12\x16\n" +
 	"\x06number\x18\x02 \x01(\x05R\x06number\x12\x10\n" +
@@ -1870,7 +1946,18 @@ const file_limitary_v1_version_proto_rawDesc = "" +
 	"\finstructions\x18# \x01(\v2\x19.limitary.v1.InstructionsR\finstructions\x12@\n" +
 	"\x0epatterns_ended\x18$ \x03(\v2\x19.limitary.v1.PatternEndedR\rpatternsEnded\x12\x19\n" +
 	"\bin_force\x18% \x01(\bR\ainForce\x12)\n" +
-	"\x10withdrawn_reason\x18& \x01(\tR\x0fwithdrawnReason\"H\n" +
+	"\x10withdrawn_reason\x18& \x01(\tR\x0fwithdrawnReason\x12(\n" +
+	"\x05model\x18' \x01(\v2\x12.limitary.v1.ModelR\x05model\x12>\n" +
+	"\n" +
+	"components\x18( \x03(\v2\x1e.limitary.v1.VarianceComponentR\n" +
+	"components\x12-\n" +
+	"\x05tails\x18) \x03(\v2\x17.limitary.v1.TailFigureR\x05tails\x12<\n" +
+	"\vfalse_alarm\x18* \x01(\v2\x1b.limitary.v1.FalseAlarmRateR\n" +
+	"falseAlarm\x121\n" +
+	"\bcompared\x18+ \x01(\v2\x15.limitary.v1.ComparedR\bcompared\x128\n" +
+	"\vchange_test\x18, \x01(\v2\x17.limitary.v1.ChangeTestR\n" +
+	"changeTest\x12,\n" +
+	"\x05parts\x18- \x03(\v2\x16.limitary.v1.SigmaPartR\x05parts\"H\n" +
 	"\x16ProposeVersionResponse\x12.\n" +
 	"\aversion\x18\x01 \x01(\v2\x14.limitary.v1.VersionR\aversion\"\xdd\x01\n" +
 	"\x15ApproveVersionRequest\x12\x14\n" +
@@ -1976,17 +2063,25 @@ var file_limitary_v1_version_proto_goTypes = []any{
 	(*RuleSpec)(nil),                // 25: limitary.v1.RuleSpec
 	(Estimator)(0),                  // 26: limitary.v1.Estimator
 	(*FixedLines)(nil),              // 27: limitary.v1.FixedLines
-	(TraceRole)(0),                  // 28: limitary.v1.TraceRole
-	(Side)(0),                       // 29: limitary.v1.Side
-	(ChartKind)(0),                  // 30: limitary.v1.ChartKind
-	(*TraceLimits)(nil),             // 31: limitary.v1.TraceLimits
-	(Origin)(0),                     // 32: limitary.v1.Origin
-	(*SigmaEstimate)(nil),           // 33: limitary.v1.SigmaEstimate
-	(*Interval)(nil),                // 34: limitary.v1.Interval
-	(*Finding)(nil),                 // 35: limitary.v1.Finding
-	(*ChangeRequest)(nil),           // 36: limitary.v1.ChangeRequest
-	(*ComputeLimitsRequest)(nil),    // 37: limitary.v1.ComputeLimitsRequest
-	(*ComputeLimitsResponse)(nil),   // 38: limitary.v1.ComputeLimitsResponse
+	(*KindOptions)(nil),             // 28: limitary.v1.KindOptions
+	(TraceRole)(0),                  // 29: limitary.v1.TraceRole
+	(Side)(0),                       // 30: limitary.v1.Side
+	(ChartKind)(0),                  // 31: limitary.v1.ChartKind
+	(*TraceLimits)(nil),             // 32: limitary.v1.TraceLimits
+	(Origin)(0),                     // 33: limitary.v1.Origin
+	(*SigmaEstimate)(nil),           // 34: limitary.v1.SigmaEstimate
+	(*Interval)(nil),                // 35: limitary.v1.Interval
+	(*Finding)(nil),                 // 36: limitary.v1.Finding
+	(*Model)(nil),                   // 37: limitary.v1.Model
+	(*VarianceComponent)(nil),       // 38: limitary.v1.VarianceComponent
+	(*TailFigure)(nil),              // 39: limitary.v1.TailFigure
+	(*FalseAlarmRate)(nil),          // 40: limitary.v1.FalseAlarmRate
+	(*Compared)(nil),                // 41: limitary.v1.Compared
+	(*ChangeTest)(nil),              // 42: limitary.v1.ChangeTest
+	(*SigmaPart)(nil),               // 43: limitary.v1.SigmaPart
+	(*ChangeRequest)(nil),           // 44: limitary.v1.ChangeRequest
+	(*ComputeLimitsRequest)(nil),    // 45: limitary.v1.ComputeLimitsRequest
+	(*ComputeLimitsResponse)(nil),   // 46: limitary.v1.ComputeLimitsResponse
 }
 var file_limitary_v1_version_proto_depIdxs = []int32{
 	21, // 0: limitary.v1.StoredBasis.from:type_name -> google.protobuf.Timestamp
@@ -2006,51 +2101,59 @@ var file_limitary_v1_version_proto_depIdxs = []int32{
 	5,  // 14: limitary.v1.ProposeVersionRequest.dispersion_rules:type_name -> limitary.v1.TraceRules
 	21, // 15: limitary.v1.ProposeVersionRequest.effective_from:type_name -> google.protobuf.Timestamp
 	7,  // 16: limitary.v1.ProposeVersionRequest.instructions:type_name -> limitary.v1.Instructions
-	28, // 17: limitary.v1.PatternEnded.trace:type_name -> limitary.v1.TraceRole
-	29, // 18: limitary.v1.PatternEnded.side:type_name -> limitary.v1.Side
-	0,  // 19: limitary.v1.Version.state:type_name -> limitary.v1.VersionState
-	30, // 20: limitary.v1.Version.kind:type_name -> limitary.v1.ChartKind
-	31, // 21: limitary.v1.Version.location:type_name -> limitary.v1.TraceLimits
-	31, // 22: limitary.v1.Version.dispersion:type_name -> limitary.v1.TraceLimits
-	32, // 23: limitary.v1.Version.centre_origin:type_name -> limitary.v1.Origin
-	32, // 24: limitary.v1.Version.sigma_origin:type_name -> limitary.v1.Origin
-	33, // 25: limitary.v1.Version.estimates:type_name -> limitary.v1.SigmaEstimate
-	34, // 26: limitary.v1.Version.intervals:type_name -> limitary.v1.Interval
-	35, // 27: limitary.v1.Version.findings:type_name -> limitary.v1.Finding
-	3,  // 28: limitary.v1.Version.excluded_results:type_name -> limitary.v1.StoredExclusion
-	24, // 29: limitary.v1.Version.excluded_points:type_name -> limitary.v1.Exclusion
-	21, // 30: limitary.v1.Version.propose_time:type_name -> google.protobuf.Timestamp
-	21, // 31: limitary.v1.Version.decide_time:type_name -> google.protobuf.Timestamp
-	21, // 32: limitary.v1.Version.withdraw_time:type_name -> google.protobuf.Timestamp
-	21, // 33: limitary.v1.Version.effective_from:type_name -> google.protobuf.Timestamp
-	7,  // 34: limitary.v1.Version.instructions:type_name -> limitary.v1.Instructions
-	8,  // 35: limitary.v1.Version.patterns_ended:type_name -> limitary.v1.PatternEnded
-	9,  // 36: limitary.v1.ProposeVersionResponse.version:type_name -> limitary.v1.Version
-	9,  // 37: limitary.v1.ApproveVersionResponse.version:type_name -> limitary.v1.Version
-	9,  // 38: limitary.v1.RejectVersionResponse.version:type_name -> limitary.v1.Version
-	9,  // 39: limitary.v1.WithdrawVersionResponse.version:type_name -> limitary.v1.Version
-	36, // 40: limitary.v1.WithdrawVersionResponse.request:type_name -> limitary.v1.ChangeRequest
-	9,  // 41: limitary.v1.GetVersionResponse.version:type_name -> limitary.v1.Version
-	9,  // 42: limitary.v1.ListVersionsResponse.versions:type_name -> limitary.v1.Version
-	37, // 43: limitary.v1.LimitService.ComputeLimits:input_type -> limitary.v1.ComputeLimitsRequest
-	6,  // 44: limitary.v1.LimitService.ProposeVersion:input_type -> limitary.v1.ProposeVersionRequest
-	11, // 45: limitary.v1.LimitService.ApproveVersion:input_type -> limitary.v1.ApproveVersionRequest
-	13, // 46: limitary.v1.LimitService.RejectVersion:input_type -> limitary.v1.RejectVersionRequest
-	15, // 47: limitary.v1.LimitService.WithdrawVersion:input_type -> limitary.v1.WithdrawVersionRequest
-	17, // 48: limitary.v1.LimitService.GetVersion:input_type -> limitary.v1.GetVersionRequest
-	19, // 49: limitary.v1.LimitService.ListVersions:input_type -> limitary.v1.ListVersionsRequest
-	38, // 50: limitary.v1.LimitService.ComputeLimits:output_type -> limitary.v1.ComputeLimitsResponse
-	10, // 51: limitary.v1.LimitService.ProposeVersion:output_type -> limitary.v1.ProposeVersionResponse
-	12, // 52: limitary.v1.LimitService.ApproveVersion:output_type -> limitary.v1.ApproveVersionResponse
-	14, // 53: limitary.v1.LimitService.RejectVersion:output_type -> limitary.v1.RejectVersionResponse
-	16, // 54: limitary.v1.LimitService.WithdrawVersion:output_type -> limitary.v1.WithdrawVersionResponse
-	18, // 55: limitary.v1.LimitService.GetVersion:output_type -> limitary.v1.GetVersionResponse
-	20, // 56: limitary.v1.LimitService.ListVersions:output_type -> limitary.v1.ListVersionsResponse
-	50, // [50:57] is the sub-list for method output_type
-	43, // [43:50] is the sub-list for method input_type
-	43, // [43:43] is the sub-list for extension type_name
-	43, // [43:43] is the sub-list for extension extendee
-	0,  // [0:43] is the sub-list for field type_name
+	28, // 17: limitary.v1.ProposeVersionRequest.options:type_name -> limitary.v1.KindOptions
+	29, // 18: limitary.v1.PatternEnded.trace:type_name -> limitary.v1.TraceRole
+	30, // 19: limitary.v1.PatternEnded.side:type_name -> limitary.v1.Side
+	0,  // 20: limitary.v1.Version.state:type_name -> limitary.v1.VersionState
+	31, // 21: limitary.v1.Version.kind:type_name -> limitary.v1.ChartKind
+	32, // 22: limitary.v1.Version.location:type_name -> limitary.v1.TraceLimits
+	32, // 23: limitary.v1.Version.dispersion:type_name -> limitary.v1.TraceLimits
+	33, // 24: limitary.v1.Version.centre_origin:type_name -> limitary.v1.Origin
+	33, // 25: limitary.v1.Version.sigma_origin:type_name -> limitary.v1.Origin
+	34, // 26: limitary.v1.Version.estimates:type_name -> limitary.v1.SigmaEstimate
+	35, // 27: limitary.v1.Version.intervals:type_name -> limitary.v1.Interval
+	36, // 28: limitary.v1.Version.findings:type_name -> limitary.v1.Finding
+	3,  // 29: limitary.v1.Version.excluded_results:type_name -> limitary.v1.StoredExclusion
+	24, // 30: limitary.v1.Version.excluded_points:type_name -> limitary.v1.Exclusion
+	21, // 31: limitary.v1.Version.propose_time:type_name -> google.protobuf.Timestamp
+	21, // 32: limitary.v1.Version.decide_time:type_name -> google.protobuf.Timestamp
+	21, // 33: limitary.v1.Version.withdraw_time:type_name -> google.protobuf.Timestamp
+	21, // 34: limitary.v1.Version.effective_from:type_name -> google.protobuf.Timestamp
+	7,  // 35: limitary.v1.Version.instructions:type_name -> limitary.v1.Instructions
+	8,  // 36: limitary.v1.Version.patterns_ended:type_name -> limitary.v1.PatternEnded
+	37, // 37: limitary.v1.Version.model:type_name -> limitary.v1.Model
+	38, // 38: limitary.v1.Version.components:type_name -> limitary.v1.VarianceComponent
+	39, // 39: limitary.v1.Version.tails:type_name -> limitary.v1.TailFigure
+	40, // 40: limitary.v1.Version.false_alarm:type_name -> limitary.v1.FalseAlarmRate
+	41, // 41: limitary.v1.Version.compared:type_name -> limitary.v1.Compared
+	42, // 42: limitary.v1.Version.change_test:type_name -> limitary.v1.ChangeTest
+	43, // 43: limitary.v1.Version.parts:type_name -> limitary.v1.SigmaPart
+	9,  // 44: limitary.v1.ProposeVersionResponse.version:type_name -> limitary.v1.Version
+	9,  // 45: limitary.v1.ApproveVersionResponse.version:type_name -> limitary.v1.Version
+	9,  // 46: limitary.v1.RejectVersionResponse.version:type_name -> limitary.v1.Version
+	9,  // 47: limitary.v1.WithdrawVersionResponse.version:type_name -> limitary.v1.Version
+	44, // 48: limitary.v1.WithdrawVersionResponse.request:type_name -> limitary.v1.ChangeRequest
+	9,  // 49: limitary.v1.GetVersionResponse.version:type_name -> limitary.v1.Version
+	9,  // 50: limitary.v1.ListVersionsResponse.versions:type_name -> limitary.v1.Version
+	45, // 51: limitary.v1.LimitService.ComputeLimits:input_type -> limitary.v1.ComputeLimitsRequest
+	6,  // 52: limitary.v1.LimitService.ProposeVersion:input_type -> limitary.v1.ProposeVersionRequest
+	11, // 53: limitary.v1.LimitService.ApproveVersion:input_type -> limitary.v1.ApproveVersionRequest
+	13, // 54: limitary.v1.LimitService.RejectVersion:input_type -> limitary.v1.RejectVersionRequest
+	15, // 55: limitary.v1.LimitService.WithdrawVersion:input_type -> limitary.v1.WithdrawVersionRequest
+	17, // 56: limitary.v1.LimitService.GetVersion:input_type -> limitary.v1.GetVersionRequest
+	19, // 57: limitary.v1.LimitService.ListVersions:input_type -> limitary.v1.ListVersionsRequest
+	46, // 58: limitary.v1.LimitService.ComputeLimits:output_type -> limitary.v1.ComputeLimitsResponse
+	10, // 59: limitary.v1.LimitService.ProposeVersion:output_type -> limitary.v1.ProposeVersionResponse
+	12, // 60: limitary.v1.LimitService.ApproveVersion:output_type -> limitary.v1.ApproveVersionResponse
+	14, // 61: limitary.v1.LimitService.RejectVersion:output_type -> limitary.v1.RejectVersionResponse
+	16, // 62: limitary.v1.LimitService.WithdrawVersion:output_type -> limitary.v1.WithdrawVersionResponse
+	18, // 63: limitary.v1.LimitService.GetVersion:output_type -> limitary.v1.GetVersionResponse
+	20, // 64: limitary.v1.LimitService.ListVersions:output_type -> limitary.v1.ListVersionsResponse
+	58, // [58:65] is the sub-list for method output_type
+	51, // [51:58] is the sub-list for method input_type
+	51, // [51:51] is the sub-list for extension type_name
+	51, // [51:51] is the sub-list for extension extendee
+	0,  // [0:51] is the sub-list for field type_name
 }
 
 func init() { file_limitary_v1_version_proto_init() }
