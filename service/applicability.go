@@ -17,9 +17,13 @@ const (
 	cautionNeighboursShare      = "MOVING_RANGES_SHARE_VALUES"
 	cautionSetupPattern         = "SETUP_PATTERN_IN_MONITORING"
 	cautionCentreAway           = "CENTRE_AWAY_FROM_MEAN"
+	cautionRuleNotForCounts     = "RULE_NOT_FOR_COUNTS"
+	cautionRuleNotForDuplicates = "RULE_NOT_FOR_DUPLICATES"
+	cautionInflationBelowOne    = limits.CodeInflationBelowOne
 )
 
-var cautionCodes = []string{cautionRuleNotForDispersion, cautionNeighboursShare, cautionSetupPattern, cautionCentreAway}
+var cautionCodes = []string{cautionRuleNotForDispersion, cautionNeighboursShare, cautionSetupPattern, cautionCentreAway,
+	cautionRuleNotForCounts, cautionRuleNotForDuplicates, cautionInflationBelowOne}
 
 // cautions lists what in the choice of rules goes against the custom of the trade, for a chart with the given limits.
 func cautions(kind chart.Kind, location, dispersion []rules.Spec, found []limits.Finding) []definition.Finding {
@@ -29,13 +33,28 @@ func cautions(kind chart.Kind, location, dispersion []rules.Spec, found []limits
 			out = append(out, definition.Finding{Code: code, Figure: float64(len(ids)), Text: fmt.Sprintf(text, strings.Join(ids, ", ")), Advice: advice, CouldMiss: miss})
 		}
 	}
-	add(cautionRuleNotForDispersion, dispersion, func(s rules.Spec) bool { return !s.SuitsDispersion() },
+	add(cautionRuleNotForDispersion, dispersion, func(s rules.Spec) bool { return !kind.Duplicates() && !s.SuitsDispersion() },
 		"Rules %s watch a dispersion trace, whose statistics are skewed; their false alarms are not those of a location trace.",
 		"Keep to one point beyond a line, runs on one side, trends and alternations there.", "A skewed statistic can also hide a fall of the scatter.")
 	if kind == chart.Individuals {
 		add(cautionNeighboursShare, dispersion, rules.Spec.IsRunPattern,
 			"Rules %s look for patterns among moving ranges, and neighbouring moving ranges share a value.",
 			"Expect more of these patterns than their nominal rate; look at the values first.", "The nominal rate of the rules says nothing here.")
+	}
+	if kind.Counts() {
+		add(cautionRuleNotForCounts, location, func(s rules.Spec) bool { return !isOneBeyond(s) },
+			"Rules %s watch counts, whose steps and skewness give patterns another rate than the nominal one.",
+			"Keep to one point beyond a line on charts of counts.", "A slow rise of the mean; collect more in each sample to see it.")
+	}
+	if kind.Duplicates() {
+		add(cautionRuleNotForDuplicates, dispersion, func(s rules.Spec) bool { return !isOneBeyond(s) },
+			"Rules %s look for patterns among ranges of duplicates, which come from different samples in no order that means anything.",
+			"Keep to one point above a line on charts of duplicates.", "A slow loss of repeatability; the change test on new results shows it.")
+	}
+	for _, f := range found {
+		if f.Code == limits.CodeInflationBelowOne {
+			out = append(out, definition.Finding{Code: f.Code, Figure: f.Figure, Threshold: f.Threshold, Text: f.Text, Advice: f.Advice, CouldMiss: f.CouldMiss})
+		}
 	}
 	all := slices.Concat(location, dispersion)
 	add(cautionSetupPattern, all, isSetup,
@@ -58,6 +77,10 @@ func matching(specs []rules.Spec, against func(rules.Spec) bool) []string {
 		}
 	}
 	return ids
+}
+
+func isOneBeyond(s rules.Spec) bool {
+	return s.Kind == rules.BeyondLine || s.Kind == rules.Beyond && s.K == 1 && s.M == 1
 }
 
 func isSetup(s rules.Spec) bool {

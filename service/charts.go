@@ -115,8 +115,9 @@ func (s *ChartService) UpdateChart(ctx context.Context, in *pb.UpdateChartReques
 
 // chartChange gives what an update does to a chart.
 func chartChange(in *pb.UpdateChartRequest, who store.Actor) (func(*definition.Chart) error, error) {
-	if in.Title == nil && in.Labels == nil && in.Decimals == nil && in.PlanInterval == nil && in.RepeatRule == nil && in.DisplayZone == nil {
-		return nil, definition.Invalid("title", "nothing is given to change; want one of title, labels, decimals, plan_interval, repeat_rule, display_zone")
+	if in.Title == nil && in.Labels == nil && in.Decimals == nil && in.PlanInterval == nil && in.RepeatRule == nil && in.DisplayZone == nil &&
+		in.RelevantShiftSigmas == nil && in.RelevantSigmaRatio == nil {
+		return nil, definition.Invalid("title", "nothing is given to change; want one of title, labels, decimals, plan_interval, repeat_rule, display_zone, relevant_shift_sigmas, relevant_sigma_ratio")
 	}
 	plan, err := durationFromProto("plan_interval", in.PlanInterval)
 	if err != nil {
@@ -143,6 +144,12 @@ func chartChange(in *pb.UpdateChartRequest, who store.Actor) (func(*definition.C
 		}
 		if in.DisplayZone != nil {
 			c.DisplayZone = *in.DisplayZone
+		}
+		if in.RelevantShiftSigmas != nil {
+			c.RelevantShiftSigmas = *in.RelevantShiftSigmas
+		}
+		if in.RelevantSigmaRatio != nil {
+			c.RelevantSigmaRatio = *in.RelevantSigmaRatio
 		}
 		return c.CheckChangeable()
 	}

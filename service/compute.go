@@ -10,6 +10,7 @@ import (
 	pb "limitary/api/limitary/v1"
 	"limitary/internal/chart"
 	"limitary/internal/definition"
+	"limitary/internal/diagnostics"
 	"limitary/internal/limits"
 	"limitary/internal/store"
 )
@@ -27,9 +28,9 @@ func (s *LimitService) ComputeLimits(_ context.Context, in *pb.ComputeLimitsRequ
 		return nil, err
 	}
 	if kind == chart.Given {
-		return nil, definition.Invalid("kind", "is not set; want one of INDIVIDUALS, XBAR_R, XBAR_S")
+		return nil, noKind()
 	}
-	if kind == chart.Individuals && in.SubgroupSize == 0 {
+	if kind.SizeImplied() && in.SubgroupSize == 0 {
 		in.SubgroupSize = 1
 	}
 	if err := kind.CheckSize(int(in.SubgroupSize)); err != nil {
@@ -39,19 +40,51 @@ func (s *LimitService) ComputeLimits(_ context.Context, in *pb.ComputeLimitsRequ
 	if err := settings(&req, in.Estimator, in.PublishedDecimals, in.LocationLines, in.DispersionLines); err != nil {
 		return nil, err
 	}
+	if _, err := readOptions(in.Options, &req); err != nil {
+		return nil, under("options", err)
+	}
 	data, err := sentFromProto(kind, in.GetPoints(), in.GetSeries(), in.Exclusions)
 	if err != nil {
 		return nil, err
 	}
 	req.Groups = data.groups
+	c, err := compute(req, diagnostics.Times{}, data.path)
+	if err != nil {
+		return nil, err
+	}
+	for i := range c.result.Excluded {
+		c.result.Excluded[i].Group = data.points[c.result.Excluded[i].Group]
+	}
+	out := computedToProto(c)
+	if in.InForce != nil {
+		if out.ChangeTest, err = CompareSent(in.InForce, req); err != nil {
+			return nil, under("in_force", err)
+		}
+	}
+	return out, nil
+}
+
+func noKind() error {
+	return definition.Invalid("kind", "is not set; want one of %s", strings.ToUpper(chart.KindNames()))
+}
+
+// computed is a computation with what its data say.
+type computed struct {
+	result      limits.Result
+	diagnostics diagnostics.Report
+}
+
+// compute gives limits and diagnostics; path names group i in a refusal.
+func compute(req limits.Request, about diagnostics.Times, path func(i int, tail string) string) (computed, error) {
 	res, err := limits.Compute(req)
 	if err != nil {
-		return nil, computeRefusal(err, data.path)
+		return computed{}, computeRefusal(err, path)
 	}
-	for i := range res.Excluded {
-		res.Excluded[i].Group = data.points[res.Excluded[i].Group]
+	out := computed{result: res}
+	if len(req.Groups) > 0 {
+		out.diagnostics = diagnostics.Examine(req, res, about)
 	}
-	return computedToProto(res), nil
+	return out, nil
 }
 
 // sent is data sent along, ready for a computation.
@@ -190,22 +223,36 @@ func (s *sent) takePoints(kind chart.Kind, points []*pb.Point) error {
 		if p.Centre != nil || p.Sigma != nil {
 			return definition.Invalid(field("centre"), "centre and sigma of a point are for judging, not for computing limits")
 		}
-		g, statistic := limits.Group{BreakBefore: p.BreakBefore}, false
+		g, statistic := limits.Group{BreakBefore: p.BreakBefore, Material: p.Material}, false
 		switch v := p.GetValue().(type) {
 		case nil:
 		case *pb.Point_Statistic:
 			if kind != chart.Individuals {
-				return definition.Invalid(field("statistic"), "a chart of kind %s takes readings", kind)
+				return definition.Invalid(field("statistic"), "a chart of kind %s takes %s", kind, takes(kind))
 			}
 			g.Readings, statistic = []float64{v.Statistic}, true
 		case *pb.Point_Readings:
+			if kind.Counts() {
+				return definition.Invalid(field("readings"), "a chart of kind %s takes counts", kind)
+			}
 			g.Readings = v.Readings.GetValues()
-		default:
-			return noCounts(field("count"), kind)
+		case *pb.Point_Count:
+			if !kind.Counts() {
+				return noCounts(field("count"), kind)
+			}
+			g.Count = &chart.Count{Nonconforming: v.Count.GetNonconforming(), Inspected: v.Count.GetInspected()}
 		}
 		s.add(g, p.Value != nil, statistic)
 	}
 	return nil
+}
+
+// takes names what results of a kind hold.
+func takes(kind chart.Kind) string {
+	if kind.Counts() {
+		return "counts"
+	}
+	return "readings"
 }
 
 // exclude marks the groups left out of the estimate.

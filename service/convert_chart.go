@@ -53,6 +53,10 @@ func chartFromProto(in *pb.Chart) (definition.Chart, error) {
 		Name: in.GetName(), Title: in.GetTitle(), Kind: kind, SubgroupSize: int(in.GetSubgroupSize()), Unit: in.GetUnit(),
 		Decimals: decimalsFromProto(in.GetDecimals(), in != nil && in.Decimals != nil), Labels: in.GetLabels(),
 		DisplayZone: in.GetDisplayZone(), PlanInterval: plan, LongestGap: gap, RepeatRule: in.GetRepeatRule(), LotsAreTracks: in.GetLotsAreTracks(),
+		Standardised: in.GetStandardised(), RelevantShiftSigmas: in.GetRelevantShiftSigmas(), RelevantSigmaRatio: in.GetRelevantSigmaRatio(),
+	}
+	if kind.SizeImplied() && c.SubgroupSize == 0 {
+		c.SubgroupSize = 1
 	}
 	return c, c.Check()
 }
@@ -70,7 +74,9 @@ func chartToProto(c definition.Chart) *pb.Chart {
 		Name: c.Name, Title: c.Title, Kind: kindToProto(c.Kind), SubgroupSize: int32(c.SubgroupSize), Unit: c.Unit, Labels: c.Labels,
 		DisplayZone: c.DisplayZone, PlanInterval: durationToProto(c.PlanInterval), LongestGap: durationToProto(c.LongestGap),
 		RepeatRule: c.RepeatRule, LotsAreTracks: c.LotsAreTracks, Revision: c.Revision, Archived: c.Archived, CreateTime: timeToProto(c.CreatedAt),
+		Standardised: c.Standardised,
 	}
+	out.RelevantShiftSigmas, out.RelevantSigmaRatio = c.Relevance()
 	if c.Decimals != nil {
 		d := int32(*c.Decimals)
 		out.Decimals = &d

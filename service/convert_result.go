@@ -21,15 +21,12 @@ func resultFromProto(in *pb.Result) (definition.Result, error) {
 	r := definition.Result{
 		Chart: in.GetChart(), Source: in.GetSource(), SourceID: in.GetSourceId(), MeasuredText: in.GetMeasuredAt(),
 		Lot: in.GetLot(), RunID: in.GetRunId(), Position: in.GetPosition(), Replicate: in.GetReplicate(),
-		RepeatOf: in.GetRepeatOf(), Readings: in.GetReadings(), Unit: in.GetUnit(),
+		RepeatOf: in.GetRepeatOf(), Readings: in.GetReadings(), Count: countFromProto(in.GetCount()), Unit: in.GetUnit(),
 		Material: in.GetMaterial(), Analyst: in.GetAnalyst(), Instrument: in.GetInstrument(), Labels: in.GetLabels(),
 	}
 	err := first(definition.CheckSlug("chart", r.Chart), checkName("source", r.Source, 1), checkName("source_id", r.SourceID, 1))
 	if err != nil {
 		return r, err
-	}
-	if in.GetCount() != nil {
-		return r, definition.Invalid("count", "is given, but charts of counts are not kept; a chart of readings takes readings")
 	}
 	if len(r.Readings) > chart.SubgroupSizeMax {
 		return r, &definition.Error{Reason: definition.WrongReadingCount, Field: "readings",
@@ -50,19 +47,31 @@ func resultFromProto(in *pb.Result) (definition.Result, error) {
 	return r, nil
 }
 
+func countFromProto(in *pb.Count) *chart.Count {
+	if in == nil {
+		return nil
+	}
+	return &chart.Count{Nonconforming: in.Nonconforming, Inspected: in.Inspected}
+}
+
 func resultToProto(r definition.Result) *pb.Result {
 	measured := r.MeasuredText
 	if measured == "" {
 		measured = r.MeasuredAt.UTC().Format("2006-01-02T15:04:05.999999Z07:00")
 	}
+	var count *pb.Count
+	if r.Count != nil {
+		count = &pb.Count{Nonconforming: r.Count.Nonconforming, Inspected: r.Count.Inspected}
+	}
 	return &pb.Result{
-		Chart: r.Chart, Source: r.Source, SourceId: r.SourceID, MeasuredAt: measured, Lot: r.Lot, RunId: r.RunID,
+		Count: count, Chart: r.Chart, Source: r.Source, SourceId: r.SourceID, MeasuredAt: measured, Lot: r.Lot, RunId: r.RunID,
 		Position: r.Position, Replicate: r.Replicate, Role: pb.ResultRole(r.Role), RepeatOf: r.RepeatOf, Readings: r.Readings, Unit: r.Unit,
 		Material: r.Material, Analyst: r.Analyst, Instrument: r.Instrument, Labels: r.Labels,
 	}
 }
 
-func verdictToProto(v store.Verdict) *pb.ResultVerdict {
+// verdictToProto writes a verdict on a result of the material.
+func verdictToProto(v store.Verdict, material string) *pb.ResultVerdict {
 	out := &pb.ResultVerdict{
 		Standing: standingToProto(v.Standing), Reason: notJudgedToProto(v.Reason), ByBound: v.ByBound, Version: int32(v.Version), Judge: int32(v.Judge),
 		Instruction: v.Instruction, RecordedAt: timeToProto(v.RecordedAt),
@@ -72,6 +81,7 @@ func verdictToProto(v store.Verdict) *pb.ResultVerdict {
 			continue
 		}
 		trace := traceVerdictToProto(t.Statistic, t.Scale, t.Lines)
+		trace.Original = originalVerdict(v.By, chart.Role(role), material, t.Statistic, t.Lines)
 		if chart.Role(role) == chart.Location {
 			out.Location = trace
 		} else {
@@ -90,7 +100,7 @@ func verdictToProto(v store.Verdict) *pb.ResultVerdict {
 func storedToProto(s store.StoredResult) *pb.StoredResult {
 	return &pb.StoredResult{
 		Result: resultToProto(s.Result), Revision: int32(s.Revision), Voided: s.Voided, Poster: s.Poster,
-		RecordedAt: timeToProto(s.RecordedAt), Verdict: verdictToProto(s.Verdict),
+		RecordedAt: timeToProto(s.RecordedAt), Verdict: verdictToProto(s.Verdict, s.Result.Material),
 	}
 }
 
@@ -108,7 +118,7 @@ func revisionToProto(r store.Revision) *pb.ResultRevision {
 		ReasonCode: r.ReasonCode, Reason: r.ReasonText, RecordedAt: timeToProto(r.RecordedAt),
 	}
 	for _, v := range r.Verdicts {
-		out.Verdicts = append(out.Verdicts, verdictToProto(v))
+		out.Verdicts = append(out.Verdicts, verdictToProto(v, r.Result.Material))
 	}
 	return out
 }
@@ -125,11 +135,11 @@ func postedToProto(i int, row *pb.Result, p store.Posted) *pb.PostedResult {
 	}
 	switch p.Outcome {
 	case store.Accepted:
-		out.Verdict = verdictToProto(p.First)
+		out.Verdict = verdictToProto(p.First, row.GetMaterial())
 	case store.Duplicate:
-		out.Verdict, out.CurrentVerdict = verdictToProto(p.First), verdictToProto(p.Current)
+		out.Verdict, out.CurrentVerdict = verdictToProto(p.First, row.GetMaterial()), verdictToProto(p.Current, row.GetMaterial())
 	case store.Conflict:
-		out.Stored, out.CurrentVerdict = resultToProto(p.Stored), verdictToProto(p.Current)
+		out.Stored, out.CurrentVerdict = resultToProto(p.Stored), verdictToProto(p.Current, row.GetMaterial())
 	}
 	if p.HasTrack {
 		out.TrackState = trackStateToProto(p.TrackState)

@@ -13,7 +13,7 @@ import (
 
 // kindFromProto reads a chart kind; unspecified is chart.Given, which only inline limits may have.
 func kindFromProto(field string, k pb.ChartKind) (chart.Kind, error) {
-	if k < pb.ChartKind_CHART_KIND_UNSPECIFIED || k > pb.ChartKind_CHART_KIND_XBAR_S {
+	if k < pb.ChartKind_CHART_KIND_UNSPECIFIED || k > pb.ChartKind_CHART_KIND_RELATIVE_RANGE {
 		return chart.Given, definition.Invalid(field, "%d: no such value", k)
 	}
 	return chart.Kind(k), nil
@@ -137,6 +137,24 @@ func traceToProto(t chart.Trace, specs []rules.Spec, set string) *pb.TraceLimits
 		Rules: specsToProto(specs), RuleSet: set,
 	}
 	return out
+}
+
+// hideImpossible leaves out where a line of counts lies that no count of the published size can be beyond; samples of
+// another size may have such a line, which is why its basis stays.
+func hideImpossible(kind chart.Kind, t *pb.TraceLimits) {
+	if !kind.Counts() {
+		return
+	}
+	for _, l := range []*pb.Line{t.LowerAction, t.LowerWarning} {
+		if l.Value != nil && *l.Value <= 0 {
+			l.Value = nil
+		}
+	}
+	for _, l := range []*pb.Line{t.UpperAction, t.UpperWarning} {
+		if kind == chart.P && l.Value != nil && *l.Value >= 1 {
+			l.Value = nil
+		}
+	}
 }
 
 func lineToProto(l chart.Line) *pb.Line {

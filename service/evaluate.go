@@ -237,7 +237,10 @@ func inlineJudge(in *pb.InlineLimits) (*judge.Judge, error) {
 			return nil, definition.Invalid("published_decimals", "%d: want 0 to %d", l.Places, decimal.PlacesMax)
 		}
 	}
-	if kind == chart.Individuals && l.SubgroupSize == 0 {
+	if l.Model, err = modelFromProto(in.GetModel()); err != nil {
+		return nil, under("model", err)
+	}
+	if kind.SizeImplied() && l.SubgroupSize == 0 {
 		l.SubgroupSize = 1
 	}
 	if kind == chart.Given && l.SubgroupSize != 0 {
@@ -283,7 +286,9 @@ func inlineSigma(in *pb.InlineLimits, l judge.Limits) (float64, error) {
 		if !(sigma > 0) || math.IsInf(sigma, 0) {
 			return 0, definition.Invalid("process_sigma", "%v: want a finite number above 0", sigma)
 		}
-	case l.Kind == chart.Given || location == nil || location.Sigma == nil || !(*location.Sigma > 0):
+	case l.Kind == chart.RunMeans && l.Model.BetweenSigma > 0:
+		return 0, definition.Invalid("process_sigma", "is not set; it is the standard deviation within runs, which the location trace does not tell")
+	case l.Kind == chart.Given || l.Kind.Counts() || location == nil || location.Sigma == nil || !(*location.Sigma > 0):
 		return 0, nil
 	default:
 		sigma = *location.Sigma * math.Sqrt(float64(l.SubgroupSize))

@@ -78,7 +78,7 @@ func (b *evaluator) points(j *judge.Judge, points []*pb.Point, firstJudged int) 
 }
 
 func pointFromProto(in *pb.Point, l judge.Limits, one *[1]float64) (judge.Point, error) {
-	pt := judge.Point{Centre: in.Centre, Sigma: in.Sigma, Break: in.GetBreakBefore()}
+	pt := judge.Point{Centre: in.Centre, Sigma: in.Sigma, Break: in.GetBreakBefore(), Material: in.GetMaterial()}
 	if (in.Centre != nil || in.Sigma != nil) && l.Kind != chart.Given {
 		return pt, definition.Invalid("centre", "centre and sigma of a point are given, but they follow from the number of readings on a chart of kind %s", l.Kind)
 	}
@@ -91,8 +91,8 @@ func pointFromProto(in *pb.Point, l judge.Limits, one *[1]float64) (judge.Point,
 	switch v := in.GetValue().(type) {
 	case nil: // no result
 	case *pb.Point_Statistic:
-		if l.Kind == chart.XbarR || l.Kind == chart.XbarS {
-			return pt, definition.Invalid("statistic", "%v: a chart of kind %s takes readings", v.Statistic, l.Kind)
+		if l.Kind != chart.Given && l.Kind != chart.Individuals {
+			return pt, definition.Invalid("statistic", "%v: a chart of kind %s takes %s", v.Statistic, l.Kind, takes(l.Kind))
 		}
 		if !finite(v.Statistic) {
 			return pt, definition.Invalid("statistic", "%v: want a finite number; a point without a value is no result", v.Statistic)
@@ -104,8 +104,14 @@ func pointFromProto(in *pb.Point, l judge.Limits, one *[1]float64) (judge.Point,
 			return pt, err
 		}
 		pt.Readings = v.Readings.GetValues()
-	default:
-		return pt, noCounts("count", l.Kind)
+	case *pb.Point_Count:
+		if !l.Kind.Counts() {
+			return pt, noCounts("count", l.Kind)
+		}
+		pt.Count = &chart.Count{Nonconforming: v.Count.GetNonconforming(), Inspected: v.Count.GetInspected()}
+		if err := l.Kind.CheckCount(*pt.Count, l.SubgroupSize); err != nil {
+			return pt, definition.Invalid("count", "%v", err)
+		}
 	}
 	return pt, nil
 }
@@ -120,6 +126,8 @@ func noCounts(field string, k chart.Kind) error {
 func checkReadings(values []float64, l judge.Limits) error {
 	n := len(values)
 	switch {
+	case l.Kind.Counts():
+		return definition.Invalid("readings", "are given, but a chart of kind %s takes counts", l.Kind)
 	case l.Kind == chart.Given:
 		return definition.Invalid("readings", "are given, but no kind; send the statistic that is plotted, or name a kind")
 	case n == 0 || n > l.SubgroupSize:
@@ -146,6 +154,7 @@ type walk struct {
 	index       int
 	firstJudged int
 	full        bool
+	material    string
 	worst       judge.Standing
 	out         *pb.EvaluationResult
 	// places has, for each trace, the index of every point it has had: hits count back in points of their trace.
@@ -168,6 +177,7 @@ func newWalk(j *judge.Judge, n, firstJudged int, full bool) *walk {
 func (w *walk) take(pt judge.Point) {
 	v := &w.verdict
 	w.judge.Judge(w.state, pt, v)
+	w.material = pt.Material
 	for role, t := range v.Traces {
 		if t.Point {
 			w.places[role] = append(w.places[role], int32(w.index))
@@ -208,7 +218,9 @@ func (w *walk) pointVerdict(hits []*pb.Hit) *pb.PointVerdict {
 		if !t.Point {
 			continue
 		}
-		trace := traceVerdictToProto(t.Statistic, t.Scale, w.judge.Lines(chart.Role(role), t.Scale))
+		lines := w.judge.Lines(chart.Role(role), t.Scale)
+		trace := traceVerdictToProto(t.Statistic, t.Scale, lines)
+		trace.Original = originalVerdict(w.judge, chart.Role(role), w.material, t.Statistic, lines)
 		for _, h := range hits {
 			if h.Trace == roleToProto(chart.Role(role)) {
 				trace.Hits = append(trace.Hits, h)

@@ -35,9 +35,14 @@ func (s *EvaluationService) ExplainVerdict(ctx context.Context, in *pb.ExplainVe
 	if err != nil {
 		return nil, err
 	}
-	e := explainer{version: v, judge: j, result: result, before: pointsBefore(before, result)}
-	out.Rules, err = e.rules()
-	out.Arithmetic = e.sentences()
+	e := explainer{
+		version: v, judge: j, result: result, before: pointsBefore(before, result), whole: len(before) < rules.WindowPointsMax,
+	}
+	if out.Rules, err = e.rules(); err != nil {
+		return nil, err
+	}
+	changes, err := e.changeSentences()
+	out.Arithmetic = append(e.sentences(), changes...)
 	return out, err
 }
 
@@ -58,6 +63,8 @@ type explainer struct {
 	judge   *judge.Judge
 	result  store.StoredResult
 	before  []store.StoredResult // points, oldest first
+	// whole is set where before reaches back to the first point of the segment.
+	whole bool
 }
 
 // trace gives the results that are points of a trace, the explained one last.
@@ -138,9 +145,11 @@ func (e *explainer) rule(role chart.Role, spec rules.Spec, points []store.Stored
 	x.Side = sideToProto(side)
 	for i, r := range window {
 		t := r.Verdict.Traces[role]
+		lines := traceVerdictToProto(t.Statistic, t.Scale, t.Lines)
+		lines.Original = originalVerdict(e.judge, role, r.Result.Material, t.Statistic, t.Lines)
 		x.Window = append(x.Window, &pb.WindowPoint{
 			Result:    &pb.StoredKey{Source: r.Result.Source, SourceId: r.Result.SourceID, MeasuredAt: timeToProto(r.Result.MeasuredAt)},
-			Statistic: t.Statistic, Lines: traceVerdictToProto(t.Statistic, t.Scale, t.Lines),
+			Statistic: t.Statistic, Lines: lines,
 			Counts: counts(i, side),
 		})
 	}
@@ -215,24 +224,32 @@ func (e *explainer) firstCounting(role chart.Role, rule string, window []store.S
 }
 
 // probe judges a window of stored points by one rule.
-func (e *explainer) probe(role chart.Role, spec rules.Spec, window []store.StoredResult) ([]rules.Hit, error) {
-	l := e.judge.Limits()
-	plan, err := rules.Compile(l.Traces[role].Trace, l.Places, []rules.Spec{spec})
+func (e *explainer) probe(role chart.Role, spec rules.Spec, window []store.StoredResult) (found []rules.Hit, err error) {
+	err = e.replay(role, spec, window, false, func(h rules.Hit) { found = append(found, h) }, func(int, rules.Sum) {})
+	return found, err
+}
+
+// replay judges stored points by one rule, in a new segment. It calls hit as the rule completes, its Point counting the
+// points given, and, for an EWMA or CUSUM, after with what it has accumulated at each point.
+func (e *explainer) replay(role chart.Role, spec rules.Spec, window []store.StoredResult, headStart bool, hit func(rules.Hit), after func(i int, s rules.Sum)) error {
+	plan, err := e.judge.Alone(role, spec)
 	if err != nil {
-		return nil, err
+		return err
 	}
-	var found []rules.Hit
-	st := plan.Start(false)
+	st := plan.Start(headStart)
 	for i, r := range window {
 		t := r.Verdict.Traces[role]
-		at := func(h rules.Hit) { h.Point = i; found = append(found, h) }
+		at := func(h rules.Hit) { h.Point = i; hit(h) }
 		if r.Verdict.ByBound {
 			plan.JudgeBound(st, t.Statistic, boundOf(r.Result), t.Scale, at)
-			continue
+		} else {
+			plan.Judge(st, []float64{t.Statistic}, []rules.Scale{t.Scale}, at)
 		}
-		plan.Judge(st, []float64{t.Statistic}, []rules.Scale{t.Scale}, at)
+		for _, s := range plan.Sums(st) {
+			after(i, s)
+		}
 	}
-	return found, nil
+	return nil
 }
 
 // boundOf gives the bound of a result that was judged by one.
@@ -242,5 +259,5 @@ func boundOf(r definition.Result) decimal.Bound {
 			return reading.Bound
 		}
 	}
-	return decimal.Measured
+	return decimal.Below // a measured value outside the domain of the chart's scale
 }

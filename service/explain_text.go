@@ -19,6 +19,7 @@ var notJudgedTexts = map[judge.Reason]string{
 	judge.TooFewReadings:     "It has fewer readings than any trace of the chart needs.",
 	judge.BoundProvesNothing: "It is a less-than or greater-than result, and its bound leaves open on which side of the lines the value lies, or the chart has no rule that a bound can enter.",
 	judge.Voided:             "It was voided.",
+	judge.NoScale:            "Nothing says how far such a result may lie from the centre: its material is no level of the standardised track, or its relative range has a mean of zero.",
 }
 
 func notJudgedSentences(r store.StoredResult) []string {
@@ -34,6 +35,7 @@ func (e *explainer) sentences() []string {
 	v := e.version
 	out := []string{fmt.Sprintf("Version %d of chart %s judged it, effective from %s; it publishes %d decimals and a process sigma of %s %s.",
 		v.Number, v.Chart, v.EffectiveFrom.UTC().Format("2006-01-02T15:04:05Z07:00"), v.Decimals, e.number(v.ProcessSigma), v.Unit)}
+	out = append(out, e.modelSentences()...)
 	if e.result.Result.Role == definition.Repeat {
 		out = append(out, "It is a repeat: it is judged as the next point would be, but is no point itself, and does not overrule the first result.")
 	}
@@ -82,6 +84,8 @@ func (e *explainer) noPoint(role chart.Role) string {
 	switch {
 	case e.result.Verdict.ByBound:
 		return fmt.Sprintf("There is no point on the %s trace: a bound has no scatter.", role)
+	case e.version.Kind.Counts() || e.version.Kind.Duplicates():
+		return fmt.Sprintf("There is no point on the %s trace.", role)
 	case e.version.Kind == chart.Individuals:
 		return "There is no moving range: it is the first value of its segment, or follows a bound."
 	}
@@ -95,9 +99,15 @@ func (e *explainer) statistic(role chart.Role, x float64) string {
 	if e.result.Verdict.ByBound {
 		return fmt.Sprintf("Location: the readings %s bound the value, and the bound, %s, proves the verdict.", strings.Join(readings, ", "), e.number(x))
 	}
-	pt, err := e.result.Result.Point(e.version.SubgroupSize)
+	if c := e.result.Result.Count; c != nil {
+		return e.countStatistic(*c, rounded)
+	}
+	pt, err := e.result.Result.Point(definition.Chart{Kind: e.version.Kind, SubgroupSize: e.version.SubgroupSize})
 	if err != nil { // the readings were checked when they were stored
 		return ""
+	}
+	if onScale := e.onScale(); onScale != "" {
+		return fmt.Sprintf("%s: %s, %s.", capital(role.String()), onScale, rounded)
 	}
 	switch {
 	case role == chart.Location && len(readings) == 1:
@@ -110,7 +120,7 @@ func (e *explainer) statistic(role chart.Role, x float64) string {
 			return fmt.Sprintf("Dispersion: the moving range |%s - %s|, %s.", readings[0], before, rounded)
 		}
 		return fmt.Sprintf("Dispersion: the moving range, %s.", rounded)
-	case e.version.Kind == chart.XbarR:
+	case e.version.Kind == chart.XbarR || e.version.Kind.Duplicates():
 		lo, hi := 0, 0
 		for i, r := range pt.Readings {
 			if r < pt.Readings[lo] {
@@ -119,6 +129,9 @@ func (e *explainer) statistic(role chart.Role, x float64) string {
 			if r > pt.Readings[hi] {
 				hi = i
 			}
+		}
+		if e.relative(pt) {
+			return fmt.Sprintf("Dispersion: the range %s - %s in percent of the mean of the readings, %s.", readings[hi], readings[lo], rounded)
 		}
 		return fmt.Sprintf("Dispersion: the range %s - %s, %s.", readings[hi], readings[lo], rounded)
 	}
@@ -139,6 +152,14 @@ func (e *explainer) scale(role chart.Role, t store.TraceVerdict) string {
 	switch {
 	case t.Scale.Sigma == 0:
 		return ""
+	case e.version.Kind.Counts():
+		return e.countScale(t)
+	case role == chart.Location && e.version.Kind == chart.RunMeans:
+		return fmt.Sprintf("Its centre is %s and its sigma the root of %s squared between runs and %s squared / %d within: %s.", e.number(t.Scale.Centre),
+			e.number(e.judge.Limits().Model.BetweenSigma), e.number(e.version.ProcessSigma), n, shortest(significant(t.Scale.Sigma)))
+	case e.version.Kind.Duplicates():
+		return fmt.Sprintf("Its centre is %s and its sigma %s; both follow from the sigma of a single reading at this mean by the chart factors for %d readings.",
+			e.number(t.Scale.Centre), shortest(significant(t.Scale.Sigma)), n)
 	case role == chart.Dispersion:
 		return fmt.Sprintf("Its centre is %s and its sigma %s; both follow from the process sigma by the chart factors for %d readings.",
 			e.number(t.Scale.Centre), shortest(significant(t.Scale.Sigma)), e.dispersionSize(n))
@@ -160,6 +181,9 @@ func (e *explainer) line(role chart.Role, name string, l chart.Line, at *float64
 	switch {
 	case at == nil:
 		return fmt.Sprintf("There is no %s line on the %s trace.", name, role)
+	case l.Basis == chart.TailProbability && e.version.Kind.Counts():
+		return fmt.Sprintf("The %s line is %s: the whole count that leaves at most %v beyond it on its side while the mean stays at the centre.",
+			name, e.number(*at), chart.TailOf(multiple))
 	case l.Fixed():
 		return fmt.Sprintf("The %s line is %s, a %s: it does not depend on sigma.", name, e.number(*at), strings.ReplaceAll(l.Basis.String(), "_", " "))
 	}

@@ -4,12 +4,14 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"slices"
 	"time"
 
 	pb "limitary/api/limitary/v1"
 	"limitary/internal/chart"
 	"limitary/internal/decimal"
 	"limitary/internal/definition"
+	"limitary/internal/diagnostics"
 	"limitary/internal/judge"
 	"limitary/internal/limits"
 	"limitary/internal/rules"
@@ -60,6 +62,7 @@ type proposal struct {
 	effectiveFrom        time.Time
 	from, to             time.Time // of a stored basis
 	location, dispersion []rules.Spec
+	sides                rules.Sides
 }
 
 func readProposal(in *pb.ProposeVersionRequest) (*proposal, error) {
@@ -68,6 +71,9 @@ func readProposal(in *pb.ProposeVersionRequest) (*proposal, error) {
 		return nil, err
 	}
 	var err error
+	if p.sides, err = readOptions(in.Options, &p.compute); err != nil {
+		return nil, under("options", err)
+	}
 	if p.effectiveFrom, err = readMoment("effective_from", in.EffectiveFrom); err != nil {
 		return nil, err
 	}
@@ -85,6 +91,9 @@ func readProposal(in *pb.ProposeVersionRequest) (*proposal, error) {
 	if p.location, err = rulesFromProto(in.LocationRules.GetRules(), in.LocationRules.GetRuleSet()); err != nil {
 		return nil, under("location_rules", err)
 	}
+	if p.location, err = watched("location_rules", p.location, p.sides); err != nil {
+		return nil, err
+	}
 	if p.dispersion, err = rulesFromProto(in.DispersionRules.GetRules(), in.DispersionRules.GetRuleSet()); err != nil {
 		return nil, under("dispersion_rules", err)
 	}
@@ -98,9 +107,6 @@ func (p *proposal) readBasis() error {
 	var err error
 	switch b := p.in.GetBasis().(type) {
 	case nil:
-		if p.in.Centre == nil || p.in.ProcessSigma == nil {
-			return definition.Invalid("basis", "is not set; give stored or sent data, or both centre and process_sigma")
-		}
 	case *pb.ProposeVersionRequest_Stored:
 		if p.from, p.to, err = readBetween(b.Stored.GetFrom(), b.Stored.GetTo()); err != nil {
 			return under("stored", err)
@@ -131,21 +137,36 @@ func (s *LimitService) content(ctx context.Context, who store.Actor, p *proposal
 	if p.compute.PublishedDecimals == nil {
 		p.compute.PublishedDecimals = c.Decimals
 	}
+	if own := c.Kind.Counts() || c.Kind.Duplicates(); p.in.GetBasis() == nil && !own && (p.in.Centre == nil || p.in.ProcessSigma == nil) {
+		return none, definition.Invalid("basis", "is not set; give stored or sent data, or both centre and process_sigma")
+	}
 	basis, err := s.basis(ctx, who, p, c)
 	if err != nil {
 		return none, err
 	}
 	p.compute.Groups = basis.groups
-	res, err := limits.Compute(p.compute)
+	made, err := compute(p.compute, basis.about(), basis.path)
 	if err != nil {
-		return none, computeRefusal(err, basis.path)
+		return none, err
 	}
-	found := cautions(c.Kind, p.location, p.dispersion, res.Findings)
+	res := made.result
+	for role, specs := range map[chart.Role][]rules.Spec{chart.Location: p.location, chart.Dispersion: p.dispersion} {
+		if len(specs) > 0 && !c.Kind.Has(role) {
+			return none, definition.Invalid(role.String()+"_rules", "are given, but a chart of kind %s has no %s trace", c.Kind, role)
+		}
+	}
+	if c.Kind.Duplicates() {
+		p.dispersion = rules.OneSide(p.dispersion, rules.UpperOnly) // replicates that agree too well are no fault
+	}
+	found := cautions(c.Kind, p.location, p.dispersion, append(res.Findings, made.diagnostics.Findings...))
 	if err := accept(found, p.in.AcceptedCautions); err != nil {
 		return none, err
 	}
 	content := p.describe(c, who, res, basis)
-	content.Findings = append(findingsOf(res), found...)
+	if content.ChangeTest, err = s.compareStored(ctx, who, p, c, basis, content.Model); err != nil {
+		return none, err
+	}
+	content.Findings = slices.Concat(findingsOf(res), foundBy(made.diagnostics), found)
 	return content, checkContent(content)
 }
 
@@ -153,14 +174,25 @@ func (p *proposal) describe(c definition.Chart, who store.Actor, res limits.Resu
 	content := definition.Content{
 		Chart: c.Name, Lot: p.in.Lot, Kind: c.Kind, SubgroupSize: c.SubgroupSize, Unit: c.Unit,
 		Decimals: res.PublishedDecimals, ProcessSigma: res.ProcessSigma,
-		Location:   &definition.Trace{Trace: res.Location, RuleSet: p.in.LocationRules.GetRuleSet(), Rules: p.location},
-		Dispersion: &definition.Trace{Trace: res.Dispersion, RuleSet: p.in.DispersionRules.GetRuleSet(), Rules: p.dispersion},
-		Groups:     res.N, Readings: res.Readings, CentreGiven: res.CentreOrigin == limits.Target, SigmaGiven: res.SigmaOrigin == limits.Target,
+		Components: componentsOf(res), Tails: tailsOf(res), Parts: partsOf(res), FalseAlarm: falseAlarmOf(res), Compared: comparedOf(res),
+		Groups: res.N, Readings: res.Readings, CentreGiven: res.CentreOrigin == limits.Target, SigmaGiven: res.SigmaOrigin == limits.Target,
 		Provisional: res.Provisional, Estimates: estimatesOf(res), Intervals: intervalsOf(res), Basis: basis.text,
 		Excluded: []definition.Excluded{}, ExcludedPoints: []definition.Excluded{},
 		Author: who.Principal, Reason: p.in.Reason, EffectiveFrom: p.effectiveFrom,
 		Instructions: definition.Instructions{Look: p.in.Instructions.GetLook(), Act: p.in.Instructions.GetAct(), Stop: p.in.Instructions.GetStop()},
 		Judge:        rules.JudgeNumber,
+	}
+	if c.Kind.Has(chart.Location) {
+		content.Location = &definition.Trace{Trace: res.Location, RuleSet: p.in.LocationRules.GetRuleSet(), Rules: p.location}
+	}
+	if c.Kind.Has(chart.Dispersion) {
+		content.Dispersion = &definition.Trace{Trace: res.Dispersion, RuleSet: p.in.DispersionRules.GetRuleSet(), Rules: p.dispersion}
+	}
+	if !emptyModel(res.Model) {
+		content.Model = &res.Model
+	}
+	if p.in.GetStored() != nil {
+		content.BasisFrom, content.BasisTo = &p.from, &p.to
 	}
 	for _, e := range res.Estimates {
 		if e.Chosen {
@@ -181,7 +213,7 @@ func (p *proposal) describe(c definition.Chart, who store.Actor, res limits.Resu
 // checkContent makes sure that the judge can work by the version before it gets a number.
 func checkContent(c definition.Content) error {
 	for _, t := range []*definition.Trace{c.Location, c.Dispersion} {
-		if t.Rules == nil {
+		if t != nil && t.Rules == nil {
 			t.Rules = []rules.Spec{}
 		}
 	}
@@ -217,7 +249,12 @@ type basisData struct {
 	// points has the index of each group in data sent along, keys its key among stored results.
 	points []int
 	keys   []resultKey
+	// times has the moment each stored group was measured, days and runs what tells its day and analytical run.
+	times      []time.Time
+	days, runs []string
 }
+
+func (b *basisData) about() diagnostics.Times { return diagnostics.Times{Days: b.days, Runs: b.runs} }
 
 type resultKey struct{ source, id string }
 
@@ -248,6 +285,10 @@ func (s *LimitService) storedBasis(ctx context.Context, who store.Actor, p *prop
 	if err != nil {
 		return nil, err
 	}
+	zone, err := time.LoadLocation(c.DisplayZone) // checked when the chart was made; a day is the laboratory's
+	if err != nil {
+		zone = time.UTC
+	}
 	out := &basisData{keys: make([]resultKey, 0, len(rows)), path: func(int, string) string { return "stored" }}
 	for _, row := range rows {
 		key := resultKey{row.Result.Source, row.Result.SourceID}
@@ -258,6 +299,8 @@ func (s *LimitService) storedBasis(ctx context.Context, who store.Actor, p *prop
 			return nil, err
 		}
 		out.groups, out.keys = append(out.groups, g), append(out.keys, key)
+		out.times, out.runs = append(out.times, row.Result.MeasuredAt), append(out.runs, row.Result.RunID)
+		out.days = append(out.days, row.Result.MeasuredAt.In(zone).Format(time.DateOnly))
 	}
 	for key := range excluded {
 		return nil, definition.Invalid("stored.exclusions", "source %q, id %q is no result of the basis", clip(key.source), clip(key.id))
@@ -291,11 +334,11 @@ func storedExclusions(in []*pb.StoredExclusion) (map[resultKey]string, error) {
 
 // storedGroup turns a stored result into material for an estimate. A bound has no value to estimate from.
 func storedGroup(row store.BasisRow, c definition.Chart, excluded bool, why string) (limits.Group, error) {
-	pt, err := row.Result.Point(c.SubgroupSize)
+	pt, err := row.Result.Point(c)
 	if err != nil {
 		return limits.Group{}, err
 	}
-	g := limits.Group{Readings: pt.Readings, Decimals: row.Result.Places(), BreakBefore: row.BreakBefore, Excluded: excluded, ExclusionReason: why}
+	g := limits.Group{Readings: pt.Readings, Count: pt.Count, Material: row.Result.Material, Decimals: row.Result.Places(), BreakBefore: row.BreakBefore, Excluded: excluded, ExclusionReason: why}
 	for i, b := range pt.Bounds {
 		if b != decimal.Measured && !excluded {
 			return g, definition.Invalid("stored.exclusions", "source %q, id %q has the reading %q, a bound, which gives no value to estimate from; exclude it with a reason",

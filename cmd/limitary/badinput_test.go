@@ -51,8 +51,8 @@ func TestBadInput(t *testing.T) {
 		{"a first line without a result", good, with(judged, "--first-judged", "77"), 1, "--first-judged: line 77 holds no result"},
 		{"decimals that hide sigma", good, with(compute, "--decimals", "0", "--centre", "10", "--sigma", "0.2"), 1, "--decimals: 0: sigma is 0.2 and rounds to zero"},
 		// The call.
-		{"no kind", good, []string{"compute"}, 2, "--kind is not given; want individuals, xbar_r or xbar_s"},
-		{"an unknown kind", good, []string{"compute", "--kind", "pie"}, 2, `--kind "pie": want individuals, xbar_r or xbar_s`},
+		{"no kind", good, []string{"compute"}, 2, "--kind is not given; want one of individuals, xbar_r, xbar_s, run_means"},
+		{"an unknown kind", good, []string{"compute", "--kind", "pie"}, 2, `--kind "pie": want one of individuals`},
 		{"statistics as given have no limits", good, []string{"compute", "--kind", "given"}, 2, `--kind "given"`},
 		{"an unknown set", good, with(judged, "--rules", "nelson"), 2, `--rules "nelson": there is no such set; want one or several of shewhart-1931`},
 		{"a set twice", good, with(judged, "--rules", "nelson-1984,nelson-1984"), 2, "the set nelson-1984 is named twice"},

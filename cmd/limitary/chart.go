@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"io"
 	"slices"
+	"strconv"
 	"strings"
 	"text/tabwriter"
 	"time"
@@ -12,6 +13,7 @@ import (
 	"google.golang.org/protobuf/types/known/durationpb"
 
 	pb "limitary/api/limitary/v1"
+	"limitary/internal/chart"
 )
 
 const chartAbout = `Works on the charts of a running service.
@@ -30,8 +32,8 @@ func chartCreate(ctx context.Context, env *environment, args []string) int {
 	var client clientFlags
 	client.add(f)
 	requestID := requestIDFlag(f)
-	kind := f.String("kind", "", "`KIND`: individuals, xbar_r or xbar_s; required")
-	size := f.Int("size", 1, "`N` readings in a full subgroup")
+	kind := f.String("kind", "", "`KIND`: "+chart.KindNames()+"; required")
+	size := f.Int("size", 1, "`N` readings in a full subgroup, or items in every sample of an np chart")
 	unit := f.String("unit", "", "`UNIT` of every reading, \"1\" where there is none; required")
 	name := f.String("name", "", "`NAME` of the chart, where it is not given as the argument")
 	title := f.String("title", "", "`TEXT` for people")
@@ -43,6 +45,9 @@ func chartCreate(ctx context.Context, env *environment, args []string) int {
 	gap := f.Duration("longest-gap", 0, "`INTERVAL` that a moving range of an estimate may bridge at most")
 	repeats := f.String("repeat-rule", "", "`TEXT` of the laboratory's rule for repeating a control")
 	lots := f.Bool("lots-are-tracks", false, "each lot of control material is a track of its own")
+	standardised := f.Bool("standardised", false, "readings are standardised by the level of the material that each result names")
+	shift := f.Float64("relevant-shift", 0, "`D` sigmas up to which a difference from the centre in force does not matter (default 0.5)")
+	ratio := f.Float64("relevant-ratio", 0, "`Q` up to which a ratio to the sigma in force does not matter, either way (default 1.25)")
 	rest, code, done := f.parse(args, 0, 1)
 	if done {
 		return code
@@ -60,6 +65,7 @@ func chartCreate(ctx context.Context, env *environment, args []string) int {
 	c := &pb.Chart{
 		Name: *name, Title: *title, Kind: pb.ChartKind(k), SubgroupSize: int32(*size), Unit: *unit, Labels: labels, DisplayZone: *zone,
 		PlanInterval: optionalDuration(*plan), LongestGap: optionalDuration(*gap), RepeatRule: *repeats, LotsAreTracks: *lots,
+		Standardised: *standardised, RelevantShiftSigmas: *shift, RelevantSigmaRatio: *ratio,
 	}
 	if *decimals >= 0 {
 		d := int32(*decimals)
@@ -175,11 +181,25 @@ func printChart(out io.Writer, c *pb.Chart) {
 	slices.Sort(labels)
 	row("labels", "%s", dash(strings.Join(labels, " ")))
 	row("lots are tracks", "%t", c.LotsAreTracks)
+	if c.Standardised {
+		row("standardised", "by the level of the material that each result names")
+	}
+	if c.RelevantShiftSigmas > 0 || c.RelevantSigmaRatio > 0 {
+		row("does not matter", "a difference up to %s sigmas, a ratio up to %s", relevantText(c.RelevantShiftSigmas), relevantText(c.RelevantSigmaRatio))
+	}
 	row("revision", "%d", c.Revision)
 	if c.Archived {
 		row("archived", "yes")
 	}
 	_ = w.Flush() // a failing writer shows when the command ends
+}
+
+// relevantText writes a figure of relevance, 0 being the default.
+func relevantText(x float64) string {
+	if x == 0 {
+		return "(default)"
+	}
+	return strconv.FormatFloat(x, 'g', -1, 64)
 }
 
 func kindName(k pb.ChartKind) string {

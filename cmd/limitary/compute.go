@@ -4,22 +4,28 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"path/filepath"
 	"strings"
 
+	pb "limitary/api/limitary/v1"
 	"limitary/internal/chart"
-	"limitary/internal/decimal"
+	"limitary/internal/diagnostics"
 	"limitary/internal/limits"
 	"limitary/internal/report"
 	"limitary/internal/report/judged"
 	"limitary/service"
 )
 
-const computeAbout = `Computes control limits from a file of control results: both traces, what they rest on, all estimators of
-sigma side by side, intervals, findings, and the signals of the same results against these limits. FILE is delimited
+const computeAbout = `Computes control limits from a file of control results: the lines and what they rest on, all estimators of sigma side
+by side, intervals, what the results say against their limits, and the signals of the same results. FILE is delimited
 text with a header line; "-" reads standard input.
 
-A chart of kind individuals takes one reading a row. xbar_r and xbar_s take subgroups: several --value columns, or one
-and a --subgroup column. Nothing is stored; "limitary judge --limits" judges by what --json prints.
+A chart of kind individuals takes one reading a row. xbar_r, xbar_s, run_means, duplicate_range and relative_range take
+subgroups: several --value columns, or one and a --subgroup column. p, np, c and u take one count a row, in the --value
+column, and --inspected says of how much; c counts in one inspection unit and np in samples of --size. Nothing is stored;
+"limitary judge --limits" judges by what --json prints.
+
+With --in-force it also tells whether limits in force should be kept, given these results.
 
 It ends with 0 where limits were computed, whatever the signals, with 1 where the file does not give any, and with 2
 where it was called wrongly.`
@@ -30,6 +36,8 @@ type computeCall struct {
 	source                                   sourceFlags
 	fixed                                    lineFlags
 	rules                                    ruleFlags
+	kinds                                    kindFlags
+	inForce                                  inForceFlags
 	kind, estimator, title, unit, plot, file string
 	centre, sigma                            numberFlag
 	size, decimals                           countFlag
@@ -39,15 +47,17 @@ type computeCall struct {
 func runCompute(ctx context.Context, env *environment, args []string) int {
 	c := &computeCall{env: env}
 	f := newFlags(env, "compute --kind KIND [flags] FILE", computeAbout)
-	f.StringVar(&c.kind, "kind", "", "`KIND` of chart: individuals, xbar_r or xbar_s")
-	f.Var(&c.size, "size", "`N` readings in a full subgroup; if not given, the most that a result of the file has")
+	f.StringVar(&c.kind, "kind", "", "`KIND` of chart: "+chart.KindNames())
+	f.Var(&c.size, "size", "`N` readings in a full subgroup, or items in every sample of an np chart; if not given, what the file shows")
 	c.source.register(f, true)
 	f.StringVar(&c.estimator, "estimator", "", "`NAME` of the estimator of sigma; if not given, the usual one of the kind")
 	f.Var(&c.centre, "centre", "`C`: the centre is a target, not estimated")
 	f.Var(&c.sigma, "sigma", "`S`: the standard deviation of a single reading is a target, not estimated")
 	f.Var(&c.decimals, "decimals", "`D` published decimals; if not given, chosen from the results")
 	c.fixed.register(f)
+	c.kinds.register(f)
 	c.rules.register(f)
+	c.inForce.register(f)
 	registerOutput(f, &c.title, &c.unit, &c.plot, &c.json)
 	rest, code, done := f.parse(args, 1, 1)
 	if done {
@@ -93,22 +103,62 @@ func (c *computeCall) run(ctx context.Context) error {
 	if req.SubgroupSize, err = sizeFor(req.Kind, c.size.value, src); err != nil {
 		return err
 	}
-	groups, rowOf, err := groupsOf(src)
+	basis, err := groupsOf(src, req.Kind, req.SubgroupSize)
 	if err != nil {
 		return err
 	}
-	req.Groups = groups
+	req.Groups = basis.groups
+	if err := c.levelsTold(&req, src); err != nil {
+		return err
+	}
 	res, err := limits.Compute(req)
 	if err != nil {
-		return limitsFault(err, src, rowOf)
+		return limitsFault(err, src, basis.rowOf)
 	}
-	return c.answer(ctx, src, res, groups, rowOf, rulesChosen)
+	made := computation{request: req, result: res, basis: basis, diagnostics: diagnostics.Examine(req, res, basis.times)}
+	if c.inForce.file != "" {
+		if made.change, err = c.againstInForce(&req); err != nil {
+			return err
+		}
+	}
+	return c.answer(ctx, src, made, rulesChosen)
+}
+
+// computation is what was computed and from what.
+type computation struct {
+	request     limits.Request
+	result      limits.Result
+	basis       basisOf
+	diagnostics diagnostics.Report
+	// change is the answer on limits in force, nil where none are given.
+	change *pb.ChangeTest
+}
+
+// againstInForce answers whether the limits in force should be kept.
+func (c *computeCall) againstInForce(req *limits.Request) (*pb.ChangeTest, error) {
+	inForce, err := c.inForce.read(req)
+	if err != nil {
+		return nil, err
+	}
+	out, err := service.CompareSent(inForce, *req)
+	if err != nil {
+		return nil, fmt.Errorf("--in-force: %w", err)
+	}
+	return out, nil
+}
+
+// levelsTold refuses levels where nothing says which of them a result is of.
+func (c *computeCall) levelsTold(req *limits.Request, src *source) error {
+	if len(req.Levels) > 0 && c.source.material == "" {
+		return usageError{fmt.Errorf("--level: name the column that tells the levels of %s apart with --material", src.name)}
+	}
+	return nil
 }
 
 // request turns the flags into a request without data.
 func (c *computeCall) request() (req limits.Request, chosen choice, err error) {
 	if c.kind == "" {
-		return req, chosen, fmt.Errorf("--kind is not given; want individuals, xbar_r or xbar_s")
+		return req, chosen, fmt.Errorf("--kind is not given; want one of %s", chart.KindNames())
 	}
 	if req.Kind, err = parseKind(c.kind); err != nil {
 		return req, chosen, err
@@ -116,14 +166,23 @@ func (c *computeCall) request() (req limits.Request, chosen choice, err error) {
 	if c.estimator != "" {
 		name := strings.ToUpper(strings.ReplaceAll(c.estimator, "-", "_"))
 		if req.Estimator, err = limits.ParseEstimator(name); err != nil || req.Estimator == limits.DefaultEstimator {
-			return req, chosen, fmt.Errorf("--estimator %q: want one of %v", c.estimator, limits.EstimatorsOf(req.Kind))
+			return req, chosen, fmt.Errorf("--estimator %q: %s", c.estimator, estimatorsFor(req.Kind))
 		}
 	}
 	req.Centre, req.Sigma, req.PublishedDecimals = c.centre.value, c.sigma.value, c.decimals.value
 	if req.Fixed, err = c.fixed.fixed(); err != nil {
 		return req, chosen, err
 	}
+	if err = c.kinds.apply(&req); err != nil {
+		return req, chosen, err
+	}
+	if err = c.inForce.check(); err != nil {
+		return req, chosen, err
+	}
 	if chosen, err = c.rules.choose(req.Kind); err != nil {
+		return req, chosen, err
+	}
+	if err = chosen.watchSide(c.kinds.oneSided); err != nil {
 		return req, chosen, err
 	}
 	for role := range chart.Roles {
@@ -134,78 +193,24 @@ func (c *computeCall) request() (req limits.Request, chosen choice, err error) {
 	return req, chosen, nil
 }
 
-// sizeFor gives the subgroup size: the one asked for, or the most readings a result has.
-func sizeFor(kind chart.Kind, asked *int, src *source) (int, error) {
-	most := 0
-	for i := range src.table.Len() {
-		most = max(most, len(src.table.Figures(i)))
+// estimatorsFor tells which estimators a kind has.
+func estimatorsFor(kind chart.Kind) string {
+	if kind.Counts() {
+		return fmt.Sprintf("the sigma of counts follows from their mean, so a chart of kind %s has none", kind)
 	}
-	size := most
-	if kind == chart.Individuals || kind == chart.Given {
-		size = 1
-	}
-	if asked != nil {
-		size = *asked
-		if err := kind.CheckSize(size); err != nil {
-			return 0, usageError{fmt.Errorf("--size %d: %w", size, err)}
-		}
-	}
-	var wrong *judged.SizeError
-	switch err := judged.CheckSizes(src.table, size); {
-	case errors.As(err, &wrong) && size == 1:
-		return 0, fmt.Errorf("%s: line %d: the result has %d readings, and a chart of this kind takes one; "+
-			"choose one column with --value, or --kind xbar_r or xbar_s", src.name, wrong.Line, wrong.Readings)
-	case err != nil:
-		return 0, fmt.Errorf("%s: %w; is --size right?", src.name, err)
-	}
-	if (kind == chart.XbarR || kind == chart.XbarS) && size < 2 {
-		return 0, fmt.Errorf("%s: every result has one reading, and a chart of kind %s takes subgroups; "+
-			"name several --value columns or a --subgroup column, or choose --kind individuals", src.name, kind)
-	}
-	return size, nil
-}
-
-// groupsOf makes the basis of a computation. A row without a reading is no group, and no moving range reaches across it.
-func groupsOf(src *source) (groups []limits.Group, rowOf []int, err error) {
-	t := src.table
-	var readings []decimal.Reading
-	gap := false
-	for row := range t.Len() {
-		reason, excluded := src.excluded[row]
-		g := limits.Group{BreakBefore: t.Break(row) || gap, Excluded: excluded, ExclusionReason: reason}
-		readings = t.AppendReadings(readings[:0], row)
-		if len(readings) == 0 && !excluded {
-			gap = true
-			continue
-		}
-		gap = false
-		for _, r := range readings {
-			switch {
-			case r.Bound == decimal.Measured:
-				g.Readings, g.Decimals = append(g.Readings, r.Value), max(g.Decimals, r.Places)
-			case !excluded:
-				return nil, nil, fmt.Errorf("%s: line %d: %s is only a bound, which no estimate can take in; leave the result out with --exclude %d=REASON",
-					src.name, t.Line(row), boundText(r), t.Line(row))
-			}
-		}
-		groups, rowOf = append(groups, g), append(rowOf, row)
-	}
-	return groups, rowOf, nil
-}
-
-func boundText(r decimal.Reading) string {
-	sign := map[decimal.Bound]string{decimal.Below: "<", decimal.Above: ">"}[r.Bound]
-	return fmt.Sprintf("%q", sign+report.Fixed(r.Value, min(r.Places, decimal.PlacesMax)))
+	return fmt.Sprintf("want one of %v", limits.EstimatorsOf(kind))
 }
 
 // answer judges the results by their limits and writes everything.
-func (c *computeCall) answer(ctx context.Context, src *source, res limits.Result, groups []limits.Group, rowOf []int, chosen choice) error {
+func (c *computeCall) answer(ctx context.Context, src *source, made computation, chosen choice) error {
+	res := made.result
 	j, err := judgeOf(res, chosen)
 	if err != nil {
 		return err
 	}
-	picture, each := pictureOf(c.plot, j, src)
-	outcome, err := judged.Run(ctx, j, src.table, 0, each)
+	rows := src.rows(res.Kind, res.SubgroupSize)
+	picture, each := pictureOf(c.plot, j, rows)
+	outcome, err := judged.Run(ctx, j, rows, 0, each)
 	if err != nil {
 		return err
 	}
@@ -221,19 +226,22 @@ func (c *computeCall) answer(ctx context.Context, src *source, res limits.Result
 	}
 	if c.json {
 		tellNotes(c.env, about)
-		answer := service.ComputedToProto(res)
-		for _, e := range answer.Exclusions {
-			e.Point = int32(rowOf[e.Point])
-		}
-		return writeJSON(c.env.Stdout, answer)
+		return writeJSON(c.env.Stdout, made.message())
 	}
-	used := make([]float64, 0, res.Readings)
-	for _, g := range groups {
-		if !g.Excluded {
-			used = append(used, g.Readings...)
-		}
+	return report.Limits(c.env.Stdout, report.Computed{
+		About: about, Result: res, Readings: made.basis.used(), Groups: made.basis.groups, RowOf: made.basis.rowOf, Outcome: outcome,
+		Diagnostics: &made.diagnostics, Change: changeOf(made.change, report.Foreign(filepath.Base(c.inForce.file))),
+	})
+}
+
+// message is the service's own answer, with the rows of the file in place of the groups of the computation.
+func (m *computation) message() *pb.ComputeLimitsResponse {
+	answer := service.ComputedToProto(m.result, m.diagnostics)
+	for _, e := range answer.Exclusions {
+		e.Point = int32(m.basis.rowOf[e.Point])
 	}
-	return report.Limits(c.env.Stdout, report.Computed{About: about, Result: res, Readings: used, RowOf: rowOf, Outcome: outcome})
+	answer.ChangeTest = m.change
+	return answer
 }
 
 func originWord(res limits.Result) string {

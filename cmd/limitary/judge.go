@@ -19,8 +19,8 @@ summary. FILE is delimited text with a header line; "-" reads standard input.
 
 Limits come from --centre and --sigma, or from a file that "limitary compute --json" wrote. Without --kind each row is
 one statistic, plotted as given, and --sigma is its standard deviation. With --kind, --sigma is that of a single reading
-and the limits of both traces follow from it. Less-than and greater-than results ("<0.05") are judged where their bound
-proves the verdict, else they are not judged.
+and the limits of both traces follow from it; other kinds of chart come from such a file alone. Less-than and
+greater-than results ("<0.05") are judged where their bound proves the verdict, else they are not judged.
 
 It ends with 0 also where signals were found; --fail-on makes it end with 3 where a result asks for what is named, or
 for worse. It ends with 1 where the file cannot be judged and with 2 where it was called wrongly.`
@@ -38,6 +38,7 @@ type judgeCall struct {
 	fixed                                                              lineFlags
 	rules                                                              ruleFlags
 	kind, limits, firstJudged, failOn, detail, title, unit, plot, file string
+	oneSided                                                           string
 	centre, sigma                                                      numberFlag
 	size, decimals                                                     countFlag
 	json                                                               bool
@@ -49,12 +50,13 @@ func runJudge(ctx context.Context, env *environment, args []string) int {
 	f.Var(&c.centre, "centre", "`C`: the centre line of the location trace")
 	f.Var(&c.sigma, "sigma", "`S`: the standard deviation of the statistic, or with --kind that of a single reading")
 	f.StringVar(&c.limits, "limits", "", "`FILE` that compute --json wrote, instead of --centre, --sigma, --kind and the like")
-	f.StringVar(&c.kind, "kind", "", "`KIND` of chart: individuals, xbar_r or xbar_s; if not given, statistics are plotted as given")
+	f.StringVar(&c.kind, "kind", "", "`KIND` of chart: "+givenKinds()+"; if not given, statistics are plotted as given")
 	f.Var(&c.size, "size", "`N` readings in a full subgroup; if not given, the most that a result of the file has")
 	f.Var(&c.decimals, "decimals", "`D` decimals that statistics and lines are rounded to before they are compared; if not given, nothing is rounded")
 	c.source.register(f, false)
 	c.fixed.register(f)
 	c.rules.register(f)
+	f.StringVar(&c.oneSided, "one-sided", "", "`SIDE` of the location trace that alone is watched, as compute was told: upper or lower")
 	f.StringVar(&c.firstJudged, "first-judged", "", "`LINE` of the first result that is reported; those before it only count towards patterns")
 	f.StringVar(&c.failOn, "fail-on", "", "end with exit code 3 where a result has at least this `STANDING`: look, act or stop")
 	f.StringVar(&c.detail, "detail", "", "`LEVEL` full adds one verdict for each result")
@@ -104,9 +106,15 @@ func (c *judgeCall) run(ctx context.Context) (judge.Standing, error) {
 	if err != nil {
 		return 0, usageError{err}
 	}
+	if err := chosen.watchSide(c.oneSided); err != nil {
+		return 0, usageError{err}
+	}
 	src, err := c.source.read(ctx, c.env, c.file)
 	if err != nil {
 		return 0, err
+	}
+	if len(l.Model.Levels) > 0 && c.source.material == "" {
+		return 0, usageError{errors.New("--material: the limits standardise results by their material; name its column")}
 	}
 	asked := c.size.value
 	if c.limits != "" {
@@ -155,10 +163,11 @@ func (c *judgeCall) answer(ctx context.Context, src *source, j *judge.Judge, fir
 	if n := src.table.Len() - first; c.detail == "full" && n > resultsDetailMax {
 		return 0, usageError{fmt.Errorf("--detail full: %d results, the limit is %d; leave it out, or begin later with --first-judged", n, resultsDetailMax)}
 	}
-	picture, each := pictureOf(c.plot, j, src)
+	rows := src.rows(j.Limits().Kind, j.Limits().SubgroupSize)
+	picture, each := pictureOf(c.plot, j, rows)
 	var verdicts *report.Verdicts
 	if c.detail == "full" && !c.json {
-		verdicts = report.NewVerdicts(j, src.table, first)
+		verdicts = report.NewVerdicts(j, rows, first)
 		draw := each
 		each = func(row int, v *judge.Verdict) {
 			verdicts.Take(row, v)
@@ -167,7 +176,7 @@ func (c *judgeCall) answer(ctx context.Context, src *source, j *judge.Judge, fir
 			}
 		}
 	}
-	outcome, err := judged.Run(ctx, j, src.table, first, each)
+	outcome, err := judged.Run(ctx, j, rows, first, each)
 	if err != nil {
 		return 0, err
 	}
@@ -179,16 +188,13 @@ func (c *judgeCall) answer(ctx context.Context, src *source, j *judge.Judge, fir
 	}
 	if c.json {
 		tellNotes(c.env, about)
-		return outcome.Worst(), writeJSON(c.env.Stdout, c.message(src, j, first))
+		return outcome.Worst(), writeJSON(c.env.Stdout, c.message(rows, j, first))
 	}
 	return outcome.Worst(), report.Judged(c.env.Stdout, report.Judgement{About: about, Outcome: outcome, LimitsFrom: from, Verdicts: verdicts})
 }
 
 // message answers as the service does.
-func (c *judgeCall) message(src *source, j *judge.Judge, first int) *pb.EvaluateBatchResponse {
-	var scratch judged.Scratch
-	result := service.EvaluatePoints(j, src.table.Len(), first, c.detail == "full", func(i int) judge.Point {
-		return judged.PointOf(src.table, i, &scratch)
-	})
+func (c *judgeCall) message(rows *judged.Rows, j *judge.Judge, first int) *pb.EvaluateBatchResponse {
+	result := service.EvaluatePoints(j, rows.Table.Len(), first, c.detail == "full", rows.Point)
 	return &pb.EvaluateBatchResponse{Evaluations: []*pb.EvaluationResult{result}, Judge: rules.JudgeNumber}
 }

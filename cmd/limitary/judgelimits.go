@@ -31,6 +31,9 @@ func (c *judgeCall) startLimits() (l judge.Limits, from string, err error) {
 	if l.Kind, err = parseKind(c.kind); err != nil {
 		return l, "", usageError{err}
 	}
+	if !fromFigures(l.Kind) {
+		return l, "", usageError{fmt.Errorf("--kind %s: centre and sigma do not say all of its limits; let \"limitary compute --kind %s --json\" write them, from results or from targets, and give them with --limits", l.Kind, l.Kind)}
+	}
 	if d := c.decimals.value; d != nil {
 		if l.Places = *d; l.Places > decimal.PlacesMax {
 			return l, "", usageError{fmt.Errorf("--decimals %d: want 0 to %d", l.Places, decimal.PlacesMax)}
@@ -141,31 +144,52 @@ func (c *judgeCall) place(l *judge.Limits, chosen choice) error {
 // limitsBytesMax bounds a file of limits: one with a hundred thousand exclusions is smaller.
 const limitsBytesMax = 16 << 20
 
+// fromFigures reports whether centre and sigma alone say the limits of a kind.
+func fromFigures(kind chart.Kind) bool { return kind == chart.Given || plainReadings(kind) }
+
+// givenKinds names the kinds that --kind takes beside --centre and --sigma.
+func givenKinds() string { return kindsThat(fromFigures) }
+
 // readLimits reads what compute --json wrote.
 func readLimits(path string) (l judge.Limits, from string, err error) {
-	file, err := os.Open(path)
+	in, l, err := readComputed("--limits", path)
 	if err != nil {
-		return l, "", fmt.Errorf("--limits: %w", err)
+		return l, "", err
 	}
-	defer file.Close()
-	raw, err := io.ReadAll(io.LimitReader(file, limitsBytesMax+1))
-	if err != nil {
-		return l, "", fmt.Errorf("--limits: %w", err)
+	figures := "process sigma " + report.Fixed(l.ProcessSigma, l.Places)
+	if t := l.Traces[chart.Location]; t != nil {
+		centre := "centre " + report.FixedOr(t.Centre, l.Places, "none")
+		if figures = centre + ", " + figures; l.Kind.Counts() {
+			figures = centre
+		}
 	}
-	if len(raw) > limitsBytesMax {
-		return l, "", fmt.Errorf("--limits %s: is larger than %d bytes, the limit", path, limitsBytesMax)
-	}
-	var in pb.ComputeLimitsResponse
-	if err := protojson.Unmarshal(raw, &in); err != nil {
-		return l, "", fmt.Errorf("--limits %s: is not what \"limitary compute --json\" writes: %w", path, err)
-	}
-	if l, err = service.ComputedLimits(&in); err != nil {
-		return l, "", fmt.Errorf("--limits %s: %w", path, err)
-	}
-	from = fmt.Sprintf("from %s: centre %s, process sigma %s, from %s", report.Foreign(path),
-		report.FixedOr(l.Traces[chart.Location].Centre, l.Places, "none"), report.Fixed(l.ProcessSigma, l.Places), report.Count(int(in.N), "result"))
+	from = fmt.Sprintf("from %s: %s, from %s", report.Foreign(path), figures, report.Count(int(in.N), "result"))
 	if in.Provisional {
 		from += "; PROVISIONAL, fewer than the advised " + fmt.Sprint(in.AdvisedMinimum)
 	}
 	return l, from, nil
+}
+
+// readComputed reads what compute --json wrote, for a flag.
+func readComputed(flag, path string) (in *pb.ComputeLimitsResponse, l judge.Limits, err error) {
+	file, err := os.Open(path)
+	if err != nil {
+		return nil, l, fmt.Errorf("%s: %w", flag, err)
+	}
+	defer file.Close()
+	raw, err := io.ReadAll(io.LimitReader(file, limitsBytesMax+1))
+	if err != nil {
+		return nil, l, fmt.Errorf("%s: %w", flag, err)
+	}
+	if len(raw) > limitsBytesMax {
+		return nil, l, fmt.Errorf("%s %s: is larger than %d bytes, the limit", flag, path, limitsBytesMax)
+	}
+	in = &pb.ComputeLimitsResponse{}
+	if err := protojson.Unmarshal(raw, in); err != nil {
+		return nil, l, fmt.Errorf("%s %s: is not what \"limitary compute --json\" writes: %w", flag, path, err)
+	}
+	if l, err = service.ComputedLimits(in); err != nil {
+		return nil, l, fmt.Errorf("%s %s: %w", flag, path, err)
+	}
+	return in, l, nil
 }

@@ -14,9 +14,12 @@ import (
 
 // judgeOf makes the judge of limits just computed.
 func judgeOf(res limits.Result, chosen choice) (*judge.Judge, error) {
-	l := judge.Limits{Kind: res.Kind, SubgroupSize: res.SubgroupSize, Places: res.PublishedDecimals, ProcessSigma: res.ProcessSigma}
-	l.Traces[chart.Location] = &judge.Trace{Trace: res.Location, Rules: chosen.specs[chart.Location]}
-	l.Traces[chart.Dispersion] = &judge.Trace{Trace: res.Dispersion, Rules: chosen.specs[chart.Dispersion]}
+	l := judge.Limits{Kind: res.Kind, SubgroupSize: res.SubgroupSize, Places: res.PublishedDecimals, ProcessSigma: res.ProcessSigma, Model: res.Model}
+	for role, trace := range [...]chart.Trace{res.Location, res.Dispersion} {
+		if res.Kind.Has(chart.Role(role)) {
+			l.Traces[role] = &judge.Trace{Trace: trace, Rules: chosen.specs[role]}
+		}
+	}
 	j, err := judge.New(l)
 	if err != nil {
 		return nil, judgeFault(err)
@@ -25,11 +28,11 @@ func judgeOf(res limits.Result, chosen choice) (*judge.Judge, error) {
 }
 
 // pictureOf begins a picture where one is asked for; each takes the verdicts into it.
-func pictureOf(path string, j *judge.Judge, src *source) (p *judged.Picture, each func(int, *judge.Verdict)) {
+func pictureOf(path string, j *judge.Judge, rows *judged.Rows) (p *judged.Picture, each func(int, *judge.Verdict)) {
 	if path == "" {
 		return nil, nil
 	}
-	p = judged.NewPicture(j, src.table)
+	p = judged.NewPicture(j, rows)
 	return p, p.Take
 }
 

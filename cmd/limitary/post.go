@@ -10,11 +10,13 @@ import (
 
 	pb "limitary/api/limitary/v1"
 	"limitary/internal/decimal"
-	"limitary/internal/resultfile"
 )
 
 const postAbout = `Posts the results of a delimited text file to a chart, in batches. A result is known by chart, source and the id in
 its row, so that posting the same file again stores nothing twice. FILE may be "-" for standard input.
+
+Results of a chart of counts have their count in the --value column, and --inspected says of how much: a column, or a
+number that holds for every row, 1 for a c chart.
 
 A table of outcomes is printed; it exits with 1 where a row was refused or stands against what is stored.`
 
@@ -30,12 +32,13 @@ type postFlags struct {
 
 func (p *postFlags) add(f *flagSet) {
 	p.client.add(f)
+	p.source.materialFlag = "material-column"
 	p.source.register(f, false)
 	f.StringVar(&p.chart, "chart", "", "`NAME` of the chart; required")
 	f.StringVar(&p.from, "source", "", "`SOURCE`: the system the results come from; required")
 	f.StringVar(&p.lot, "lot", "", "`LOT` of control material")
 	f.StringVar(&p.run, "run", "", "`ID` of the analytical run")
-	f.StringVar(&p.material, "material", "", "control `MATERIAL`")
+	f.StringVar(&p.material, "material", "", "control `MATERIAL` of every row; --material-column where rows differ")
 	f.StringVar(&p.analyst, "analyst", "", "`NAME` of the analyst")
 	f.StringVar(&p.instrument, "instrument", "", "`NAME` of the instrument")
 	f.StringVar(&p.unit, "unit", "", "`UNIT` of the readings, refused where it is not the chart's (default: the chart's)")
@@ -58,6 +61,8 @@ func runPost(ctx context.Context, env *environment, args []string) int {
 		return code
 	case p.chart == "" || p.from == "" || p.source.id == "" || p.source.time == "":
 		return f.wrong("--chart, --source, --id and --time are required: a result is known by chart, source and id, and has its place by its time")
+	case p.material != "" && p.source.material != "":
+		return f.wrong("--material and --material-column both say the material; leave one of the two out")
 	case p.source.mark != "":
 		return f.wrong("--break is for computing and judging; breaks of a stored track are marks")
 	case p.batch < 1 || p.batch > batchMax:
@@ -70,16 +75,20 @@ func runPost(ctx context.Context, env *environment, args []string) int {
 		}
 		return fail(env, "%v", err)
 	}
+	if err := countsOnly(src); err != nil {
+		return fail(env, "%v", err)
+	}
 	conn, err := p.client.dial(env)
 	if err != nil {
 		return fail(env, "%v", err)
 	}
 	defer conn.Close()
-	return p.post(ctx, env, conn, src.table)
+	return p.post(ctx, env, conn, src)
 }
 
 // post sends the rows in batches and prints what became of them.
-func (p *postFlags) post(ctx context.Context, env *environment, conn *grpc.ClientConn, t *resultfile.Table) int {
+func (p *postFlags) post(ctx context.Context, env *environment, conn *grpc.ClientConn, src *source) int {
+	t := src.table
 	all := &pb.PostResultsResponse{}
 	w := tabwriter.NewWriter(env.Stdout, 0, 8, 2, ' ', 0)
 	if !p.client.json {
@@ -91,7 +100,7 @@ func (p *postFlags) post(ctx context.Context, env *environment, conn *grpc.Clien
 		end := min(start+p.batch, t.Len())
 		in := &pb.PostResultsRequest{AllOrNothing: p.allOrNothing}
 		for i := start; i < end; i++ {
-			in.Results = append(in.Results, p.result(t, i))
+			in.Results = append(in.Results, p.result(src, i))
 		}
 		out, err := client.PostResults(ctx, in)
 		if err != nil {
@@ -121,8 +130,8 @@ func (p *postFlags) post(ctx context.Context, env *environment, conn *grpc.Clien
 }
 
 // result makes row i the result to post.
-func (p *postFlags) result(t *resultfile.Table, i int) *pb.Result {
-	row := t.Row(i)
+func (p *postFlags) result(src *source, i int) *pb.Result {
+	row := src.table.Row(i)
 	r := &pb.Result{
 		Chart: p.chart, Source: p.from, SourceId: row.ID, MeasuredAt: row.Time, Lot: p.lot, RunId: p.run,
 		Material: p.material, Analyst: p.analyst, Instrument: p.instrument, Unit: p.unit,
@@ -130,10 +139,47 @@ func (p *postFlags) result(t *resultfile.Table, i int) *pb.Result {
 	if p.setUpRun {
 		r.Role = pb.ResultRole_RESULT_ROLE_SETUP
 	}
+	if row.Material != "" {
+		r.Material = row.Material
+	}
+	if r.Count = countAt(src, i); r.Count != nil {
+		return r
+	}
 	for _, reading := range row.Readings {
 		r.Readings = append(r.Readings, readingText(reading))
 	}
 	return r
+}
+
+// countAt gives the count of row i where --inspected says that the file holds counts; nil where it does not, or the row
+// has none.
+func countAt(src *source, i int) *pb.Count {
+	figures := src.table.Figures(i)
+	inspected, own := src.table.Inspected(i)
+	if !own {
+		inspected = src.inspected
+	}
+	if inspected == 0 || len(figures) != 1 {
+		return nil
+	}
+	return &pb.Count{Nonconforming: figures[0], Inspected: inspected}
+}
+
+// countsOnly refuses a bound, or several values in a row, where --inspected says that the file holds counts.
+func countsOnly(src *source) error {
+	if src.inspected == 0 && !src.table.HasInspected() {
+		return nil
+	}
+	for i := range src.table.Len() {
+		row := src.table.Row(i)
+		switch {
+		case len(row.Readings) > 1:
+			return fmt.Errorf("%s: line %d: the result has %d values, and --inspected goes with one count a row", src.name, row.Line, len(row.Readings))
+		case len(row.Readings) == 1 && row.Readings[0].Bound != decimal.Measured:
+			return fmt.Errorf("%s: line %d: the count is only a bound, and a count is known", src.name, row.Line)
+		}
+	}
+	return nil
 }
 
 // readingText writes a reading as it was measured: with its decimals and, where it is one, as a bound.

@@ -14,8 +14,10 @@ import (
 	"strconv"
 	"strings"
 
+	"limitary/internal/chart"
 	"limitary/internal/limits"
 	"limitary/internal/report"
+	"limitary/internal/report/judged"
 	"limitary/internal/resultfile"
 )
 
@@ -23,9 +25,18 @@ import (
 type sourceFlags struct {
 	values, exclude                              listFlag
 	subgroup, id, time, mark, delimiter, decimal string
+	material, inspected                          string
+	// materialFlag is what the flag for the column of materials is called.
+	materialFlag string
 }
 
+// register adds the flags. Post has the name --material for a material that all rows share.
 func (s *sourceFlags) register(f *flagSet, exclusions bool) {
+	if s.materialFlag == "" {
+		s.materialFlag = "material"
+	}
+	f.StringVar(&s.material, s.materialFlag, "", "`COLUMN` of control materials, which tell the levels of a standardised chart apart")
+	f.StringVar(&s.inspected, "inspected", "", "`COLUMN` that says how much was inspected for the count in --value, or a number that holds for every row")
 	f.Var(&s.values, "value", "`COLUMN` of the readings, or several separated by commas where a row holds several; found where only one holds numbers")
 	f.StringVar(&s.subgroup, "subgroup", "", "`COLUMN` whose equal entries in consecutive rows make one subgroup, where a row holds one reading")
 	f.StringVar(&s.id, "id", "", "`COLUMN` that names the results")
@@ -51,6 +62,8 @@ type source struct {
 	name string
 	// excluded has the reason of each row left out of the estimate.
 	excluded map[int]string
+	// inspected is how much was looked at for every count, 0 where the file or the kind of chart says it.
+	inspected float64
 }
 
 // lineReason is the form LINE=REASON of --exclude.
@@ -58,7 +71,10 @@ var lineReason = regexp.MustCompile(`^\s*([0-9]+)\s*=(.*)$`)
 
 // options turns the flags into those of the reader; the exclusions of single lines come apart.
 func (s *sourceFlags) options() (o resultfile.Options, lines []string, err error) {
-	o = resultfile.Options{Subgroup: s.subgroup, ID: s.id, Time: s.time, Break: s.mark}
+	o = resultfile.Options{Subgroup: s.subgroup, ID: s.id, Time: s.time, Break: s.mark, Material: s.material}
+	if _, err := s.inspectedEach(); err != nil {
+		o.Inspected = s.inspected
+	}
 	if o.Delimiter, err = resultfile.ParseDelimiter(s.delimiter); err != nil {
 		return o, nil, fmt.Errorf("--%w", err)
 	}
@@ -79,6 +95,15 @@ func (s *sourceFlags) options() (o resultfile.Options, lines []string, err error
 		}
 	}
 	return o, lines, nil
+}
+
+// inspectedEach gives the number that --inspected holds; it is an error where it names a column. A column name is never a
+// number.
+func (s *sourceFlags) inspectedEach() (float64, error) {
+	if s.inspected == "" {
+		return 0, nil
+	}
+	return parseNumber(s.inspected)
 }
 
 // splitNames splits column names at commas; a name that holds a comma is quoted.
@@ -108,6 +133,10 @@ func (s *sourceFlags) read(ctx context.Context, env *environment, path string) (
 		return nil, usageError{err}
 	}
 	src := &source{name: filepath.Base(path)}
+	src.inspected, _ = s.inspectedEach()
+	if src.inspected < 0 || s.inspected != "" && o.Inspected == "" && src.inspected == 0 {
+		return nil, usageError{fmt.Errorf("--inspected %s: want more than 0", s.inspected)}
+	}
 	in, size, err := openResults(env, path)
 	if err != nil {
 		return nil, err
@@ -121,9 +150,23 @@ func (s *sourceFlags) read(ctx context.Context, env *environment, path string) (
 	src.table, err = readTable(ctx, in, o)
 	bar.clear()
 	if err != nil {
-		return nil, fmt.Errorf("%s: %w", report.Foreign(src.name), err)
+		return nil, fmt.Errorf("%s: %w", report.Foreign(src.name), s.inFlags(err))
 	}
 	return src, src.exclude(lines)
+}
+
+// inFlags calls the flag for the column of materials by its name here.
+func (s *sourceFlags) inFlags(err error) error {
+	var bad *resultfile.Error
+	if errors.As(err, &bad) {
+		bad.Advice = strings.ReplaceAll(bad.Advice, "--material", "--"+s.materialFlag)
+	}
+	return err
+}
+
+// rows reads the table as results of a chart.
+func (src *source) rows(kind chart.Kind, size int) *judged.Rows {
+	return &judged.Rows{Table: src.table, Kind: kind, Size: size, Inspected: src.inspected}
 }
 
 // openResults opens the file and gives its size, 0 where that is not known.

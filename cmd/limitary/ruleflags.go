@@ -1,6 +1,7 @@
 package main
 
 import (
+	"cmp"
 	"fmt"
 	"slices"
 	"strings"
@@ -17,7 +18,7 @@ func parseKind(text string) (chart.Kind, error) {
 	}
 	k, err := chart.ParseKind(text)
 	if err != nil {
-		return k, fmt.Errorf("--kind %q: want individuals, xbar_r or xbar_s", text)
+		return k, fmt.Errorf("--kind %q: want one of %s", text, chart.KindNames())
 	}
 	return k, nil
 }
@@ -30,7 +31,7 @@ func (r *ruleFlags) register(f *flagSet) {
 	for _, s := range rules.Sets() {
 		ids = append(ids, s.ID)
 	}
-	f.StringVar(&r.location, "rules", rules.DefaultSet, "`SET` of rules, or several separated by commas: "+strings.Join(ids, ", "))
+	f.StringVar(&r.location, "rules", "", "`SET` of rules, or several separated by commas: "+strings.Join(ids, ", ")+" (default "+rules.DefaultSet+")")
 	f.StringVar(&r.dispersion, "dispersion-rules", "", "`SET` for the dispersion trace, or none; if not given, those of --rules that suit it")
 }
 
@@ -64,21 +65,43 @@ type choice struct {
 
 // choose gives the rules for a chart of the kind.
 func (r *ruleFlags) choose(kind chart.Kind) (c choice, err error) {
-	if c.sets, err = r.sets("rules", r.location); err != nil {
+	if c.sets, err = r.sets("rules", cmp.Or(r.location, rules.DefaultSet)); err != nil {
 		return c, err
 	}
 	c.specs[chart.Location] = specsOf(c.sets)
 	if n := len(c.specs[chart.Location]); n > rules.RulesMax {
 		return c, fmt.Errorf("--rules: %d rules in all, the limit is %d", n, rules.RulesMax)
 	}
-	if kind == chart.Given {
-		if r.dispersion != "" {
-			return c, fmt.Errorf("--dispersion-rules %s: statistics as given make one trace; name a --kind for a second", r.dispersion)
-		}
-		return c, nil
+	switch {
+	case kind.Has(chart.Dispersion):
+		err = r.chooseDispersion(kind, &c)
+	case r.dispersion != "" && kind == chart.Given:
+		err = fmt.Errorf("--dispersion-rules %s: statistics as given make one trace; name a --kind for a second", r.dispersion)
+	case r.dispersion != "":
+		err = fmt.Errorf("--dispersion-rules %s: fits charts of kind %s, and this one is of kind %s, with a location trace alone",
+			r.dispersion, kindsThat(func(k chart.Kind) bool { return k.Has(chart.Dispersion) }), kind)
 	}
-	err = r.chooseDispersion(kind, &c)
+	switch {
+	case !kind.Has(chart.Location):
+		c.specs[chart.Location] = nil
+	case kind.Counts():
+		r.chooseForCounts(kind, &c)
+	}
 	return c, err
+}
+
+// chooseForCounts leaves out patterns among counts, unless the set was asked for.
+func (r *ruleFlags) chooseForCounts(kind chart.Kind, c *choice) {
+	taken, left := judged.CountRules(c.specs[chart.Location])
+	const why = "counts go in steps and are skewed, so that the false alarms of these rules would not be their nominal ones"
+	switch asked := r.location != ""; {
+	case len(left) == 0:
+	case asked:
+		c.cautions = append(c.cautions, fmt.Sprintf("Watching a chart of kind %s: %s; %s.", kind, strings.Join(left, ", "), why))
+	default:
+		c.specs[chart.Location] = taken
+		c.cautions = append(c.cautions, fmt.Sprintf("Not used: %s; %s. Name the set with --rules to use them all the same.", strings.Join(left, ", "), why))
+	}
 }
 
 func (r *ruleFlags) chooseDispersion(kind chart.Kind, c *choice) error {
@@ -102,11 +125,17 @@ func (r *ruleFlags) chooseDispersion(kind chart.Kind, c *choice) error {
 	if asked && len(taken) == 0 {
 		return fmt.Errorf("--dispersion-rules %s: none of its rules suits a dispersion trace", r.dispersion)
 	}
+	if !kind.Has(chart.Location) && len(taken) == 0 {
+		return fmt.Errorf("--rules %s: none of its rules suits a dispersion trace, the only one of kind %s", cmp.Or(r.location, rules.DefaultSet), kind)
+	}
 	c.specs[chart.Dispersion] = taken
 	if len(left) > 0 {
 		why := "its statistics are skewed"
-		if kind == chart.Individuals {
+		switch {
+		case kind == chart.Individuals:
 			why += " and neighbouring moving ranges share a value"
+		case kind.Duplicates():
+			why += " and come from different samples in no order that means anything"
 		}
 		c.cautions = append(c.cautions, fmt.Sprintf("Not used on the dispersion trace: %s; %s, so that the false alarms of these rules would not be their nominal ones.",
 			strings.Join(left, ", "), why))

@@ -53,7 +53,7 @@ func runRunLength(ctx context.Context, env *environment, args []string) int {
 	c := &runLengthCall{env: env}
 	f := newFlags(env, "run-length [flags]", runLengthAbout)
 	c.rules.register(f)
-	f.StringVar(&c.kind, "kind", "", "`KIND` of a whole chart with both traces: individuals, xbar_r or xbar_s; if not given, one trace")
+	f.StringVar(&c.kind, "kind", "", "`KIND` of a whole chart with both traces: "+kindsThat(plainReadings)+"; if not given, one trace")
 	f.IntVar(&c.size, "size", 0, "`N` readings in a subgroup")
 	f.StringVar(&c.shifts, "shift", "0,0.5,1,1.5,2,3", "`SHIFTS` of the mean, separated by commas")
 	f.StringVar(&c.unit, "shift-unit", "standard-errors", "`UNIT` of shifts: standard-errors (of the plotted statistic) or process-sigmas")
@@ -122,6 +122,9 @@ func (c *runLengthCall) build() error {
 	kind, err := parseKind(c.kind)
 	if err != nil {
 		return err
+	}
+	if kind != chart.Given && !plainReadings(kind) {
+		return fmt.Errorf("--kind %s: run lengths are those of charts of kind %s; leave it out for one trace of independent normal points", kind, kindsThat(plainReadings))
 	}
 	chosen, err := c.rules.choose(kind)
 	if err != nil {

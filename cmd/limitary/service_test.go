@@ -251,7 +251,7 @@ func TestCallsThatAreWrongSayHowTheyAreRight(t *testing.T) {
 		{"chart create", exitUsage, "one NAME is needed"},
 		{"chart create nitrate --name lead", exitUsage, "one NAME is needed"},
 		{"chart show", exitUsage, "argument is missing"},
-		{"chart create nitrate --kind pie --unit 1", exitUsage, "individuals, xbar_r or xbar_s"},
+		{"chart create nitrate --kind pie --unit 1", exitUsage, "want one of individuals"},
 		{"chart list", exitFailure, "set LIMITARY_TOKEN"},
 		{"version", exitOK, "judge number 1"},
 		{"--version", exitOK, "judge number 1"},

@@ -11,12 +11,12 @@ import (
 
 	pb "limitary/api/limitary/v1"
 	"limitary/internal/limits"
-	"limitary/internal/resultfile"
 )
 
 const proposeAbout = `Computes a version and stores it for approval by another principal. The limits rest on stored results (--from and
 --to), on a file sent along (--file), or on figures given (--centre and --sigma, which also replace what the data say).
-With none of these they rest on all results stored that were measured before --effective-from.`
+With none of these they rest on all results stored that were measured before --effective-from. Flags that fit other kinds
+of chart than CHART are refused by the service.`
 
 // proposeFlags are what a proposal says.
 type proposeFlags struct {
@@ -30,6 +30,8 @@ type proposeFlags struct {
 	decimals               int
 	excluded, cautions     listFlag
 	onLook, onAct, onStop  string
+	kinds                  kindFlags
+	afterSignal            bool
 	requestID              func() string
 }
 
@@ -44,6 +46,8 @@ func (p *proposeFlags) add(f *flagSet) {
 	f.StringVar(&p.file, "file", "", "`FILE` of results to compute from")
 	f.StringVar(&p.about, "data-description", "", "`TEXT` on where the file's data come from")
 	p.source.register(f, true)
+	p.kinds.register(f)
+	f.BoolVar(&p.afterSignal, "after-signal", false, "the proposal is made because of a signal, so that the change test's p is not valid")
 	f.Var(&p.centre, "centre", "centre `VALUE` instead of the data's")
 	f.Var(&p.sigma, "sigma", "standard deviation `VALUE` of a single reading instead of the data's")
 	f.StringVar(&p.estimator, "estimator", "", "`NAME` of the estimator of sigma (default: the usual one of the kind)")
@@ -77,6 +81,9 @@ func versionPropose(ctx context.Context, env *environment, args []string) int {
 			}
 			return fail(env, "%v", err)
 		}
+		if err := countsOnly(src); err != nil {
+			return fail(env, "%v", err)
+		}
 		basis, err := sentBasis(src, p.about)
 		if err != nil {
 			return fail(env, "%v", err)
@@ -94,7 +101,7 @@ func (p *proposeFlags) request(chart string) (*pb.ProposeVersionRequest, error) 
 	in := &pb.ProposeVersionRequest{
 		Chart: chart, RequestId: p.requestID(), Lot: p.lot, Reason: p.reason, AcceptedCautions: p.cautions,
 		LocationRules: &pb.TraceRules{RuleSet: p.rules}, DispersionRules: &pb.TraceRules{RuleSet: p.dispersion},
-		Instructions: &pb.Instructions{Look: p.onLook, Act: p.onAct, Stop: p.onStop},
+		Instructions: &pb.Instructions{Look: p.onLook, Act: p.onAct, Stop: p.onStop}, AfterSignal: p.afterSignal,
 	}
 	if p.rules == "" || p.effective == "" || p.reason == "" {
 		return nil, fmt.Errorf("--rules, --effective-from and --reason are required")
@@ -104,6 +111,9 @@ func (p *proposeFlags) request(chart string) (*pb.ProposeVersionRequest, error) 
 		return nil, err
 	}
 	in.Centre, in.ProcessSigma = p.centre.value, p.sigma.value
+	if in.Options, err = p.kinds.options(); err != nil {
+		return nil, err
+	}
 	if p.estimator != "" {
 		e, ok := pb.Estimator_value["ESTIMATOR_"+strings.ToUpper(strings.ReplaceAll(p.estimator, "-", "_"))]
 		if !ok || e == 0 {
@@ -180,7 +190,7 @@ func sentBasis(src *source, about string) (*pb.SentBasis, error) {
 	points := &pb.Points{}
 	out := &pb.SentBasis{Data: &pb.SentBasis_Points{Points: points}, Description: strings.TrimSpace("File " + src.name + ". " + about)}
 	for i := range t.Len() {
-		points.Points = append(points.Points, sentPoint(t, i))
+		points.Points = append(points.Points, sentPoint(src, i))
 		if reason, ok := src.excluded[i]; ok {
 			out.Exclusions = append(out.Exclusions, &pb.Exclusion{Point: int32(i), Reason: reason})
 		} else if t.Excluded(i) {
@@ -190,9 +200,13 @@ func sentBasis(src *source, about string) (*pb.SentBasis, error) {
 	return out, nil
 }
 
-func sentPoint(t *resultfile.Table, i int) *pb.Point {
-	p := &pb.Point{BreakBefore: t.Break(i)}
-	if figures := t.Figures(i); len(figures) > 0 {
+func sentPoint(src *source, i int) *pb.Point {
+	p := &pb.Point{BreakBefore: src.table.Break(i), Material: src.table.Material(i)}
+	if count := countAt(src, i); count != nil {
+		p.Value = &pb.Point_Count{Count: count}
+		return p
+	}
+	if figures := src.table.Figures(i); len(figures) > 0 {
 		p.Value = &pb.Point_Readings{Readings: &pb.Readings{Values: figures}}
 	}
 	return p

@@ -4,11 +4,14 @@ import (
 	"fmt"
 	"io"
 	"strconv"
+	"strings"
 	"text/tabwriter"
 
 	"google.golang.org/protobuf/proto"
 
 	pb "limitary/api/limitary/v1"
+	"limitary/internal/chart"
+	"limitary/internal/report"
 )
 
 type protoMessage = proto.Message
@@ -40,8 +43,10 @@ func showVersion(env *environment, v *pb.Version) int {
 	if v.Provisional {
 		provisional = ", provisional"
 	}
-	row("rests on", "%d subgroups, %d readings, estimator %s%s", v.N, v.Readings, dash(v.Estimator), provisional)
-	row("process sigma", "%s %s", decimals(v.ProcessSigma, v.PublishedDecimals), v.Unit)
+	row("rests on", "%s%s", restsOnText(v), provisional)
+	if v.ProcessSigma > 0 {
+		row("process sigma", "%s %s", decimals(v.ProcessSigma, v.PublishedDecimals), v.Unit)
+	}
 	row("digest", "%s", v.Digest)
 	row("judge number", "%d", v.Judge)
 	if code := flush(env, w); code != exitOK {
@@ -49,6 +54,9 @@ func showVersion(env *environment, v *pb.Version) int {
 	}
 	showTrace(env.Stdout, "location", v.Location, v.PublishedDecimals)
 	showTrace(env.Stdout, "dispersion", v.Dispersion, v.PublishedDecimals)
+	if err := showModel(env.Stdout, v); err != nil {
+		return fail(env, "%v", err)
+	}
 	for _, f := range v.Findings {
 		fmt.Fprintf(env.Stdout, "\nfinding %s: %s\n  advice: %s\n  could miss: %s\n", f.Code, f.Text, f.Advice, f.CouldMiss)
 	}
@@ -58,7 +66,23 @@ func showVersion(env *environment, v *pb.Version) int {
 	return exitOK
 }
 
+// restsOnText counts what the limits rest on.
+func restsOnText(v *pb.Version) string {
+	if chart.Kind(v.Kind).Counts() {
+		return fmt.Sprintf("%d samples", v.N)
+	}
+	return fmt.Sprintf("%d subgroups, %d readings, estimator %s", v.N, v.Readings, dash(v.Estimator))
+}
+
 func decimals(x float64, n int32) string { return strconv.FormatFloat(x, 'f', int(n), 64) }
+
+// inUnit tells a place in the chart's unit, where the trace is judged on another scale.
+func inUnit(x *float64) string {
+	if x == nil {
+		return ""
+	}
+	return ", " + report.Significant(*x, 5) + " in the unit"
+}
 
 func showTrace(out io.Writer, name string, t *pb.TraceLimits, places int32) {
 	if t == nil {
@@ -66,20 +90,24 @@ func showTrace(out io.Writer, name string, t *pb.TraceLimits, places int32) {
 	}
 	fmt.Fprintf(out, "\n%s trace\n", name)
 	w := tabwriter.NewWriter(out, 0, 8, 2, ' ', 0)
-	line := func(name string, l *pb.Line) {
-		if l.GetValue() == 0 && l.Value == nil {
+	line := func(name string, l *pb.Line, original *float64) {
+		if l == nil || l.Value == nil {
 			fmt.Fprintf(w, "  %s\tnone\n", name)
 			return
 		}
-		fmt.Fprintf(w, "  %s\t%s\t%s\n", name, decimals(l.GetValue(), places), enumWord(l.GetBasis().String(), "BASIS_"))
+		fmt.Fprintf(w, "  %s\t%s\t%s%s\n", name, decimals(l.GetValue(), places), enumWord(l.GetBasis().String(), "BASIS_"), inUnit(original))
 	}
-	line("upper action", t.UpperAction)
-	line("upper warning", t.UpperWarning)
+	o := t.Original
+	if o == nil {
+		o = &pb.OriginalScale{}
+	}
+	line("upper action", t.UpperAction, o.UpperAction)
+	line("upper warning", t.UpperWarning, o.UpperWarning)
 	if t.Centre != nil {
-		fmt.Fprintf(w, "  centre\t%s\n", decimals(*t.Centre, places))
+		fmt.Fprintf(w, "  centre\t%s\t%s\n", decimals(*t.Centre, places), strings.TrimPrefix(inUnit(o.Centre), ", "))
 	}
-	line("lower warning", t.LowerWarning)
-	line("lower action", t.LowerAction)
+	line("lower warning", t.LowerWarning, o.LowerWarning)
+	line("lower action", t.LowerAction, o.LowerAction)
 	set := t.RuleSet
 	if set == "" && len(t.Rules) > 0 {
 		set = "(own)"

@@ -28,6 +28,25 @@ const (
 	IntervalMax        = 366 * 24 * time.Hour
 )
 
+// What matters to a laboratory that has not said so: half a sigma, and a quarter of sigma more or less (our choice, no
+// source).
+const (
+	RelevantShiftDefault, RelevantShiftMax = 0.5, 5.0
+	RelevantRatioDefault, RelevantRatioMax = 1.25, 10.0
+)
+
+// Relevance gives what matters to the chart's laboratory, by default where it has not said so.
+func (c Chart) Relevance() (shiftSigmas, sigmaRatio float64) {
+	shiftSigmas, sigmaRatio = c.RelevantShiftSigmas, c.RelevantSigmaRatio
+	if shiftSigmas == 0 {
+		shiftSigmas = RelevantShiftDefault
+	}
+	if sigmaRatio == 0 {
+		sigmaRatio = RelevantRatioDefault
+	}
+	return shiftSigmas, sigmaRatio
+}
+
 // Chart is what is watched.
 type Chart struct {
 	// Name is the slug, unique for good.
@@ -44,6 +63,12 @@ type Chart struct {
 	PlanInterval, LongestGap time.Duration
 	RepeatRule               string
 	LotsAreTracks            bool
+	// Standardised charts plot (reading - reference)/sigma, with the reference and sigma that the version gives for the
+	// material of the result.
+	Standardised bool
+	// RelevantShiftSigmas and RelevantSigmaRatio say from where on a difference from the limits in force matters to the
+	// laboratory: of the centre, in sigmas, and of sigma, as a ratio either way. 0 takes the default.
+	RelevantShiftSigmas, RelevantSigmaRatio float64
 
 	// Given by the store.
 	Revision  int64
@@ -67,7 +92,10 @@ func (c Chart) Check() error {
 		return err
 	}
 	if c.Kind == chart.Given {
-		return Invalid("kind", "is not set; want one of INDIVIDUALS, XBAR_R, XBAR_S")
+		return Invalid("kind", "is not set; want one of %s", strings.ToUpper(chart.KindNames()))
+	}
+	if c.Standardised && (c.Kind.Counts() || c.Kind.Duplicates()) {
+		return Invalid("standardised", "is set, but only charts of single readings and means are standardised, not those of kind %s", c.Kind)
 	}
 	if err := c.Kind.CheckSize(c.SubgroupSize); err != nil {
 		return Invalid("subgroup_size", "%v", err)
@@ -94,6 +122,12 @@ func (c Chart) CheckChangeable() error {
 	}
 	if _, err := time.LoadLocation(c.DisplayZone); err != nil || c.DisplayZone == "Local" {
 		return Invalid("display_zone", "%q: no such time zone; write one as in the IANA list, such as Europe/London", clip(c.DisplayZone))
+	}
+	if s := c.RelevantShiftSigmas; s != 0 && !(s >= 0.01 && s <= RelevantShiftMax) {
+		return Invalid("relevant_shift_sigmas", "%v: want 0.01 to %v, or nothing for %v", s, RelevantShiftMax, RelevantShiftDefault)
+	}
+	if r := c.RelevantSigmaRatio; r != 0 && !(r >= 1.01 && r <= RelevantRatioMax) {
+		return Invalid("relevant_sigma_ratio", "%v: want 1.01 to %v, or nothing for %v", r, RelevantRatioMax, RelevantRatioDefault)
 	}
 	if err := CheckText("repeat_rule", c.RepeatRule, 0, TextBytesMax); err != nil {
 		return err

@@ -7,9 +7,11 @@ import (
 	"errors"
 	"fmt"
 	"math"
+	"reflect"
 	"strings"
 	"time"
 
+	"limitary/internal/chart"
 	"limitary/internal/decimal"
 	"limitary/internal/judge"
 	"limitary/internal/limits"
@@ -38,20 +40,22 @@ type Result struct {
 	Source   string `json:"source"`
 	SourceID string `json:"source_id"`
 	// MeasuredAt is UTC in whole microseconds; MeasuredText is the time as posted, with its offset.
-	MeasuredAt   time.Time         `json:"measured_at"`
-	MeasuredText string            `json:"-"`
-	Lot          string            `json:"lot,omitempty"`
-	RunID        string            `json:"run_id,omitempty"`
-	Position     int32             `json:"position,omitempty"`
-	Replicate    int32             `json:"replicate,omitempty"`
-	Role         Role              `json:"role"`
-	RepeatOf     string            `json:"repeat_of,omitempty"`
-	Readings     []string          `json:"readings"`
-	Unit         string            `json:"unit"`
-	Material     string            `json:"material,omitempty"`
-	Analyst      string            `json:"analyst,omitempty"`
-	Instrument   string            `json:"instrument,omitempty"`
-	Labels       map[string]string `json:"labels,omitempty"`
+	MeasuredAt   time.Time `json:"measured_at"`
+	MeasuredText string    `json:"-"`
+	Lot          string    `json:"lot,omitempty"`
+	RunID        string    `json:"run_id,omitempty"`
+	Position     int32     `json:"position,omitempty"`
+	Replicate    int32     `json:"replicate,omitempty"`
+	Role         Role      `json:"role"`
+	RepeatOf     string    `json:"repeat_of,omitempty"`
+	Readings     []string  `json:"readings"`
+	// Count takes the place of readings on a chart of counts.
+	Count      *chart.Count      `json:"count,omitempty"`
+	Unit       string            `json:"unit"`
+	Material   string            `json:"material,omitempty"`
+	Analyst    string            `json:"analyst,omitempty"`
+	Instrument string            `json:"instrument,omitempty"`
+	Labels     map[string]string `json:"labels,omitempty"`
 }
 
 // Canonical gives the content as the bytes its digest covers. Equal contents have equal bytes.
@@ -127,7 +131,7 @@ func (r *Result) Prepare(c Chart, now time.Time) (judge.Point, error) {
 		return judge.Point{}, &Error{Reason: TimeInFuture, Field: "measured_at",
 			Text: fmt.Sprintf("%s is more than 24 hours after the present, %s", r.MeasuredAt.Format(time.RFC3339), now.UTC().Format(time.RFC3339))}
 	}
-	return r.Point(c.SubgroupSize)
+	return r.Point(c)
 }
 
 func (r *Result) checkTexts() error {
@@ -148,8 +152,40 @@ func (r *Result) checkTexts() error {
 	return CheckLabels("labels", r.Labels)
 }
 
-// Point reads the readings for the judge.
-func (r *Result) Point(subgroupSize int) (judge.Point, error) {
+// Point reads the readings, or the count, for the judge.
+func (r *Result) Point(c Chart) (judge.Point, error) {
+	if c.Kind.Counts() {
+		return r.countPoint(c)
+	}
+	if r.Count != nil {
+		return judge.Point{}, Invalid("count", "is given, but a chart of kind %s takes readings", c.Kind)
+	}
+	pt, err := r.readingsPoint(c.SubgroupSize)
+	if !c.Standardised || err != nil {
+		return pt, err
+	}
+	if r.Material == "" {
+		return pt, Invalid("material", "is empty, and results of chart %q are standardised by their material", c.Name)
+	}
+	pt.Material = r.Material
+	return pt, nil
+}
+
+func (r *Result) countPoint(c Chart) (judge.Point, error) {
+	switch {
+	case len(r.Readings) > 0:
+		return judge.Point{}, Invalid("readings", "%d given, but a chart of kind %s takes a count", len(r.Readings), c.Kind)
+	case r.Count == nil:
+		return judge.Point{}, Invalid("count", "is not set; a chart of kind %s takes a count", c.Kind)
+	}
+	if err := c.Kind.CheckCount(*r.Count, c.SubgroupSize); err != nil {
+		return judge.Point{}, Invalid("count", "%v", err)
+	}
+	count := *r.Count
+	return judge.Point{Count: &count}, nil
+}
+
+func (r *Result) readingsPoint(subgroupSize int) (judge.Point, error) {
 	if len(r.Readings) == 0 || len(r.Readings) > subgroupSize {
 		return judge.Point{}, &Error{Reason: WrongReadingCount, Field: "readings",
 			Text: fmt.Sprintf("%d readings: want 1 to %d, the subgroup size", len(r.Readings), subgroupSize)}
@@ -209,8 +245,10 @@ func (r Result) SameContent(other Result) bool {
 	return string(r.Digest()) == string(other.Digest())
 }
 
-// JudgesAlike reports whether replacing r by other can change no verdict: same place, readings, role and lot.
-func (r Result) JudgesAlike(other Result) bool {
+// JudgesAlike reports whether replacing r by other can change no verdict on chart c: same place, readings or count, role
+// and lot, and the same material where that chooses the scale.
+func (r Result) JudgesAlike(other Result, c Chart) bool {
 	return string(r.OrderKey()) == string(other.OrderKey()) && r.Lot == other.Lot && r.Role == other.Role &&
-		strings.Join(r.Readings, "\x00") == strings.Join(other.Readings, "\x00")
+		strings.Join(r.Readings, "\x00") == strings.Join(other.Readings, "\x00") && reflect.DeepEqual(r.Count, other.Count) &&
+		(!c.Standardised || r.Material == other.Material)
 }

@@ -41,21 +41,34 @@ type Content struct {
 	// Decimals is the number of published decimals.
 	Decimals     int     `json:"published_decimals"`
 	ProcessSigma float64 `json:"process_sigma"`
-	Location     *Trace  `json:"location"`
-	Dispersion   *Trace  `json:"dispersion"`
+	// Model is what scales follow from besides; nil adds nothing.
+	Model      *chart.Model `json:"model,omitempty"`
+	Location   *Trace       `json:"location"`
+	Dispersion *Trace       `json:"dispersion"`
 
-	Groups         int        `json:"n"`
-	Readings       int        `json:"readings"`
-	CentreGiven    bool       `json:"centre_given"`
-	SigmaGiven     bool       `json:"sigma_given"`
-	Estimator      string     `json:"estimator"`
-	Provisional    bool       `json:"provisional"`
-	Estimates      []Estimate `json:"estimates"`
-	Intervals      []Interval `json:"intervals"`
-	Findings       []Finding  `json:"findings"`
-	Basis          string     `json:"basis"`
+	Groups      int        `json:"n"`
+	Readings    int        `json:"readings"`
+	CentreGiven bool       `json:"centre_given"`
+	SigmaGiven  bool       `json:"sigma_given"`
+	Estimator   string     `json:"estimator"`
+	Provisional bool       `json:"provisional"`
+	Estimates   []Estimate `json:"estimates"`
+	Intervals   []Interval `json:"intervals"`
+	Findings    []Finding  `json:"findings"`
+	Basis       string     `json:"basis"`
+	// BasisFrom and BasisTo bound the measuring times of a basis of stored results.
+	BasisFrom      *time.Time `json:"basis_from,omitempty"`
+	BasisTo        *time.Time `json:"basis_to,omitempty"`
 	Excluded       []Excluded `json:"excluded"`
 	ExcludedPoints []Excluded `json:"excluded_points"`
+	// Components, Tails, FalseAlarm and Target are what the computation found where the kind or the basis has them.
+	Components []Component `json:"components,omitempty"`
+	Tails      []Tail      `json:"tails,omitempty"`
+	Parts      []Part      `json:"parts,omitempty"`
+	FalseAlarm *FalseAlarm `json:"false_alarm,omitempty"`
+	Compared   *Compared   `json:"compared,omitempty"`
+	// ChangeTest sets the results that are new to it against the version in force.
+	ChangeTest *ChangeTest `json:"change_test,omitempty"`
 
 	Author        string       `json:"author"`
 	ProposedAt    time.Time    `json:"proposed_at"`
@@ -98,6 +111,100 @@ type Finding struct {
 	Text      string  `json:"text"`
 	Advice    string  `json:"advice"`
 	CouldMiss string  `json:"could_miss"`
+}
+
+// Component is one part of the variance of a reading.
+type Component struct {
+	Name             string  `json:"name"`
+	Sigma            float64 `json:"sigma"`
+	DegreesOfFreedom float64 `json:"degrees_of_freedom"`
+	// Lower and Upper bound a 95 % interval; nil where the data leave an end open.
+	Lower     *float64 `json:"lower"`
+	Upper     *float64 `json:"upper"`
+	Truncated bool     `json:"truncated,omitempty"`
+}
+
+// Part is one part of how sigma depends on the mean of duplicates.
+type Part struct {
+	Name             string    `json:"name"`
+	From             float64   `json:"from"`
+	Groups           int       `json:"groups"`
+	Sigma            float64   `json:"sigma"`
+	Given            bool      `json:"given"`
+	DegreesOfFreedom float64   `json:"degrees_of_freedom"`
+	Interval         *Interval `json:"interval"`
+}
+
+// Tail is the probability that a process as estimated leaves beyond a line.
+type Tail struct {
+	Trace       string  `json:"trace"`
+	Line        string  `json:"line"`
+	Size        float64 `json:"size"`
+	Probability float64 `json:"probability"`
+	Nominal     float64 `json:"nominal"`
+}
+
+// FalseAlarm is the rate of points beyond the action lines of the location trace that limits from such a basis have:
+// the nominal one, and the median and the 10 % and 90 % points over bases.
+type FalseAlarm struct {
+	Nominal float64 `json:"nominal"`
+	Median  float64 `json:"median"`
+	P10     float64 `json:"p10"`
+	P90     float64 `json:"p90"`
+}
+
+// Compared sets given figures against the data: bias is mean less given centre, the ratios are sigmas estimated over
+// given, that of readings and that between runs.
+type Compared struct {
+	Bias    *Estimated `json:"bias,omitempty"`
+	Ratio   *Estimated `json:"ratio,omitempty"`
+	Between *Estimated `json:"between_ratio,omitempty"`
+}
+
+// Estimated is a figure with its 95 % interval; an end is nil where the data leave it open.
+type Estimated struct {
+	Estimate float64  `json:"estimate"`
+	Lower    *float64 `json:"lower"`
+	Upper    *float64 `json:"upper"`
+}
+
+// ChangeTest is the answer to whether the limits in force should be kept, as package changetest explains it.
+type ChangeTest struct {
+	// Against is the version in force that was compared with, 0 where figures were sent.
+	Against            int           `json:"against"`
+	Results            int           `json:"results"`
+	Excluded           int           `json:"excluded"`
+	InOldBasis         int           `json:"in_old_basis"`
+	Centre             ChangeFigure  `json:"centre"`
+	Spread             ChangeFigure  `json:"spread"`
+	Means              *ChangeFigure `json:"means,omitempty"`
+	Decision           string        `json:"decision"`
+	Looks              int           `json:"looks"`
+	OneWrongMax        float64       `json:"one_wrong_max"`
+	Lag1               float64       `json:"lag1"`
+	EffectiveForCentre float64       `json:"effective_for_centre"`
+	EffectiveForSpread float64       `json:"effective_for_spread"`
+	Text               string        `json:"text"`
+	Notes              []string      `json:"notes,omitempty"`
+}
+
+// ChangeFigure is the answer on one figure; a difference in sigmas in force, or a ratio to the sigma in force.
+type ChangeFigure struct {
+	Estimate          *float64 `json:"estimate"`
+	Lower             *float64 `json:"lower"`
+	Upper             *float64 `json:"upper"`
+	RelevantLower     float64  `json:"relevant_lower"`
+	RelevantUpper     float64  `json:"relevant_upper"`
+	Decision          string   `json:"decision"`
+	Reason            string   `json:"reason"`
+	Differs           bool     `json:"differs"`
+	Needed            *int     `json:"needed"`
+	PublishedDecision string   `json:"published_decision"`
+	P                 *float64 `json:"p"`
+	PValid            bool     `json:"p_valid"`
+	PReason           string   `json:"p_reason"`
+	PlainP            *float64 `json:"plain_p"`
+	Text              string   `json:"text"`
 }
 
 // Excluded is a result, or a point of data sent along, left out of the estimate.
@@ -177,6 +284,9 @@ func ParseContent(canonical []byte, digest string) (Content, error) {
 // JudgeLimits gives the part of the content the judge works by.
 func (c Content) JudgeLimits() judge.Limits {
 	l := judge.Limits{Kind: c.Kind, SubgroupSize: c.SubgroupSize, Places: c.Decimals, ProcessSigma: c.ProcessSigma}
+	if c.Model != nil {
+		l.Model = *c.Model
+	}
 	for role, t := range map[chart.Role]*Trace{chart.Location: c.Location, chart.Dispersion: c.Dispersion} {
 		if t != nil {
 			l.Traces[role] = &judge.Trace{Trace: t.Trace, Rules: t.Rules}

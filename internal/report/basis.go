@@ -2,8 +2,10 @@ package report
 
 import (
 	"fmt"
+	"slices"
 	"strings"
 
+	"limitary/internal/chart"
 	"limitary/internal/limits"
 )
 
@@ -25,7 +27,17 @@ var restsOnNouns = map[limits.Estimator]string{
 
 // estimators writes the estimates of process sigma side by side.
 func (t *Text) estimators(res *limits.Result) {
-	t.Section("Process sigma, the standard deviation of a single reading")
+	if res.Kind.Counts() {
+		return
+	}
+	title := "Process sigma, the standard deviation of a single reading"
+	switch res.Kind {
+	case chart.RunMeans:
+		title += " within its run"
+	case chart.RelativeRange:
+		title += " in percent of the mean"
+	}
+	t.Section(title)
 	t.Pairs(Pair{"published", Fixed(res.ProcessSigma, res.PublishedDecimals) + sigmaOrigin(res)})
 	if len(res.Estimates) == 0 {
 		return
@@ -53,23 +65,31 @@ func (t *Text) estimators(res *limits.Result) {
 }
 
 func sigmaOrigin(res *limits.Result) string {
+	if spread := res.Model.Spread; spread != nil && len(res.Estimates) == 0 {
+		if len(spread.Bands) > 0 {
+			return ", that of the first band"
+		}
+		return ", as the function of the mean has it at the median of the means"
+	}
 	if res.SigmaOrigin == limits.Target {
 		return ", target"
 	}
 	for _, e := range res.Estimates {
-		if !e.Chosen {
-			continue
+		if e.Chosen {
+			return ", estimated by " + e.Name.String() + sigmaInterval(res)
 		}
-		text := ", estimated by " + e.Name.String()
-		if in := res.Intervals.Sigma; in != nil {
-			text += fmt.Sprintf("; 95 %% interval %s", intervalText(in, res.PublishedDecimals))
-		}
-		if res.Provisional {
-			text += "; provisional"
-		}
-		return text
 	}
 	return ""
+}
+
+func sigmaInterval(res *limits.Result) (text string) {
+	if in := res.Intervals.Sigma; in != nil {
+		text = fmt.Sprintf("; 95 %% interval %s", intervalText(in, res.PublishedDecimals))
+	}
+	if res.Provisional {
+		text += "; provisional"
+	}
+	return text
 }
 
 // exclusions writes what was left out of the estimates, and why.
@@ -95,12 +115,16 @@ func (t *Text) exclusions(c *Computed) {
 }
 
 // findings writes what is to know about the limits before they are used.
-func (t *Text) findings(res *limits.Result) {
+func (t *Text) findings(c *Computed) {
 	t.Section("Findings")
-	if len(res.Findings) == 0 {
+	found := slices.Clone(c.Result.Findings)
+	if c.Diagnostics != nil {
+		found = append(found, c.Diagnostics.Findings...)
+	}
+	if len(found) == 0 {
 		t.Paragraph("None of the checks made found anything. That is no proof that the results are independent, normal and from one process.")
 	}
-	for _, f := range res.Findings {
+	for _, f := range found {
 		t.Item(fmt.Sprintf("%s (%.4g, threshold %.4g): %s %s What it could miss: %s", f.Code, f.Figure, f.Threshold, f.Text, f.Advice, f.CouldMiss))
 	}
 }

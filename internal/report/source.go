@@ -27,10 +27,33 @@ type About struct {
 
 // kindNames say what a chart plots.
 var kindNames = map[chart.Kind]string{
-	chart.Given:       "statistics plotted as given",
-	chart.Individuals: "individuals chart (single values and moving ranges)",
-	chart.XbarR:       "chart of subgroup means and ranges",
-	chart.XbarS:       "chart of subgroup means and standard deviations",
+	chart.Given:          "statistics plotted as given",
+	chart.Individuals:    "individuals chart (single values and moving ranges)",
+	chart.XbarR:          "chart of subgroup means and ranges",
+	chart.XbarS:          "chart of subgroup means and standard deviations",
+	chart.RunMeans:       "chart of run means and standard deviations within runs",
+	chart.P:              "p chart (fraction of nonconforming items)",
+	chart.NP:             "np chart (number of nonconforming items)",
+	chart.C:              "c chart (nonconformities in one inspection unit)",
+	chart.U:              "u chart (nonconformities per inspection unit)",
+	chart.DuplicateRange: "chart of the range of replicate readings",
+	chart.RelativeRange:  "chart of the range of replicate readings in percent of their mean",
+}
+
+// nouns are what a chart calls one result.
+var nouns = map[chart.Kind]string{
+	chart.Given: "result", chart.Individuals: "result", chart.XbarR: "subgroup", chart.XbarS: "subgroup", chart.RunMeans: "run",
+	chart.P: "sample", chart.NP: "sample", chart.C: "sample", chart.U: "sample",
+	chart.DuplicateRange: "set of replicates", chart.RelativeRange: "set of replicates",
+}
+
+// countOf writes a number of results of a kind.
+func countOf(kind chart.Kind, n int) string {
+	noun := nouns[kind]
+	if kind.Duplicates() && n != 1 {
+		return fmt.Sprintf("%d sets of replicates", n)
+	}
+	return Count(n, noun)
 }
 
 // done says when and by what a report was made.

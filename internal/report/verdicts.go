@@ -37,6 +37,7 @@ func Judged(w io.Writer, j Judgement) error {
 	for role := range chart.Roles {
 		t.lineTable(j.Outcome.Judge, role)
 	}
+	t.Points(l.Kind, l.SubgroupSize, &l.Model)
 	t.Section("Summary")
 	t.summary(j.Outcome)
 	t.Section("Signals")
@@ -62,13 +63,16 @@ func (j *Judgement) limitPairs(l judge.Limits) []Pair {
 		rounding = fmt.Sprintf("statistics and lines to %s, then compared", Count(l.Places, "decimal"))
 	}
 	size, context := "", ""
-	if l.Kind == chart.XbarR || l.Kind == chart.XbarS {
+	switch {
+	case l.Kind == chart.NP:
+		size = fmt.Sprintf("%d items", l.SubgroupSize)
+	case l.Kind != chart.Given && !l.Kind.SizeImplied():
 		size = fmt.Sprintf("%d readings; lines of smaller subgroups follow from process sigma, %s", l.SubgroupSize, Shortest(l.ProcessSigma))
 	}
 	if first := j.Outcome.First; first > 0 {
 		context = fmt.Sprintf("line %d; the %s before count towards patterns and are not reported", j.Table.Line(first), Count(first, "result"))
 	}
-	return []Pair{{"limits", j.LimitsFrom}, {"subgroup size", size}, {"rounding", rounding}, {"first judged", context}, {"judged", j.done()}}
+	return []Pair{{"limits", j.LimitsFrom}, {"subgroup size", size}, {"judged scale", scaleText(&l.Model)}, {"rounding", rounding}, {"first judged", context}, {"judged", j.done()}}
 }
 
 // lineTable writes the lines of a trace as judged.
@@ -79,21 +83,22 @@ func (t *Text) lineTable(j *judge.Judge, role chart.Role) {
 	}
 	trace := l.Traces[role]
 	where := j.Lines(role, plan.Nominal())
-	t.Section(fmt.Sprintf("%s trace: %s", capital(role.String()), judged.StatisticName(l.Kind, role)))
-	table := NewTable("line", ">value", "rests on")
+	words := lineWords{l.Kind, &l.Model, role, &trace.Trace}
+	t.Section(fmt.Sprintf("%s trace: %s", capital(role.String()), judged.StatisticOf(l.Kind, &l.Model, role)))
+	table := NewTable("line", ">value", ">in the unit", "rests on")
 	row := func(label string, x *float64, line chart.Line, multiple float64) {
 		if x == nil {
 			line.Basis = chart.Absent
 		}
-		table.Row(label, FixedOr(x, l.Places, "none"), restsOn(line, role, &trace.Trace, multiple))
+		table.Row(label, FixedOr(x, l.Places, "none"), words.original(x, line.Basis), words.restsOn(line, multiple))
 	}
 	row("upper action", where.UpperAction, trace.UpperAction, chart.ActionMultiple)
 	row("upper warning", where.UpperWarning, trace.UpperWarning, chart.WarningMultiple)
-	table.Row("centre", FixedOr(where.Centre, l.Places, "none"), "")
+	table.Row(words.centreName(), FixedOr(where.Centre, l.Places, "none"), words.original(where.Centre, chart.SigmaMultiple), "")
 	row("lower warning", where.LowerWarning, trace.LowerWarning, -chart.WarningMultiple)
 	row("lower action", where.LowerAction, trace.LowerAction, -chart.ActionMultiple)
 	if trace.Sigma != nil {
-		table.Row("sigma", Significant(*trace.Sigma, 6), "of the plotted statistic")
+		table.Row("sigma", Significant(*trace.Sigma, 6), "", "of the plotted statistic")
 	}
 	t.Table(table)
 	t.line("")
@@ -168,8 +173,8 @@ func (t *Text) advice(o *judged.Outcome) {
 
 // hitTable writes every hit.
 func (t *Text) hitTable(o *judged.Outcome, a *About) {
-	table := NewTable(">line", "id", "time", ">statistic", "trace", "rule", "consequence", "side", "window", ">first counting", "looks for")
-	places, describe := o.Judge.Limits().Places, describer(o)
+	table := NewTable(">line", "id", "time", "material", ">statistic", ">in the unit", "trace", "rule", "consequence", "side", "window", ">first counting", "looks for")
+	describe := describer(o)
 	for _, h := range o.Hits {
 		spec, row := o.Spec(h.Role, h.Rule), a.Table.Row(h.Row)
 		line := strconv.Itoa(row.Line)
@@ -177,7 +182,11 @@ func (t *Text) hitTable(o *judged.Outcome, a *About) {
 		if h.WindowFirst != h.Row {
 			window = strconv.Itoa(a.Table.Line(h.WindowFirst)) + " to " + line
 		}
-		table.Row(line, Foreign(name(row)), Foreign(row.Time), boundText(row, h.Role)+Fixed(h.Statistic, places), h.Role.String(),
+		original := ""
+		if h.Role == chart.Location {
+			original = originalText(o.Judge, row, h.Statistic)
+		}
+		table.Row(line, Foreign(name(row)), Foreign(row.Time), Foreign(row.Material), statisticText(o.Judge, boundText(row, h.Role), h.Statistic), original, h.Role.String(),
 			spec.ID, spec.Consequence.String(), sideText(h.Side), window, strconv.Itoa(a.Table.Line(h.FirstCounting)), describe(h.Role, h.Rule))
 	}
 	t.Table(table)

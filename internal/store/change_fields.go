@@ -9,6 +9,7 @@ import (
 	"strings"
 	"time"
 
+	"limitary/internal/chart"
 	"limitary/internal/definition"
 )
 
@@ -31,7 +32,7 @@ func fieldChanges(kind string, proposed, current []byte) ([]FieldChange, error) 
 		return resultFields(from, to), err
 	case "VOID_RESULT":
 		from, err := decodeContent(current)
-		return []FieldChange{{"voided", "false", "true"}, {"readings", strings.Join(from.Readings, " "), ""}}, err
+		return []FieldChange{{"voided", "false", "true"}, {"readings", strings.Join(from.Readings, " ") + countText(from.Count), ""}}, err
 	}
 	return nil, nil
 }
@@ -51,11 +52,19 @@ func resultFields(from, to definition.Result) (list []FieldChange) {
 	add("role", roleNames[from.Role], roleNames[to.Role])
 	add("repeat_of", from.RepeatOf, to.RepeatOf)
 	add("readings", strings.Join(from.Readings, " "), strings.Join(to.Readings, " "))
+	add("count", countText(from.Count), countText(to.Count))
 	add("material", from.Material, to.Material)
 	add("analyst", from.Analyst, to.Analyst)
 	add("instrument", from.Instrument, to.Instrument)
 	add("labels", labelText(from.Labels), labelText(to.Labels))
 	return list
+}
+
+func countText(c *chart.Count) string {
+	if c == nil {
+		return ""
+	}
+	return fmt.Sprintf("%v of %v", c.Nonconforming, c.Inspected)
 }
 
 var roleNames = map[definition.Role]string{definition.Routine: "ROUTINE", definition.Repeat: "REPEAT", definition.Overlap: "OVERLAP", definition.Setup: "SETUP"}

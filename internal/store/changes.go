@@ -86,7 +86,7 @@ type revise struct {
 
 // applyRevision gives a result a new revision and judges anew what it touches.
 func (s *Store) applyRevision(ctx context.Context, w *work, c *chartRow, tracks []*trackRow, cur *currentResult, r revise, entry int64) ([]TrackUpdate, error) {
-	pt, err := r.content.Point(c.SubgroupSize)
+	pt, err := r.content.Point(c.Chart)
 	if err != nil {
 		return nil, err
 	}
@@ -273,7 +273,7 @@ type revisionSaid struct {
 // result may cut off a pattern on its way though it alters no verdict yet, and that is not for one person to do.
 func (w *work) tryAmendment(ctx context.Context, c *chartRow, tracks []*trackRow, cur *currentResult, content definition.Result,
 	apply func(*work, *chartRow, []*trackRow) ([]TrackUpdate, error)) (updates []TrackUpdate, kept bool, err error) {
-	if content.JudgesAlike(cur.content) || cur.item.Stored.Version == 0 {
+	if content.JudgesAlike(cur.content, c.Chart) || cur.item.Stored.Version == 0 {
 		return w.try(ctx, c, tracks, leavesEarlier, apply)
 	}
 	return w.try(ctx, c, tracks, nothing, apply)

@@ -82,7 +82,7 @@ func (c *chartCache) addLot(chart, lot string, trackID int64) {
 
 // readChartInfos reads charts with their tracks.
 func (s *Store) readChartInfos(ctx context.Context, names []string) (map[string]*cachedChart, error) {
-	rows, err := s.pool.Query(ctx, `SELECT c.chart_id, c.name, c.kind, c.subgroup_size, c.unit, c.lots_are_tracks, t.lot, t.track_id
+	rows, err := s.pool.Query(ctx, `SELECT c.chart_id, c.name, c.kind, c.subgroup_size, c.unit, c.lots_are_tracks, c.standardised, t.lot, t.track_id
 		FROM charts c LEFT JOIN tracks t USING (chart_id) WHERE c.name = ANY($1)`, names)
 	if err != nil {
 		return nil, err
@@ -92,7 +92,7 @@ func (s *Store) readChartInfos(ctx context.Context, names []string) (map[string]
 	var kind int16
 	var lot *string
 	var track *int64
-	_, err = pgx.ForEachRow(rows, []any{&c.ID, &c.Name, &kind, &c.SubgroupSize, &c.Unit, &c.LotsAreTracks, &lot, &track}, func() error {
+	_, err = pgx.ForEachRow(rows, []any{&c.ID, &c.Name, &kind, &c.SubgroupSize, &c.Unit, &c.LotsAreTracks, &c.Standardised, &lot, &track}, func() error {
 		c.Kind = chart.Kind(kind)
 		cached := found[c.Name]
 		if cached == nil {

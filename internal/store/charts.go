@@ -14,14 +14,15 @@ import (
 )
 
 const chartColumns = `c.chart_id, c.timeline, c.name, c.title, c.kind, c.subgroup_size, c.unit, c.decimals, c.labels, c.display_zone,
-	c.plan_interval_us, c.longest_gap_us, c.repeat_rule, c.lots_are_tracks, c.revision, c.archived, c.created_at`
+	c.plan_interval_us, c.longest_gap_us, c.repeat_rule, c.lots_are_tracks, c.standardised,
+	c.relevant_shift_sigmas, c.relevant_sigma_ratio, c.revision, c.archived, c.created_at`
 
 func scanChart(row pgx.CollectableRow) (*chartRow, error) {
 	var c chartRow
 	var kind int16
 	var planMicros, gapMicros int64
 	err := row.Scan(&c.ID, &c.Timeline, &c.Name, &c.Title, &kind, &c.SubgroupSize, &c.Unit, &c.Decimals, &c.Labels, &c.DisplayZone,
-		&planMicros, &gapMicros, &c.RepeatRule, &c.LotsAreTracks, &c.Revision, &c.Archived, &c.CreatedAt)
+		&planMicros, &gapMicros, &c.RepeatRule, &c.LotsAreTracks, &c.Standardised, &c.RelevantShiftSigmas, &c.RelevantSigmaRatio, &c.Revision, &c.Archived, &c.CreatedAt)
 	if err != nil {
 		return nil, err
 	}
@@ -81,11 +82,15 @@ type chartContent struct {
 	LotsAreTracks bool              `json:"lots_are_tracks"`
 	Archived      bool              `json:"archived"`
 	Revision      int64             `json:"revision"`
+	Standardised  bool              `json:"standardised,omitempty"`
+	ShiftSigmas   float64           `json:"relevant_shift_sigmas,omitempty"`
+	SigmaRatio    float64           `json:"relevant_sigma_ratio,omitempty"`
 }
 
 func contentOf(c definition.Chart) chartContent {
 	return chartContent{c.Name, c.Title, c.Kind.String(), c.SubgroupSize, c.Unit, c.Decimals, c.Labels, c.DisplayZone,
-		c.PlanInterval.Microseconds(), c.LongestGap.Microseconds(), c.RepeatRule, c.LotsAreTracks, c.Archived, c.Revision}
+		c.PlanInterval.Microseconds(), c.LongestGap.Microseconds(), c.RepeatRule, c.LotsAreTracks, c.Archived, c.Revision,
+		c.Standardised, c.RelevantShiftSigmas, c.RelevantSigmaRatio}
 }
 
 // chartAnswer is what the repeat of a request that made or changed a chart finds again.
@@ -133,10 +138,12 @@ func (s *Store) CreateChart(ctx context.Context, a Actor, req Request, c definit
 		made.Revision, made.Archived, made.CreatedAt = 1, false, w.now
 		row := &chartRow{Chart: made}
 		err := w.tx.QueryRow(ctx, `INSERT INTO charts (name, title, kind, subgroup_size, unit, decimals, labels, display_zone,
-				plan_interval_us, longest_gap_us, repeat_rule, lots_are_tracks, created_at)
-			VALUES ($1, $2, $3, $4, $5, $6, $7, $8, $9, $10, $11, $12, $13) RETURNING chart_id`,
+				plan_interval_us, longest_gap_us, repeat_rule, lots_are_tracks, created_at,
+				standardised, relevant_shift_sigmas, relevant_sigma_ratio)
+			VALUES ($1, $2, $3, $4, $5, $6, $7, $8, $9, $10, $11, $12, $13, $14, $15, $16) RETURNING chart_id`,
 			made.Name, made.Title, int16(made.Kind), made.SubgroupSize, made.Unit, made.Decimals, made.Labels, made.DisplayZone,
-			made.PlanInterval.Microseconds(), made.LongestGap.Microseconds(), made.RepeatRule, made.LotsAreTracks, made.CreatedAt).Scan(&row.ID)
+			made.PlanInterval.Microseconds(), made.LongestGap.Microseconds(), made.RepeatRule, made.LotsAreTracks, made.CreatedAt,
+			made.Standardised, made.RelevantShiftSigmas, made.RelevantSigmaRatio).Scan(&row.ID)
 		if err != nil {
 			return nil, err
 		}
@@ -238,8 +245,9 @@ func (s *Store) UpdateChart(ctx context.Context, a Actor, req Request, name stri
 		}
 		c.Revision++
 		_, err = w.tx.Exec(ctx, `UPDATE charts SET title = $2, decimals = $3, labels = $4, display_zone = $5, plan_interval_us = $6,
-				repeat_rule = $7, revision = $8 WHERE chart_id = $1`,
-			c.ID, c.Title, c.Decimals, c.Labels, c.DisplayZone, c.PlanInterval.Microseconds(), c.RepeatRule, c.Revision)
+				repeat_rule = $7, revision = $8, relevant_shift_sigmas = $9, relevant_sigma_ratio = $10 WHERE chart_id = $1`,
+			c.ID, c.Title, c.Decimals, c.Labels, c.DisplayZone, c.PlanInterval.Microseconds(), c.RepeatRule, c.Revision,
+			c.RelevantShiftSigmas, c.RelevantSigmaRatio)
 		if err != nil {
 			return nil, err
 		}
@@ -252,10 +260,10 @@ func (s *Store) UpdateChart(ctx context.Context, a Actor, req Request, name stri
 // mayBecome refuses a change of what a chart is for good, and brings the rest into the form it is stored in.
 func mayBecome(before definition.Chart, after *definition.Chart) error {
 	fixed := func(c definition.Chart) string {
-		return fmt.Sprintf("%q %v %d %q %v %v", c.Name, c.Kind, c.SubgroupSize, c.Unit, c.LotsAreTracks, c.LongestGap)
+		return fmt.Sprintf("%q %v %d %q %v %v %v", c.Name, c.Kind, c.SubgroupSize, c.Unit, c.LotsAreTracks, c.LongestGap, c.Standardised)
 	}
 	if fixed(before) != fixed(*after) {
-		return definition.Invalid("chart", "name, kind, subgroup_size, unit, lots_are_tracks and longest_gap never change")
+		return definition.Invalid("chart", "name, kind, subgroup_size, unit, lots_are_tracks, standardised and longest_gap never change")
 	}
 	after.Revision, after.Archived, after.CreatedAt = before.Revision, before.Archived, before.CreatedAt
 	after.PlanInterval = after.PlanInterval.Truncate(time.Microsecond)

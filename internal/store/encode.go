@@ -8,6 +8,7 @@ import (
 	"math"
 	"time"
 
+	"limitary/internal/chart"
 	"limitary/internal/decimal"
 	"limitary/internal/definition"
 	"limitary/internal/judge"
@@ -43,13 +44,27 @@ func decodeContent(b []byte) (definition.Result, error) {
 	return f.Result, nil
 }
 
-// A stored point is a byte of flags, then for each reading its bits and its bound.
-const pointRepeat = 1
+// A stored point is a byte of flags; then, as the flags say, a count as its two numbers, or the length and the bytes of
+// a material; then for each reading its bits and its bound.
+const (
+	pointRepeat   = 1
+	pointCount    = 2
+	pointMaterial = 4
+)
 
 func encodePoint(pt judge.Point, repeat bool) []byte {
 	b := make([]byte, 1, 1+9*len(pt.Readings))
 	if repeat {
 		b[0] |= pointRepeat
+	}
+	if pt.Count != nil {
+		b[0] |= pointCount
+		b = binary.LittleEndian.AppendUint64(b, math.Float64bits(pt.Count.Nonconforming))
+		b = binary.LittleEndian.AppendUint64(b, math.Float64bits(pt.Count.Inspected))
+	}
+	if pt.Material != "" { // at most definition.NameBytesMax, so its length fits a byte
+		b[0] |= pointMaterial
+		b = append(append(b, byte(len(pt.Material))), pt.Material...)
 	}
 	for i, x := range pt.Readings {
 		b = binary.LittleEndian.AppendUint64(b, math.Float64bits(x))
@@ -62,13 +77,32 @@ func encodePoint(pt judge.Point, repeat bool) []byte {
 	return b
 }
 
+var errStoredPoint = errors.New("store: stored point has an unknown form")
+
 func decodePoint(b []byte) (pt judge.Point, repeat bool, err error) {
-	if len(b)%9 != 1 {
-		return pt, false, errors.New("store: stored point has an unknown form")
+	if len(b) == 0 || b[0] > pointRepeat|pointCount|pointMaterial {
+		return pt, false, errStoredPoint
 	}
-	repeat, b = b[0]&pointRepeat != 0, b[1:]
+	flags, b := b[0], b[1:]
+	float := func(b []byte) float64 { return math.Float64frombits(binary.LittleEndian.Uint64(b)) }
+	if flags&pointCount != 0 {
+		if len(b) < 16 {
+			return pt, false, errStoredPoint
+		}
+		pt.Count = &chart.Count{Nonconforming: float(b), Inspected: float(b[8:])}
+		b = b[16:]
+	}
+	if flags&pointMaterial != 0 {
+		if len(b) < 1 || len(b) < 1+int(b[0]) {
+			return pt, false, errStoredPoint
+		}
+		pt.Material, b = string(b[1:1+b[0]]), b[1+b[0]:]
+	}
+	if len(b)%9 != 0 {
+		return pt, false, errStoredPoint
+	}
 	for i := 0; len(b) > 0; i, b = i+1, b[9:] {
-		pt.Readings = append(pt.Readings, math.Float64frombits(binary.LittleEndian.Uint64(b)))
+		pt.Readings = append(pt.Readings, float(b))
 		if b[8] != 0 && pt.Bounds == nil {
 			pt.Bounds = make([]decimal.Bound, i, 1+len(b)/9+i)
 		}
@@ -76,7 +110,7 @@ func decodePoint(b []byte) (pt judge.Point, repeat bool, err error) {
 			pt.Bounds = append(pt.Bounds, decimal.Bound(b[8]))
 		}
 	}
-	return pt, repeat, nil
+	return pt, flags&pointRepeat != 0, nil
 }
 
 // keyTime reads the measured-at of an order key.

@@ -75,7 +75,7 @@ func (p *posting) items(c *postChart, t *postTrack) ([]*track.Item, error) {
 	var items []*track.Item
 	for _, i := range c.accepted[t.ID] {
 		r := &p.results[i]
-		pt, err := r.Point(c.SubgroupSize)
+		pt, err := r.Point(c.Chart)
 		if err != nil {
 			return nil, err
 		}

@@ -32,14 +32,18 @@ func (s *Store) Recheck(ctx context.Context, progress func(done, total int)) (re
 	defer wrap(ctx, &err, "Recheck")
 	err = s.read(ctx, func(ctx context.Context, tx pgx.Tx) error {
 		report = RecheckReport{}
-		rows, err := tx.Query(ctx, `SELECT t.track_id, t.chart_id, c.name, t.lot, t.results, t.open_signals, c.timeline, c.subgroup_size
+		rows, err := tx.Query(ctx, `SELECT t.track_id, t.chart_id, c.name, t.lot, t.results, t.open_signals, c.timeline,
+				c.kind, c.subgroup_size, c.standardised
 			FROM tracks t JOIN charts c USING (chart_id) ORDER BY t.track_id`)
 		if err != nil {
 			return err
 		}
 		checks, err := pgx.CollectRows(rows, func(row pgx.CollectableRow) (*trackCheck, error) {
 			k := &trackCheck{report: &report}
-			err := row.Scan(&k.track.ID, &k.chart.ID, &k.chart.Name, &k.track.Lot, &k.track.Results, &k.track.OpenSignals, &k.chart.Timeline, &k.chart.SubgroupSize)
+			var kind int16
+			err := row.Scan(&k.track.ID, &k.chart.ID, &k.chart.Name, &k.track.Lot, &k.track.Results, &k.track.OpenSignals, &k.chart.Timeline,
+				&kind, &k.chart.SubgroupSize, &k.chart.Standardised)
+			k.chart.Kind = chart.Kind(kind)
 			return k, err
 		})
 		if err != nil {
@@ -160,7 +164,7 @@ func (r suffixed) Scan(dest ...any) error { return r.CollectableRow.Scan(append(
 // step judges one result from its content and compares it with what is stored.
 func (k *trackCheck) step(runner *track.Runner, row *checkedRow) error {
 	name := fmt.Sprintf("result %s/%s", row.source, row.sourceID)
-	pt, err := row.content.Point(k.chart.SubgroupSize)
+	pt, err := row.content.Point(k.chart.Chart)
 	if err != nil {
 		return fmt.Errorf("%s: %w", name, err)
 	}

@@ -6,6 +6,7 @@ import (
 	"encoding/json"
 	"errors"
 	"fmt"
+	"math"
 	"math/rand/v2"
 	"slices"
 	"strconv"
@@ -31,9 +32,12 @@ var epoch = time.Date(2025, 3, 1, 8, 0, 0, 0, time.UTC)
 
 // world is one schedule: what happens to a chart, whatever the order.
 type world struct {
-	seed    uint64
-	lots    bool
-	results []definition.Result
+	seed uint64
+	lots bool
+	// kind is individuals, or p; standardised tells that readings are judged by the level of their material.
+	kind         chart.Kind
+	standardised bool
+	results      []definition.Result
 	// versions to approve, by index; withdrawn ones are withdrawn right after.
 	versions []definition.Content
 	withdraw map[int]bool
@@ -46,7 +50,10 @@ type world struct {
 
 func newWorld(seed uint64) *world {
 	r := rand.New(rand.NewPCG(seed, 77))
-	w := &world{seed: seed, lots: r.IntN(3) == 0, withdraw: map[int]bool{}, amend: map[int]definition.Result{}, voidMark: map[int]bool{}}
+	w := &world{seed: seed, kind: chart.Individuals, standardised: seed%6 == 4, lots: r.IntN(3) == 0, withdraw: map[int]bool{}, amend: map[int]definition.Result{}, voidMark: map[int]bool{}}
+	if seed%6 == 5 {
+		w.kind = chart.P
+	}
 	n := 20 + r.IntN(40)
 	for i := range n {
 		w.results = append(w.results, w.result(r, i))
@@ -90,6 +97,12 @@ func (w *world) result(r *rand.Rand, i int) definition.Result {
 	case 2:
 		res.Readings[0] = ">" + res.Readings[0]
 	}
+	switch {
+	case w.kind == chart.P:
+		res.Readings, res.Count = nil, &chart.Count{Nonconforming: max(0, math.Round(value*2-15)), Inspected: []float64{50, 100}[r.IntN(2)]}
+	case w.standardised:
+		res.Material = []string{"low", "low", "high", "other"}[r.IntN(4)]
+	}
 	if w.lots {
 		res.Lot = []string{"A", "B"}[r.IntN(2)]
 	}
@@ -113,8 +126,33 @@ func (w *world) version(r *rand.Rand, i, n int) definition.Content {
 	if i == 0 {
 		from = epoch.Add(time.Duration(r.IntN(6)-3) * time.Hour)
 	}
-	return definition.Content{Kind: chart.Individuals, SubgroupSize: 1, Unit: "mg/L", Decimals: 2, ProcessSigma: sigma, Location: loc, Dispersion: disp,
+	if w.kind == chart.P {
+		return w.counted(r, from)
+	}
+	var model *chart.Model
+	if w.standardised {
+		model = &chart.Model{Levels: []chart.Level{{Material: "low", Reference: 0, Sigma: 1}, {Material: "high", Reference: -5, Sigma: 1.5}}}
+	}
+	return definition.Content{Model: model, Kind: chart.Individuals, SubgroupSize: 1, Unit: "mg/L", Decimals: 2, ProcessSigma: sigma, Location: loc, Dispersion: disp,
 		Reason: "set-up", EffectiveFrom: from, Judge: rules.JudgeNumber, Basis: "test"}
+}
+
+// counted is a version of a p chart whose lines are each sample's own; rules that look for patterns are used on purpose.
+func (w *world) counted(r *rand.Rand, from time.Time) definition.Content {
+	centre := []float64{0.08, 0.1}[r.IntN(2)]
+	sigma := math.Sqrt(centre * (1 - centre) / 100)
+	method := chart.Exact
+	if r.IntN(2) == 0 {
+		method = chart.Normal
+	}
+	return definition.Content{Kind: chart.P, SubgroupSize: 1, Unit: "mg/L", Decimals: 4, Reason: "set-up", EffectiveFrom: from, Judge: rules.JudgeNumber, Basis: "test",
+		Model: &chart.Model{CountMethod: method, Inspected: 100},
+		Location: &definition.Trace{Trace: chart.Trace{Centre: &centre, Sigma: &sigma}, Rules: []rules.Spec{
+			{ID: "a", Kind: rules.Beyond, K: 1, M: 1, Z: 3, Consequence: rules.Stop},
+			{ID: "b", Kind: rules.Beyond, K: 2, M: 3, Z: 1, Consequence: rules.Act},
+			{ID: "c", Kind: rules.Trend, N: 3, Consequence: rules.Look},
+			{ID: "d", Kind: rules.EWMA, Lambda: 0.4, Limit: 1.5, Consequence: rules.Look},
+		}}}
 }
 
 // site runs schedules against one database.
@@ -352,7 +390,7 @@ func isReason(err error, reason definition.Reason) bool {
 // found sets the chart up, with its versions proposed.
 func (s *site) found(ctx context.Context, w *world, name string) error {
 	st := s.stores[0]
-	_, err := st.CreateChart(ctx, s.author, request("create", name), definition.Chart{Name: name, Kind: chart.Individuals, SubgroupSize: 1, Unit: "mg/L", LotsAreTracks: w.lots})
+	_, err := st.CreateChart(ctx, s.author, request("create", name), definition.Chart{Name: name, Kind: w.kind, SubgroupSize: 1, Unit: "mg/L", LotsAreTracks: w.lots, Standardised: w.standardised})
 	for i := 0; err == nil && i < len(w.versions); i++ {
 		content := w.versions[i]
 		_, err = st.ProposeVersion(ctx, s.author, request("propose", name, i), name, func(number int, at time.Time) (definition.Content, error) {

@@ -84,6 +84,8 @@ type Verdict struct {
 	Hits           []Hit
 	Instruction    string
 	RecordedAt     time.Time
+	// By is the judge of the version; nil where there was none.
+	By *judge.Judge
 }
 
 // TraceVerdict is the point of one trace.

@@ -67,7 +67,7 @@ func (v *verdictReader) outcome(ctx context.Context, chartID int64, into *Verdic
 			return err
 		}
 		into.Instruction = version.Instructions.For(o.Standing)
-		into.Traces = tracesOf(version.Compiled, o)
+		into.Traces, into.By = tracesOf(version.Compiled, o), version.Compiled
 	}
 	into.Hits = make([]Hit, len(o.Hits))
 	for i, h := range o.Hits {

@@ -168,6 +168,8 @@ func (w *work) checkContent(ctx context.Context, c *chartRow, content *definitio
 	case content.Kind != c.Kind || content.SubgroupSize != c.SubgroupSize || content.Unit != c.Unit:
 		return definition.Invalid("kind", "%v of %d readings in %q: chart %q is %v of %d in %q",
 			content.Kind, content.SubgroupSize, content.Unit, c.Name, c.Kind, c.SubgroupSize, c.Unit)
+	case c.Standardised != (content.Model != nil && len(content.Model.Levels) > 0):
+		return definition.Invalid("options.levels", "chart %q is standardised: %v; a version has levels exactly where its chart is", c.Name, c.Standardised)
 	case content.EffectiveFrom.Year() < 1900 || content.EffectiveFrom.Year() > 9998:
 		return definition.Invalid("effective_from", "%s: want a time from 1900 to 9998", content.EffectiveFrom.Format(time.RFC3339))
 	case content.Judge != judgeNumber:
@@ -309,4 +311,22 @@ func trackName(chart, lot string) string {
 		return fmt.Sprintf("chart %q", chart)
 	}
 	return fmt.Sprintf("chart %q, lot %q", chart, lot)
+}
+
+// CountProposals counts the versions of a chart, of the lot or of all lots, that were proposed within the latest period.
+func (s *Store) CountProposals(ctx context.Context, a Actor, chart, lot string, period time.Duration) (n int, err error) {
+	defer wrap(ctx, &err, "CountProposals")
+	err = s.read(ctx, func(ctx context.Context, tx pgx.Tx) error {
+		c, err := chartByName(ctx, tx, a, chart)
+		if err != nil {
+			return err
+		}
+		now, err := clock(ctx, tx)
+		if err != nil {
+			return err
+		}
+		return tx.QueryRow(ctx, `SELECT count(*) FROM versions WHERE chart_id = $1 AND (lot = $2 OR lot = '' OR $2 = '') AND recorded_at > $3`,
+			c.ID, lot, now.Add(-period)).Scan(&n)
+	})
+	return n, err
 }

@@ -173,7 +173,7 @@ func (m *model) approve(o op) {
 
 func (m *model) item(cur *current) *track.Item {
 	res := cur.result()
-	pt, err := res.Point(m.size)
+	pt, err := res.Point(definition.Chart{Kind: m.kind, SubgroupSize: m.size})
 	if err != nil {
 		panic(err)
 	}

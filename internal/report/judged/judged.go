@@ -10,7 +10,6 @@ package judged
 
 import (
 	"context"
-	"fmt"
 
 	"limitary/internal/chart"
 	"limitary/internal/decimal"
@@ -53,7 +52,7 @@ type Outcome struct {
 	// Standings counts the reported rows by standing, Reasons those not judged by reason; ByBound those that a bound
 	// decides.
 	Standings [judge.StopAt + 1]int
-	Reasons   [judge.Voided + 1]int
+	Reasons   [judge.NoScale + 1]int
 	ByBound   int
 }
 
@@ -72,62 +71,27 @@ func (o *Outcome) Worst() judge.Standing {
 	return judge.NotJudged
 }
 
-// SizeError tells that a row has more readings than the limits are for.
-type SizeError struct{ Line, Readings, Size int }
-
-func (e *SizeError) Error() string {
-	return fmt.Sprintf("line %d: the result has %d readings, and the subgroup size is %d", e.Line, e.Readings, e.Size)
-}
-
-// CheckSizes refuses a table with more readings in a row than size, with a *SizeError.
-func CheckSizes(t *resultfile.Table, size int) error {
-	if _, single := t.Series(); single {
-		return nil
-	}
-	for i := range t.Len() {
-		if n := len(t.Figures(i)); n > size {
-			return &SizeError{t.Line(i), n, size}
-		}
-	}
-	return nil
-}
-
-// PointOf gives row i to the judge. Scratch may be reused from row to row.
-func PointOf(t *resultfile.Table, i int, scratch *Scratch) judge.Point {
-	pt := judge.Point{Readings: t.Figures(i), Break: t.Break(i)}
-	if t.Bounded == 0 {
-		return pt
-	}
-	scratch.readings = t.AppendReadings(scratch.readings[:0], i)
-	scratch.bounds = scratch.bounds[:0]
-	for _, r := range scratch.readings {
-		scratch.bounds = append(scratch.bounds, r.Bound)
-	}
-	pt.Bounds = scratch.bounds
-	return pt
-}
-
-// Scratch is room that PointOf reuses.
-type Scratch struct {
-	readings []decimal.Reading
-	bounds   []decimal.Bound
-}
-
-// Run judges the rows of a table whose sizes were checked. Rows before first are context: they count and are not
+// Run judges rows that were checked. Rows before first are context: they count and are not
 // reported. Each, if set, is called for every row with its verdict, context included; the verdict is reused.
-func Run(ctx context.Context, j *judge.Judge, t *resultfile.Table, first int, each func(row int, v *judge.Verdict)) (*Outcome, error) {
-	o := &Outcome{Judge: j, First: first, Rows: t.Len()}
-	values, single := t.Series()
-	kind := j.Limits().Kind
-	whole := single && (kind == chart.Given || kind == chart.Individuals) && j.Plan(chart.Location) != nil
+func Run(ctx context.Context, j *judge.Judge, rows *Rows, first int, each func(row int, v *judge.Verdict)) (*Outcome, error) {
+	o := &Outcome{Judge: j, First: first, Rows: rows.Table.Len()}
+	values, single := rows.Table.Series()
 	var err error
-	if each == nil && whole {
-		err = o.segments(ctx, t, values)
+	if each == nil && single && wholeSegments(j) {
+		err = o.segments(ctx, rows.Table, values)
 	} else {
-		err = o.walk(ctx, t, each)
+		err = o.walk(ctx, rows, each)
 	}
 	o.signals()
 	return o, err
+}
+
+// wholeSegments reports whether every single value is a point of the location trace, so that nothing needs to be known of
+// the rows one by one. On another scale a value may have no place and is then not judged.
+func wholeSegments(j *judge.Judge) bool {
+	l := j.Limits()
+	return (l.Kind == chart.Given || l.Kind == chart.Individuals) && j.Plan(chart.Location) != nil &&
+		l.Model.Transform.Kind == chart.Identity && len(l.Model.Levels) == 0
 }
 
 // segments judges whole segments of single values.
@@ -178,16 +142,15 @@ func (o *Outcome) statistic(values []float64, row int, role chart.Role) float64 
 const rowsBetweenLooks = 1 << 14
 
 // walk judges row by row.
-func (o *Outcome) walk(ctx context.Context, t *resultfile.Table, each func(row int, v *judge.Verdict)) error {
+func (o *Outcome) walk(ctx context.Context, rows *Rows, each func(row int, v *judge.Verdict)) error {
 	st, v := o.Judge.NewState(), judge.Verdict{}
-	var scratch Scratch
 	var places [chart.Roles][]int32 // the rows of the points of each trace: hits count back in them
 	segment := 0
-	for row := range t.Len() {
+	for row := range rows.Table.Len() {
 		if row%rowsBetweenLooks == 0 && ctx.Err() != nil {
 			return ctx.Err()
 		}
-		pt := PointOf(t, row, &scratch)
+		pt := rows.Point(row)
 		if pt.Break {
 			segment = row
 		}
@@ -205,10 +168,10 @@ func (o *Outcome) walk(ctx context.Context, t *resultfile.Table, each func(row i
 		}
 		o.count(&v)
 		for _, h := range v.Hits {
-			rows := places[h.Role]
-			last := len(rows) - 1
-			o.Hits = append(o.Hits, Hit{Row: row, Role: h.Role, Rule: h.Rule, Side: h.Side, WindowFirst: int(rows[last-h.WindowBack]),
-				FirstCounting: int(rows[last-h.FirstBack]), Statistic: v.Traces[h.Role].Statistic, place: last, segment: segment})
+			at := places[h.Role]
+			last := len(at) - 1
+			o.Hits = append(o.Hits, Hit{Row: row, Role: h.Role, Rule: h.Rule, Side: h.Side, WindowFirst: int(at[last-h.WindowBack]),
+				FirstCounting: int(at[last-h.FirstBack]), Statistic: v.Traces[h.Role].Statistic, place: last, segment: segment})
 		}
 	}
 	return nil

@@ -48,6 +48,13 @@ func judgeOf(t *testing.T, l judge.Limits) *judge.Judge {
 	return j
 }
 
+// runGiven judges statistics as given beyond three sigmas.
+func runGiven(t *testing.T, in *resultfile.Table, first int, each func(int, *judge.Verdict)) (*judged.Outcome, error) {
+	t.Helper()
+	j := judgeOf(t, limitsOf(chart.Given, "shewhart-1931"))
+	return judged.Run(context.Background(), j, judged.RowsOf(j, in), first, each)
+}
+
 // Whole segments give what row by row gives, for random series with ties, breaks and context.
 func TestSegmentsAgreeWithRows(t *testing.T) {
 	const seed = 20260302
@@ -68,12 +75,12 @@ func TestSegmentsAgreeWithRows(t *testing.T) {
 		in := table(t, text.String(), resultfile.Options{Values: []string{"x"}, Break: "b"})
 		j := judgeOf(t, limitsOf(kind, "nelson-1984"))
 		first := rng.IntN(n)
-		whole, err := judged.Run(context.Background(), j, in, first, nil)
+		whole, err := judged.Run(context.Background(), j, judged.RowsOf(j, in), first, nil)
 		if err != nil {
 			t.Fatal(err)
 		}
 		rows := 0
-		single, err := judged.Run(context.Background(), j, in, first, func(int, *judge.Verdict) { rows++ })
+		single, err := judged.Run(context.Background(), j, judged.RowsOf(j, in), first, func(int, *judge.Verdict) { rows++ })
 		if err != nil {
 			t.Fatal(err)
 		}
@@ -115,7 +122,7 @@ func TestSignals(t *testing.T) {
 	} {
 		t.Run(c.name, func(t *testing.T) {
 			in := table(t, "x,b\n"+c.rows, resultfile.Options{Values: []string{"x"}, Break: "b"})
-			got, err := judged.Run(context.Background(), judgeOf(t, limitsOf(chart.Given, "shewhart-1931")), in, 0, nil)
+			got, err := runGiven(t, in, 0, nil)
 			if err != nil {
 				t.Fatal(err)
 			}
@@ -128,7 +135,7 @@ func TestSignals(t *testing.T) {
 
 func TestWorstAndCounts(t *testing.T) {
 	in := table(t, "x\n10\n<10\n14\n9\n", resultfile.Options{})
-	got, err := judged.Run(context.Background(), judgeOf(t, limitsOf(chart.Given, "shewhart-1931")), in, 1, nil)
+	got, err := runGiven(t, in, 1, nil)
 	if err != nil {
 		t.Fatal(err)
 	}
@@ -136,7 +143,7 @@ func TestWorstAndCounts(t *testing.T) {
 	if got.Standings != want || got.Reasons[judge.BoundProvesNothing] != 1 || got.Worst() != judge.StopAt {
 		t.Errorf("got standings %v, reasons %v, worst %v", got.Standings, got.Reasons, got.Worst())
 	}
-	none, err := judged.Run(context.Background(), judgeOf(t, limitsOf(chart.Given, "shewhart-1931")), table(t, "x\n<10\n", resultfile.Options{}), 0, nil)
+	none, err := runGiven(t, table(t, "x\n<10\n", resultfile.Options{}), 0, nil)
 	if err != nil || none.Worst() != judge.NotJudged {
 		t.Errorf("nothing judged: got %v, %v, want NOT_JUDGED", none.Worst(), err)
 	}
@@ -148,7 +155,7 @@ func TestCancelledRunStops(t *testing.T) {
 	in := table(t, "x\n1\n2\n", resultfile.Options{})
 	j := judgeOf(t, limitsOf(chart.Given, "shewhart-1931"))
 	for _, each := range []func(int, *judge.Verdict){nil, func(int, *judge.Verdict) {}} {
-		if _, err := judged.Run(ctx, j, in, 0, each); err != context.Canceled {
+		if _, err := judged.Run(ctx, j, judged.RowsOf(j, in), 0, each); err != context.Canceled {
 			t.Errorf("got %v, want %v", err, context.Canceled)
 		}
 	}
@@ -167,6 +174,8 @@ func TestDispersionRules(t *testing.T) {
 		{chart.Individuals, true, "nelson-1984/1 nelson-1984/2 nelson-1984/3 nelson-1984/4"},
 		{chart.XbarR, false, "nelson-1984/1 nelson-1984/2 nelson-1984/3 nelson-1984/4"},
 		{chart.XbarS, true, "nelson-1984/1 nelson-1984/2 nelson-1984/3 nelson-1984/4"},
+		{chart.DuplicateRange, false, "nelson-1984/1"},
+		{chart.RelativeRange, true, "nelson-1984/1 nelson-1984/2 nelson-1984/3 nelson-1984/4"},
 	} {
 		taken, left := judged.DispersionRules(c.kind, nelson.Rules, c.asked)
 		var ids []string
@@ -176,5 +185,42 @@ func TestDispersionRules(t *testing.T) {
 		if got := strings.Join(ids, " "); got != c.want || len(taken)+len(left) != len(nelson.Rules) {
 			t.Errorf("%v, asked %v: got %q and %v, want %q", c.kind, c.asked, got, left, c.want)
 		}
+	}
+}
+
+func TestCountRules(t *testing.T) {
+	warning, _ := rules.SetByID("action-warning")
+	taken, left := judged.CountRules(warning.Rules)
+	if len(taken) != 2 || len(left) != 1 || left[0] != "action-warning/3" {
+		t.Errorf("got %v and %v, want the two lines, and the pattern left out", taken, left)
+	}
+}
+
+// Rows of counts come with what was inspected: of the row, of all rows, or of the kind.
+func TestRowsOfCounts(t *testing.T) {
+	in := table(t, "n,k\n5,1\n,\n7,0\n", resultfile.Options{Values: []string{"k"}, Inspected: "n"})
+	plain := table(t, "k,b\n1,\n,\n0,\n", resultfile.Options{Values: []string{"k"}})
+	for _, c := range []struct {
+		name string
+		rows judged.Rows
+		want []chart.Count
+	}{
+		{"of the row", judged.Rows{Table: in, Kind: chart.P, Size: 1}, []chart.Count{{Nonconforming: 1, Inspected: 5}, {}, {Inspected: 7}}},
+		{"of all rows", judged.Rows{Table: plain, Kind: chart.U, Size: 1, Inspected: 2.5}, []chart.Count{{Nonconforming: 1, Inspected: 2.5}, {}, {Inspected: 2.5}}},
+		{"one unit", judged.Rows{Table: plain, Kind: chart.C, Size: 1}, []chart.Count{{Nonconforming: 1, Inspected: 1}, {}, {Inspected: 1}}},
+		{"the one size", judged.Rows{Table: plain, Kind: chart.NP, Size: 40}, []chart.Count{{Nonconforming: 1, Inspected: 40}, {}, {Inspected: 40}}},
+	} {
+		if err := c.rows.Check(); err != nil {
+			t.Errorf("%s: %v", c.name, err)
+		}
+		for i, want := range c.want {
+			pt := c.rows.Point(i)
+			if there := want != (chart.Count{}); there != (pt.Count != nil) || there && *pt.Count != want || len(pt.Readings) > 0 {
+				t.Errorf("%s, row %d: got %+v, want %+v", c.name, i, pt.Count, want)
+			}
+		}
+	}
+	if err := (&judged.Rows{Table: plain, Kind: chart.P, Size: 1}).Check(); err == nil || !strings.Contains(err.Error(), "line 2: nothing says how much was inspected") {
+		t.Errorf("counts of nobody knows what: got %v", err)
 	}
 }

@@ -14,6 +14,7 @@ import (
 // Picture collects verdicts for a plot. Take is fit for Run's each.
 type Picture struct {
 	judge  *judge.Judge
+	rows   *Rows
 	table  *resultfile.Table
 	traces [chart.Roles]*plot.Trace
 	lines  map[scaled]*plot.Lines
@@ -24,9 +25,10 @@ type scaled struct {
 	at   rules.Scale
 }
 
-// NewPicture begins the picture of a table.
-func NewPicture(j *judge.Judge, t *resultfile.Table) *Picture {
-	p := &Picture{judge: j, table: t, lines: map[scaled]*plot.Lines{}}
+// NewPicture begins the picture of rows.
+func NewPicture(j *judge.Judge, rows *Rows) *Picture {
+	t := rows.Table
+	p := &Picture{judge: j, rows: rows, table: t, lines: map[scaled]*plot.Lines{}}
 	l := j.Limits()
 	places := l.Places
 	if places == decimal.Unrounded {
@@ -34,7 +36,7 @@ func NewPicture(j *judge.Judge, t *resultfile.Table) *Picture {
 	}
 	for role := range p.traces {
 		if j.Plan(chart.Role(role)) != nil {
-			p.traces[role] = &plot.Trace{Name: StatisticName(l.Kind, chart.Role(role)), Decimals: places, Points: make([]plot.Point, 0, t.Len())}
+			p.traces[role] = &plot.Trace{Name: StatisticOf(l.Kind, &l.Model, chart.Role(role)), Decimals: places, Points: make([]plot.Point, 0, t.Len())}
 		}
 	}
 	return p
@@ -54,17 +56,6 @@ func unroundedPlaces(l judge.Limits, t *resultfile.Table) int {
 	return min(places+1, decimal.PlacesMax)
 }
 
-// StatisticName says what a trace plots.
-func StatisticName(kind chart.Kind, role chart.Role) string {
-	names := map[chart.Kind][chart.Roles]string{
-		chart.Given:       {"Statistic as given", ""},
-		chart.Individuals: {"Single value", "Moving range"},
-		chart.XbarR:       {"Subgroup mean", "Subgroup range"},
-		chart.XbarS:       {"Subgroup mean", "Subgroup standard deviation"},
-	}
-	return names[kind][role]
-}
-
 // Take adds the next row.
 func (p *Picture) Take(row int, v *judge.Verdict) {
 	label := p.label(row)
@@ -80,9 +71,10 @@ func (p *Picture) Take(row int, v *judge.Verdict) {
 			pt.Statistic, at = tv.Statistic, tv.Scale
 			if role == chart.Location {
 				pt.Bound = p.bound(row)
+				p.keepInSight(&pt, at)
 			}
 		case role == chart.Location && v.Standing == judge.NotJudged && v.Reason == judge.BoundProvesNothing:
-			pt.Statistic = decimal.Mean(p.table.Figures(row), p.judge.Limits().Places)
+			pt.Statistic, pt.Missing = p.unproven(row)
 			pt.NotJudged, pt.Bound = true, p.bound(row)
 		default:
 			pt.Missing = true
@@ -96,6 +88,31 @@ func (p *Picture) Take(row int, v *judge.Verdict) {
 		}
 		trace.Points = append(trace.Points, pt)
 	}
+}
+
+// belowAllSigmas is where a reading is drawn of which only is known that it lies below the scale.
+const belowAllSigmas = 4.5
+
+// keepInSight moves a point that lies outside the domain of the logarithm to below the lines, as a bound.
+func (p *Picture) keepInSight(pt *plot.Point, at rules.Scale) {
+	if t := p.judge.Limits().Model.Transform; t.Kind == chart.Log && pt.Statistic <= t.Floor() {
+		pt.Statistic, pt.Bound = at.Centre-belowAllSigmas*at.Sigma, decimal.Below
+	}
+}
+
+// unproven gives the place of a bound that proves nothing, on the judged scale; missing where it has none there.
+func (p *Picture) unproven(row int) (at float64, missing bool) {
+	l := p.judge.Limits()
+	at = decimal.Mean(p.table.Figures(row), l.Places)
+	switch m := &l.Model; {
+	case len(m.Levels) > 0:
+		level, ok := m.LevelOf(p.table.Material(row))
+		return (at - level.Reference) / level.Sigma, !ok
+	case m.Transform.Kind != chart.Identity:
+		y, ok := m.Transform.Apply(at)
+		return y, !ok
+	}
+	return at, false
 }
 
 // Exclude marks rows that were left out of the estimate, beside those the table marks.
@@ -155,8 +172,9 @@ func (p *Picture) linesAt(role chart.Role, at rules.Scale) *plot.Lines {
 	return l
 }
 
-// Chart gives the picture under a title.
+// Chart gives the picture under a title; unit is that of the results.
 func (p *Picture) Chart(title, subtitle, unit string, notes ...string) plot.Chart {
-	return plot.Chart{Title: title, Subtitle: subtitle, Unit: unit,
+	l := p.judge.Limits()
+	return plot.Chart{Title: title, Subtitle: subtitle, Unit: PlottedUnit(l.Kind, &l.Model, unit),
 		Location: p.traces[chart.Location], Dispersion: p.traces[chart.Dispersion], Notes: notes}
 }
