@@ -27,6 +27,7 @@ type Summary struct {
 	Base                                       time.Time
 	Charts, Archived, Tracks, Results          int
 	VersionsApproved, VersionsProposed         int
+	VersionsRejected                           int
 	SignalsOpen, SignalsClosed, TracksHeld     int
 	RequestsPending, RequestsConfirmed, Marked int
 }

@@ -20,16 +20,24 @@ import (
 // only when somebody changes the demo on purpose.
 func TestReadingsAreThoseOfTheSeed(t *testing.T) {
 	t.Logf("seed %d", demo.Seed)
-	const want = "5b88cc03725e98af4b924a5c3dfd68654c6fb12b4f3cc795f4c8b6238ed17725"
+	const want = "86695d2510da9eb491eb159d2346103554a459d4d1ce6ea12479ac6562d61e01"
 	h := sha256.New()
 	for _, s := range demo.Group() {
 		for _, r := range s.Results(base) {
-			fmt.Fprintf(h, "%s %s %s\n", r.Chart, r.SourceId, strings.Join(r.Readings, " "))
+			fmt.Fprintf(h, "%s %s %s\n", r.Chart, r.SourceId, strings.Join(written(r), " "))
 		}
 	}
 	if got := hex.EncodeToString(h.Sum(nil)); got != want {
 		t.Errorf("got readings with digest %s, want %s", got, want)
 	}
+}
+
+// written gives what a result says: its readings, or what was counted and inspected.
+func written(r *pb.Result) []string {
+	if r.Count == nil {
+		return r.Readings
+	}
+	return []string{fmt.Sprint(r.Count.Nonconforming), fmt.Sprint(r.Count.Inspected)}
 }
 
 func TestSameBaseGivesSameResults(t *testing.T) {
@@ -87,7 +95,7 @@ func TestResultsOfEachChart(t *testing.T) {
 					t.Fatalf("%s comes twice", r.SourceId)
 				}
 				ids[r.SourceId] = true
-				if len(r.Readings) == 0 || len(r.Readings) > int(c.SubgroupSize) || r.Unit != c.Unit || r.Chart != c.Name {
+				if !suits(r, c) {
 					t.Fatalf("got %v, which does not suit chart %v", r, c)
 				}
 			}
@@ -100,6 +108,19 @@ func TestResultsOfEachChart(t *testing.T) {
 	if total < 2000 || total > 5000 {
 		t.Errorf("got %d results in all, want a few thousand", total)
 	}
+}
+
+func suits(r *pb.Result, c *pb.Chart) bool {
+	if r.Unit != c.Unit || r.Chart != c.Name {
+		return false
+	}
+	switch c.Kind {
+	case pb.ChartKind_CHART_KIND_P:
+		return len(r.Readings) == 0 && r.Count.Nonconforming <= r.Count.Inspected && r.Count.Inspected >= 40 && r.Count.Inspected <= 120
+	case pb.ChartKind_CHART_KIND_C:
+		return len(r.Readings) == 0 && r.Count.Nonconforming >= 0 && r.Count.Inspected == 1
+	}
+	return r.Count == nil && len(r.Readings) > 0 && len(r.Readings) <= int(c.SubgroupSize)
 }
 
 // People are two initials, places are the three invented ones: nothing in the demo names anybody or anything real.
@@ -125,6 +146,12 @@ func TestChartsOfOneInstrumentShareRuns(t *testing.T) {
 	shared := 0
 	for _, s := range demo.Group() {
 		for _, r := range s.Results(base) {
+			if r.RunId == "" {
+				if r.Count == nil {
+					t.Fatalf("%s has no run", r.SourceId)
+				}
+				continue // it sums up a week
+			}
 			if positions[r.RunId] == nil {
 				positions[r.RunId] = map[int32]string{}
 			}
@@ -140,7 +167,7 @@ func TestChartsOfOneInstrumentShareRuns(t *testing.T) {
 	}
 }
 
-// Every kind of chart and every case that a newcomer should meet is there.
+// The kinds of chart and the cases that a newcomer should meet are there.
 func TestGroupHasEachCase(t *testing.T) {
 	kinds := map[pb.ChartKind]int{}
 	cases := map[string]bool{}
@@ -149,13 +176,14 @@ func TestGroupHasEachCase(t *testing.T) {
 		kinds[c.Kind]++
 		cases["lots as tracks"] = cases["lots as tracks"] || c.LotsAreTracks
 		for _, r := range s.Results(base) {
-			cases["less-than results"] = cases["less-than results"] || strings.HasPrefix(r.Readings[0], "<")
-			cases["short subgroups"] = cases["short subgroups"] || len(r.Readings) < int(c.SubgroupSize)
+			cases["less-than results"] = cases["less-than results"] || strings.HasPrefix(written(r)[0], "<")
+			cases["short subgroups"] = cases["short subgroups"] || r.Count == nil && len(r.Readings) < int(c.SubgroupSize)
 			cases["set-up"] = cases["set-up"] || r.Role == pb.ResultRole_RESULT_ROLE_SETUP
 			cases["overlap"] = cases["overlap"] || r.Role == pb.ResultRole_RESULT_ROLE_OVERLAP
 		}
 	}
-	for _, k := range []pb.ChartKind{pb.ChartKind_CHART_KIND_INDIVIDUALS, pb.ChartKind_CHART_KIND_XBAR_R, pb.ChartKind_CHART_KIND_XBAR_S} {
+	for _, k := range []pb.ChartKind{pb.ChartKind_CHART_KIND_INDIVIDUALS, pb.ChartKind_CHART_KIND_XBAR_R, pb.ChartKind_CHART_KIND_XBAR_S,
+		pb.ChartKind_CHART_KIND_RUN_MEANS, pb.ChartKind_CHART_KIND_P, pb.ChartKind_CHART_KIND_C, pb.ChartKind_CHART_KIND_DUPLICATE_RANGE} {
 		if kinds[k] == 0 {
 			t.Errorf("there is no chart of kind %s", k)
 		}

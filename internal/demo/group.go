@@ -28,6 +28,10 @@ const (
 	individuals = pb.ChartKind_CHART_KIND_INDIVIDUALS
 	xbarR       = pb.ChartKind_CHART_KIND_XBAR_R
 	xbarS       = pb.ChartKind_CHART_KIND_XBAR_S
+	runMeans    = pb.ChartKind_CHART_KIND_RUN_MEANS
+	pairs       = pb.ChartKind_CHART_KIND_DUPLICATE_RANGE
+	fraction    = pb.ChartKind_CHART_KIND_P
+	counts      = pb.ChartKind_CHART_KIND_C
 
 	look = pb.Consequence_CONSEQUENCE_LOOK
 	act  = pb.Consequence_CONSEQUENCE_ACT
@@ -84,6 +88,11 @@ func movingRange() *pb.TraceRules { return own(beyond("moving-range", look, 1, 1
 
 func fixedLine(value float64, basis pb.Basis) *pb.Line { return &pb.Line{Value: &value, Basis: basis} }
 
+// exactLines are at the whole counts that the tails of the law of counts give.
+func exactLines() *pb.KindOptions {
+	return &pb.KindOptions{CountMethod: pb.CountMethod_COUNT_METHOD_EXACT}
+}
+
 func absent() *pb.Line { return &pb.Line{Basis: pb.Basis_BASIS_ABSENT} }
 
 func ptr[T any](v T) *T { return &v }
@@ -96,6 +105,7 @@ const (
 
 const (
 	chance  = "No cause found; the runs before and after are in order. Taken as chance."
+	week    = 7 * day
 	day     = 24 * time.Hour
 	halfDay = 12 * time.Hour
 )

@@ -6,7 +6,7 @@ import (
 
 // harwick tells the stories of the laboratory at Harwick: nitrate by ion chromatography and turbidity.
 func harwick() []Story {
-	return []Story{nitrateMid(), nitrateBlank(), nitrateDuplicates(), turbidityLow(), nitrateRetired()}
+	return []Story{nitrateMid(), nitrateBlank(), nitrateDuplicates(), nitratePairs(), turbidityLow(), nitrateRetired()}
 }
 
 var harwickAnalysts = []string{"A.K.", "J.T.", "M.O."}
@@ -44,7 +44,7 @@ func nitrateMid() Story {
 		post(s, column-4, s.count()),
 		note(s, "Began with the new column. Recalibrated twice, no change; a new version is proposed from the runs since."),
 		propose(s, proposal{number: 2, from: column, to: s.count(), effective: s.count(), location: nelsonForMonitoring(), dispersion: movingRange(),
-			reason: "New separator column: the mean has moved by one sigma and stayed.", instructions: houseRules()}),
+			afterSignal: true, reason: "New separator column: the mean has moved by one sigma and stayed, and the change test says CHANGE.", instructions: houseRules()}),
 	}}
 }
 
@@ -99,14 +99,40 @@ func nitrateDuplicates() Story {
 	}}
 }
 
+// nitratePairs has duplicates of all kinds of water, whose difference grows with the concentration: the line goes by the
+// band that the mean of a pair lies in. In one pair the second vial was that of another sample.
+func nitratePairs() Story {
+	c := chartOf("harwick", "nitrate-ic2-pairs", "Nitrate, duplicates of routine samples, 0.5 to 45 mg/L N", pairs, 2, "mg/L", ic, "IC2", "nitrate", day)
+	s := nitrateSeries(c, "HW-NO3P", 246)
+	s.material, s.position, s.perDay, s.days, s.decimals, s.setup = "Routine sample, raw or treated", 4, 1, 180, 2, 100
+	s.level = oneOf([]float64{0.7, 1.6, 2.6, 5.2, 7.1, 8.8, 15, 18, 22, 32, 34, 37}, 0.08)
+	s.spread = growing(0.03, 0.015)
+	const swapped = 141
+	s.apart = map[int]float64{swapped: 6.4}
+	return Story{c, []step{
+		createChart(c),
+		post(s, 0, 100),
+		propose(s, proposal{number: 1, from: 0, to: 100, effective: 100, dispersion: own(beyond("pair", stop, 1, 1, 3)),
+			options: &pb.KindOptions{BandFrom: []float64{0, 4, 12, 28}},
+			reason: "Set-up from 100 duplicates. Two readings of 37 mg/L differ by more than two of 0.7 mg/L, so each of four bands of " +
+				"concentration has its own line. There is no lower one: readings that agree well are no fault.", instructions: houseRules()}),
+		approve(c, 1, ""),
+		post(s, 100, swapped+1),
+		settle(s, assignableCause, "The second vial was that of the next sample; both were measured again and agree. Run repeated."),
+		post(s, swapped+1, s.count()),
+	}}
+}
+
 // turbidityLow was judged from the beginning only in hindsight: its version was approved after 60 results, which were
-// judged anew. One result came late.
+// judged anew. One result came late. Later limits were proposed and rejected, as the change test found no difference that
+// matters.
 func turbidityLow() Story {
 	c := chartOf("harwick", "turbidity-1", "Turbidity, formazin 1 NTU", xbarS, 3, "NTU", "nephelometry", "TB1", "turbidity", day)
 	s := &series{
 		chart: c, prefix: "HW-TURB", stream: 99, source: "lims-harwick", instrument: "TB1", analysts: harwickAnalysts,
 		material: "Formazin suspension 1 NTU", perDay: 1, days: 180, decimals: 3, centre: 1.004, between: 0.003, within: 0.014, setup: 30,
 	}
+	c.RelevantShiftSigmas, c.RelevantSigmaRatio = 0.75, 1.5
 	const late = 131
 	return Story{c, []step{
 		createChart(c),
@@ -117,6 +143,10 @@ func turbidityLow() Story {
 		post(s, 60, 150, late),
 		post(s, late, late+1),
 		settle(s, noCause, chance),
+		propose(s, proposal{number: 2, from: 30, to: 150, effective: 150, location: setOf("western-electric-1956"), dispersion: setOf("shewhart-1931"),
+			reason: "Planned review: limits from the 120 days since the set-up. The change test says whether they are needed.", instructions: houseRules()}),
+		reject(c, 2, "The change test says KEEP: the centre lies within 0.75 sigmas of the one in force and the scatter within a ratio of 1.5, which "+
+			"is what matters on this chart. New limits would only take in what may have drifted."),
 		post(s, 150, s.count()),
 		settle(s, noCause, chance),
 	}}

@@ -18,8 +18,8 @@ import (
 func wanted(already bool) demo.Summary {
 	return demo.Summary{
 		Already: already, Base: base,
-		Charts: 12, Archived: 1, Tracks: 13, Results: 2651, VersionsApproved: 13, VersionsProposed: 1,
-		SignalsOpen: 13, SignalsClosed: 30, TracksHeld: 1, RequestsPending: 1, RequestsConfirmed: 1, Marked: 1,
+		Charts: 17, Archived: 1, Tracks: 18, Results: 3197, VersionsApproved: 18, VersionsProposed: 1, VersionsRejected: 1,
+		SignalsOpen: 13, SignalsClosed: 36, TracksHeld: 1, RequestsPending: 1, RequestsConfirmed: 1, Marked: 1,
 	}
 }
 
@@ -48,8 +48,8 @@ func TestLoadOnceAndAgain(t *testing.T) {
 	s := serve(t)
 	var steps []int
 	sum, err := demo.Load(t.Context(), s.conn, s.tokens, base, func(done, total int) {
-		if total != 2650 || done > total {
-			t.Errorf("progress: got %d of %d, want up to 2650 of 2650", done, total)
+		if total != 3196 || done > total {
+			t.Errorf("progress: got %d of %d, want up to 3196 of 3196", done, total)
 		}
 		steps = append(steps, done)
 	})
@@ -59,8 +59,8 @@ func TestLoadOnceAndAgain(t *testing.T) {
 	if want := wanted(false); sum != want {
 		t.Errorf("got %+v\nwant %+v", sum, want)
 	}
-	if !slices.IsSorted(steps) || steps[len(steps)-1] != 2650 {
-		t.Errorf("progress: got %v, want it to rise to 2650", steps)
+	if !slices.IsSorted(steps) || steps[len(steps)-1] != 3196 {
+		t.Errorf("progress: got %v, want it to rise to 3196", steps)
 	}
 	s.recheck(t)
 	t.Run("a second load days later changes nothing", func(t *testing.T) {

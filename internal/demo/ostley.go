@@ -6,9 +6,10 @@ import (
 	pb "limitary/api/limitary/v1"
 )
 
-// ostley tells the stories of the laboratory at Ostley: lead by ICP-MS and fluoride by ion-selective electrode.
+// ostley tells the stories of the laboratory at Ostley: lead by ICP-MS, fluoride by ion-selective electrode and
+// sulfate by ion chromatography.
 func ostley() []Story {
-	return []Story{leadMid(), leadRecovery(), fluoride()}
+	return []Story{leadMid(), leadRecovery(), fluoride(), sulfateRuns()}
 }
 
 var ostleyAnalysts = []string{"B.F.", "R.N."}
@@ -102,5 +103,30 @@ func fluoride() Story {
 		post(s, slip+1, 480),
 		settle(s, noCause, chance),
 		post(s, 480, s.count()),
+	}}
+}
+
+// sulfateRuns has three check standards in each run. Runs differ by their calibrations, which the scatter within a run does
+// not show: limits of subgroup means would be too narrow.
+func sulfateRuns() Story {
+	c := chartOf("ostley", "sulfate-ic3-runs", "Sulfate, check standard 50 mg/L, mean of the run", runMeans, 3, "mg/L", ic, "IC3", "sulfate", day)
+	s := &series{
+		chart: c, prefix: "OS-SO4", stream: 174, source: "lims-ostley", instrument: "IC3", analysts: ostleyAnalysts, position: 1,
+		lot: "SS-21", material: "Sulfate check standard 50 mg/L", perDay: 1, days: 100, decimals: 2, centre: 50.1, between: 0.42, within: 0.30, setup: 40,
+	}
+	const eluent = 83
+	s.moves = []move{once(eluent, -2.4)}
+	return Story{c, []step{
+		createChart(c),
+		post(s, 0, 40),
+		propose(s, proposal{number: 1, from: 0, to: 40, effective: 40,
+			location: own(beyond("run-mean", stop, 1, 1, 3), sameSide("run-mean-side", act, 9)), dispersion: own(beyond("within-run", act, 1, 1, 3)),
+			reason: "Set-up from 40 runs of three check standards. Every run has its own calibration, so run means vary more than the readings of one run " +
+				"explain. Lines of an xbar chart rest on the scatter within runs alone: about one run in four would be beyond them with nothing wrong.",
+			instructions: houseRules()}),
+		approve(c, 1, ""),
+		post(s, 40, eluent+1),
+		settle(s, assignableCause, "Eluent made up too strong; sulfate came early and lost part of its peak. New eluent, run repeated."),
+		post(s, eluent+1, s.count()),
 	}}
 }

@@ -32,8 +32,11 @@ type series struct {
 	analysts                          []string
 	// position is the place of the control in its run.
 	position int32
-	// The series has perDay results a day over days days; the last day ends ago days before the base.
+	// The series has perDay results a day on each of days days; the last of them ends ago days before the base.
 	perDay, days, ago int
+	// every is how many days later the next day with results comes; 0 is one. Where days are not in a row, a result sums
+	// up many runs and has none of its own.
+	every int
 	// setup results come first, posted as such.
 	setup int
 	// overlap results come first, measured beside the lot before.
@@ -42,12 +45,20 @@ type series struct {
 	// centre of the process, and standard deviations between and within subgroups.
 	centre, between, within float64
 	decimals                int
+	// level draws the level of a result, and spread is the standard deviation within a subgroup at it; nil takes the
+	// process as it is described above.
+	level  func(rng *rand.Rand) float64
+	spread func(level float64) float64
+	// counted draws a count in place of readings.
+	counted countOf
 	// moves displaces the process at result i.
 	moves []move
 	// write puts a reading into words; nil writes it with the decimals.
 	write func(i int, x float64) string
 	// short lists subgroups that lost all readings but the first.
 	short map[int]bool
+	// apart displaces the last reading of a subgroup from the others.
+	apart map[int]float64
 }
 
 // move displaces the process at result i by what it gives.
@@ -89,20 +100,29 @@ func (s *series) track() string {
 	return ""
 }
 
-// run numbers the analytical runs of an instrument, so that charts of one instrument share them: the last run before
+// daysBack is how many days before the base result i belongs to.
+func (s *series) daysBack(i int) int { return s.ago + (s.days-1-i/s.perDay)*max(1, s.every) }
+
+// run names the analytical run of result i, if it has one.
+func (s *series) run(i int) string {
+	if s.every > 1 {
+		return ""
+	}
+	return fmt.Sprintf("%s-%03d", s.instrument, s.runNumber(i))
+}
+
+// runNumber numbers the analytical runs of an instrument, so that charts of one instrument share them: the last run before
 // the base is number runsMax.
-func (s *series) run(i int) int {
+func (s *series) runNumber(i int) int {
 	const runsMax = 900
-	day, slot := i/s.perDay, i%s.perDay
 	const perDayMax = 3
-	return runsMax - (s.ago+s.days-1-day)*perDayMax - (s.perDay - 1 - slot)
+	return runsMax - s.daysBack(i)*perDayMax - (s.perDay - 1 - i%s.perDay)
 }
 
 // at is when result i was measured: the last at the base itself, runs three hours apart, the controls of a run some
 // minutes apart.
 func (s *series) at(base time.Time, i int) time.Time {
-	day, slot := i/s.perDay, i%s.perDay
-	back := time.Duration(s.ago+s.days-1-day)*24*time.Hour + time.Duration(s.perDay-1-slot)*slotsApart
+	back := time.Duration(s.daysBack(i))*day + time.Duration(s.perDay-1-i%s.perDay)*slotsApart
 	return base.Add(-back - time.Duration(20-s.position*4)*time.Minute)
 }
 
@@ -123,13 +143,13 @@ func (s *series) results(base time.Time) []*pb.Result {
 }
 
 func (s *series) result(base time.Time, i int, rng *rand.Rand) *pb.Result {
-	level := s.centre + float64(s.between*noise(rng)) // the conversions keep products and sums apart on every processor
+	level := s.drawLevel(rng)
 	for _, m := range s.moves {
 		level += m(i)
 	}
 	r := &pb.Result{
 		Chart: s.chart.Name, Source: s.source, SourceId: s.id(i), MeasuredAt: s.at(base, i).Format(time.RFC3339),
-		Lot: s.lot, RunId: fmt.Sprintf("%s-%03d", s.instrument, s.run(i)), Position: s.position,
+		Lot: s.lot, RunId: s.run(i), Position: s.position,
 		Role: pb.ResultRole_RESULT_ROLE_ROUTINE, Unit: s.chart.Unit, Material: s.material, Instrument: s.instrument,
 		Analyst: s.analysts[rng.IntN(len(s.analysts))],
 	}
@@ -139,17 +159,43 @@ func (s *series) result(base time.Time, i int, rng *rand.Rand) *pb.Result {
 	case i < s.overlap:
 		r.Role = pb.ResultRole_RESULT_ROLE_OVERLAP
 	}
-	for range s.chart.SubgroupSize {
+	if s.counted != nil {
+		r.Count = s.counted(rng, level)
+		return r
+	}
+	r.Readings = s.readings(i, level, rng)
+	return r
+}
+
+// drawLevel draws where the process is, before anything has moved it. The conversions keep products and sums apart on
+// every processor.
+func (s *series) drawLevel(rng *rand.Rand) float64 {
+	if s.level != nil {
+		return s.level(rng)
+	}
+	return s.centre + float64(s.between*noise(rng))
+}
+
+func (s *series) readings(i int, level float64, rng *rand.Rand) []string {
+	within, n := s.within, int(s.chart.SubgroupSize)
+	if s.spread != nil {
+		within = s.spread(level)
+	}
+	out := make([]string, n)
+	for k := range out {
 		x := level
-		if s.chart.SubgroupSize > 1 {
-			x += float64(s.within * noise(rng))
+		if n > 1 {
+			x += float64(within * noise(rng))
 		}
-		r.Readings = append(r.Readings, s.text(i, x))
+		if k == n-1 {
+			x += s.apart[i]
+		}
+		out[k] = s.text(i, x)
 	}
 	if s.short[i] {
-		r.Readings = r.Readings[:1]
+		out = out[:1]
 	}
-	return r
+	return out
 }
 
 // text writes a reading with the decimals of the series.

@@ -122,9 +122,12 @@ type proposal struct {
 
 	location, dispersion *pb.TraceRules
 	locationLines        *pb.FixedLines
+	options              *pb.KindOptions
 	instructions         *pb.Instructions
 	reason               string
 	cautions             []string
+	// afterSignal says that the data were looked at because of a signal.
+	afterSignal bool
 	// effective is the first result that the version judges.
 	effective int
 }
@@ -137,7 +140,7 @@ func propose(s *series, p proposal) step {
 			Centre: p.centre, ProcessSigma: p.sigma, PublishedDecimals: p.decimals,
 			LocationLines: p.locationLines, LocationRules: p.location, DispersionRules: p.dispersion,
 			EffectiveFrom: timestamppb.New(s.before(l.base, p.effective)), Reason: p.reason,
-			Instructions: p.instructions, AcceptedCautions: p.cautions,
+			Instructions: p.instructions, AcceptedCautions: p.cautions, Options: p.options, AfterSignal: p.afterSignal,
 		}
 		if p.to > 0 {
 			in.Basis = &pb.ProposeVersionRequest_Stored{Stored: p.stored(s, l.base)}
@@ -177,6 +180,16 @@ func approve(c *pb.Chart, number int32, rejudge string) step {
 			in.AcceptedPatterns = append(in.AcceptedPatterns, p.Text)
 		}
 		_, err = l.limits.ApproveVersion(ctx, in)
+		return err
+	}}
+}
+
+// reject has the approver end a proposal.
+func reject(c *pb.Chart, number int32, reason string) step {
+	return step{do: func(ctx context.Context, l *loader) error {
+		_, err := l.limits.RejectVersion(as(ctx, l.tokens.Approver), &pb.RejectVersionRequest{
+			Chart: c.Name, Version: number, RequestId: fmt.Sprintf("demo-reject-%s-%d", c.Name, number), Reason: reason,
+		})
 		return err
 	}}
 }

@@ -207,4 +207,6 @@ func TestStories(t *testing.T) {
 			t.Errorf("got %v, want it refused", err)
 		}
 	})
+	testStoriesOfKinds(t, s)
+	testRevisions(t, s)
 }

@@ -52,6 +52,8 @@ func (l *loader) countChart(ctx context.Context, name string, sum *Summary) erro
 			sum.VersionsApproved++
 		case pb.VersionState_VERSION_STATE_PROPOSED:
 			sum.VersionsProposed++
+		case pb.VersionState_VERSION_STATE_REJECTED:
+			sum.VersionsRejected++
 		}
 	}
 	closed, err := l.signals.QuerySignals(ctx, &pb.QuerySignalsRequest{
