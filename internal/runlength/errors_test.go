@@ -44,6 +44,7 @@ func TestRefusals(t *testing.T) {
 		"quantile 1":             {runlength.Request{Location: limit, Quantiles: []float64{1}}, runlength.BadField, []string{"quantiles[0]"}},
 		"two traces, no kind":    {runlength.Request{Location: limit, Dispersion: limit}, runlength.BadField, []string{"dispersion"}},
 		"subgroup of one":        {runlength.Request{Kind: chart.XbarR, SubgroupSize: 1, Location: limit}, runlength.BadField, []string{"subgroup_size"}},
+		"a chart of counts":      {runlength.Request{Kind: chart.P, SubgroupSize: 1, Location: limit}, runlength.BadField, []string{"kind"}},
 		"t without a variance":   {runlength.Request{Location: limit, Data: runlength.Data{Shape: runlength.StudentShape, Parameter: 2}}, runlength.BadField, []string{"degrees_of_freedom", "2"}},
 		"correlation 1":          {runlength.Request{Location: limit, Data: runlength.Data{Correlation: 1}}, runlength.BadField, []string{"correlation"}},
 		"negative rounding step": {runlength.Request{Location: limit, Data: runlength.Data{Step: -0.1}}, runlength.BadField, []string{"rounding_step"}},

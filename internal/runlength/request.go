@@ -174,6 +174,8 @@ func (r Request) normalise() (Request, error) {
 		if len(r.Dispersion.Rules) > 0 {
 			return r, bad("dispersion", "statistics as given make one trace; name a chart kind for a second")
 		}
+	} else if r.Kind != chart.Individuals && r.Kind != chart.XbarR && r.Kind != chart.XbarS {
+		return r, bad("kind", "%s: run lengths of a whole chart are those of individuals, xbar_r and xbar_s; leave the kind out for one trace", r.Kind)
 	} else if err := r.Kind.CheckSize(r.SubgroupSize); err != nil {
 		return r, bad("subgroup_size", "%v", err)
 	}
