@@ -118,7 +118,10 @@ func countSentences(kind chart.Kind, m *chart.Model) []string {
 }
 
 func duplicateSentences(kind chart.Kind, size int, m *chart.Model) []string {
-	out := []string{fmt.Sprintf("A set of fewer than %d readings has lines of its own, which follow from its number of readings.", size)}
+	var out []string
+	if size > 2 {
+		out = append(out, fmt.Sprintf("A set of fewer than %d readings has lines of its own, which follow from its number of readings.", size))
+	}
 	s := m.Spread
 	switch {
 	case s == nil:
