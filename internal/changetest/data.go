@@ -44,7 +44,7 @@ func gather(req *Request) (*fresh, error) {
 		Kind: req.InForce.estimating(), SubgroupSize: req.InForce.SubgroupSize, Groups: groups, Centre: &zero, Sigma: &one,
 	})
 	if err != nil {
-		return nil, ours(err)
+		return nil, err
 	}
 	d.estimates = res.Estimates
 	for i := range d.estimates {

@@ -126,7 +126,7 @@ func (f *InForce) check() error {
 		return refuse("inForce.kind", f.Kind, "limits are compared for individuals, xbar_r, xbar_s and run_means")
 	}
 	if err := f.Kind.CheckSize(f.SubgroupSize); err != nil {
-		return &Error{"inForce.subgroupSize", "", err.Error()}
+		return &Error{Field: "inForce.subgroupSize", Problem: err.Error()}
 	}
 	if f.Estimator == limits.DefaultEstimator {
 		f.Estimator = known[0]
