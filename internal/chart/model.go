@@ -4,6 +4,8 @@ import (
 	"fmt"
 	"math"
 	"strings"
+
+	"limitary/internal/decimal"
 )
 
 // Model is what the scale of a point follows from besides the process sigma. Its JSON form is part of a version's
@@ -151,6 +153,18 @@ type Level struct {
 	// Reference and Sigma, that of a single reading, are in the chart's unit.
 	Reference float64 `json:"reference"`
 	Sigma     float64 `json:"sigma"`
+}
+
+// standardisedPlaces keeps what a division adds to (1.3 - 1)/0.1 from putting the reading beyond a line at 3.
+const standardisedPlaces = 12
+
+// Standardise gives a reading on the standardised scale, to twelve decimals where float64 carries as many.
+func (l Level) Standardise(x float64) float64 {
+	z := (x - l.Reference) / l.Sigma
+	if math.Abs(z) < 1000 {
+		return decimal.Round(z, standardisedPlaces)
+	}
+	return z
 }
 
 // LevelOf finds the level of a material.

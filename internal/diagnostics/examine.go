@@ -20,6 +20,10 @@ func Examine(req limits.Request, res limits.Result, about Times) Report {
 		if len(m.groups) > 0 {
 			m.examineReadings(&report, &req, &res)
 		}
+	case chart.DuplicateRange, chart.RelativeRange:
+		if len(m.groups) > 0 {
+			m.examineDuplicates(&report, &res)
+		}
 	case chart.P, chart.NP, chart.C, chart.U:
 		m.examineCounts(&report)
 	default:
@@ -89,6 +93,11 @@ func (m *material) addDoubled(report *Report) {
 		report.add(doubledPosts(IndividualValues, keysOf(m.readings), m.joined()))
 		return
 	}
+	report.add(doubledPosts(Subgroups, m.groupKeys(), m.joined()))
+}
+
+// groupKeys gives each group a key; groups equal reading by reading have equal ones.
+func (m *material) groupKeys() []int {
 	numbers, keys := map[string]int{}, make([]int, len(m.groups))
 	for i, g := range m.groups {
 		var text []byte
@@ -103,7 +112,7 @@ func (m *material) addDoubled(report *Report) {
 		}
 		keys[i] = numbers[string(text)]
 	}
-	report.add(doubledPosts(Subgroups, keys, m.joined()))
+	return keys
 }
 
 func (m *material) addSetup(report *Report, req *limits.Request, res *limits.Result) {

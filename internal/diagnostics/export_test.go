@@ -42,3 +42,32 @@ func GridOf(readings []float64) (float64, []int64) {
 
 // HistogramOf draws values on their own grid.
 func HistogramOf(values []float64) Histogram { return histogramOf(values, gridOf(values)) }
+
+// What the tests of duplicates look at.
+var (
+	ZeroShare    = zeroShare
+	ZeroIntegral = zeroIntegral
+	CutGamma     = cutGamma
+	Scatter      = scatter
+	OnceIn       = onceIn
+)
+
+// LargestBelow gives the probability for sets with so many degrees of freedom each.
+func LargestBelow(bound float64, freedoms []int) float64 {
+	sets := make([]set, len(freedoms))
+	for i, f := range freedoms {
+		sets[i].freedom = f
+	}
+	return largestBelow(bound, float64(len(sets)), sets)
+}
+
+// RankCorrelation gives r and its variance for pairs with the given means and scatter, by stratum.
+func RankCorrelation(means, scatters [][]float64) (r, variance float64) {
+	d := &duplicates{}
+	for k := range means {
+		for i, mean := range means[k] {
+			d.sets = append(d.sets, set{mean: mean, stratum: k, freedom: 1, squares: scatters[k][i] * scatters[k][i]})
+		}
+	}
+	return d.rankCorrelation()
+}

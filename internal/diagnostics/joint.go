@@ -20,6 +20,10 @@ const (
 	// JointRateCounts: 0.014 to 0.016 of 10,000 bases each of 25 to 200 samples with 5 to 15 expected nonconforming
 	// items; three tests, whose bound is 0.030.
 	JointRateCounts = 0.016
+	// JointRateDuplicates: 0.029, 0.026 and 0.034 of 10,000 bases each of 20, 50 and 200 pairs with one sigma, 0.031 of 50
+	// sets of three, 0.031 and 0.037 of 50 and 200 pairs with a relative sigma, 0.020 to 0.030 with a fitted function; six
+	// tests, whose bound is 0.059. Zero ranges, stretches and equal neighbours hardly occur in data as fine.
+	JointRateDuplicates = 0.037
 )
 
 // rates states what clean data would have given.
@@ -37,6 +41,8 @@ func (r *Report) rates(kind chart.Kind) {
 	switch {
 	case kind.Counts():
 		r.JointRate = JointRateCounts
+	case kind.Duplicates():
+		r.JointRate = JointRateDuplicates
 	case kind == chart.Individuals:
 		r.JointRate = JointRateIndividuals
 	default:

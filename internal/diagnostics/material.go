@@ -88,7 +88,7 @@ func judgedValue(model *chart.Model, name string, x float64) (float64, bool) {
 		if !ok || !(level.Sigma > 0) {
 			return 0, false
 		}
-		z := (x - level.Reference) / level.Sigma
+		z := level.Standardise(x)
 		return z, math.Abs(z) <= limits.MagnitudeMax
 	}
 	return model.Transform.Apply(x)

@@ -27,7 +27,8 @@ type Picture struct {
 	Subject string
 	// Histogram is of the readings or of the means as they are.
 	Histogram Histogram
-	// NormalPlot has what the tests looked at, by size; nil where all are equal.
+	// NormalPlot has what the tests looked at, by size; nil where all are equal. For StandardisedRanges it is a half-normal
+	// plot.
 	NormalPlot []NormalPoint
 }
 
@@ -43,7 +44,8 @@ type Histogram struct {
 	Rule string
 }
 
-// NormalPoint is one of n ordered values at the normal quantile of (i - 3/8)/(n + 1/4) (Blom 1958, from memory).
+// NormalPoint is one of n ordered values at the normal quantile of (i - 3/8)/(n + 1/4) (Blom 1958, from memory); in a
+// half-normal plot, at the quantile that the size of a standard normal value stays below with that probability.
 type NormalPoint struct {
 	Quantile, Value float64
 }
@@ -118,25 +120,30 @@ func (s *sample) normalPlot(values []float64) []NormalPoint {
 		ordered = append(ordered, s.mean+s.sorted[i]*s.sd)
 	}
 	var points []NormalPoint
-	take := func(i int) {
-		p := (float64(i) + 1 - 3./8) / (float64(s.n) + 1./4)
-		points = append(points, NormalPoint{mathext.NormalQuantile(p), ordered[i]})
-	}
-	if s.n <= NormalPointsMax {
-		for i := range s.n {
-			take(i)
-		}
-		return points
-	}
-	for i := range tailPoints {
-		take(i)
-	}
-	middle, kept := s.n-2*tailPoints, NormalPointsMax-2*tailPoints
-	for j := range kept {
-		take(tailPoints + (2*j+1)*middle/(2*kept))
-	}
-	for i := s.n - tailPoints; i < s.n; i++ {
-		take(i)
+	for _, i := range plottedOf(s.n) {
+		points = append(points, NormalPoint{mathext.NormalQuantile(blom(i, s.n)), ordered[i]})
 	}
 	return points
+}
+
+// blom is the plotting position of the ordered value i, from 0, of n.
+func blom(i, n int) float64 { return (float64(i) + 1 - 3./8) / (float64(n) + 1./4) }
+
+// plottedOf gives the indices of those of n ordered values that are plotted.
+func plottedOf(n int) []int {
+	out := make([]int, 0, min(n, NormalPointsMax))
+	ends, middle, kept := tailPoints, n-2*tailPoints, NormalPointsMax-2*tailPoints
+	if n <= NormalPointsMax {
+		ends, middle, kept = n, 0, 0
+	}
+	for i := range ends {
+		out = append(out, i)
+	}
+	for j := range kept {
+		out = append(out, ends+(2*j+1)*middle/(2*kept))
+	}
+	for i := max(ends, n-tailPoints); i < n; i++ {
+		out = append(out, i)
+	}
+	return out
 }

@@ -37,10 +37,14 @@ func repeatedStretch(subject string, keys []int, floor float64) Test {
 		return t.notMade(Void, "So many values are equal that any stretch may come again by chance.")
 	}
 	length, first, second := longestRepeat(keys)
+	noun := "value"
+	if subject == SetsOfDuplicates {
+		noun = "set"
+	}
 	t = t.withCritical(float64(length), float64(critical), length >= critical)
-	t.text = fmt.Sprintf("%d values in a row, from value %d on, come again from value %d on; by chance even %d would in fewer than one basis of a hundred.", length, first+1, second+1, critical)
+	t.text = fmt.Sprintf("%d %ss in a row, from %s %d on, come again from %s %d on; by chance even %d would in fewer than one basis of a hundred.", length, noun, noun, first+1, noun, second+1, critical)
 	t.advice = "Look for a block of results posted twice, or copied where they should have been measured. Void the copies; they make the basis look larger and steadier than it is."
-	t.Reason = fmt.Sprintf("Two values are equal with probability %.2g.", equal)
+	t.Reason = fmt.Sprintf("Two %ss are equal with probability %.2g.", noun, equal)
 	return t
 }
 

@@ -33,6 +33,11 @@ const (
 	ReadingsInOrder = "readings in order"
 	// Counts are the counts of nonconforming items or nonconformities.
 	Counts = "counts"
+	// SetsOfDuplicates are compared with each other as a whole.
+	SetsOfDuplicates = "sets of duplicates"
+	// StandardisedRanges are the ranges of sets of duplicates in standard deviations of a difference, √2 times the sigma
+	// that the limits give at the mean; those of larger sets are turned into what is as rarely exceeded.
+	StandardisedRanges = "standardised ranges"
 	// PlottedPoints are the points of the location trace.
 	PlottedPoints = "plotted points"
 )
@@ -94,7 +99,8 @@ type Report struct {
 	Findings []limits.Finding
 	// Setup has a row for each rule of nelson-1984; nil where the location trace has no centre or sigma.
 	Setup []SetupRow
-	// Values and Means are for drawing; nil where there is nothing to draw. Means is for charts of subgroups only.
+	// Values and Means are for drawing; nil where there is nothing to draw. Values are StandardisedRanges on charts of
+	// duplicates. Means is for charts of subgroups only.
 	Values, Means *Picture
 	// JointRate is the probability that clean data give at least one finding of a test at Level, as simulated for the
 	// kind with all its tests, see JointRateIndividuals; 0 where none was made. JointBound is 1 - 0.99^k for the k tests made at Level, what it would be if they were

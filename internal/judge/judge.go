@@ -101,6 +101,11 @@ func (j *Judge) compile(role chart.Role, t *Trace) (*rules.Plan, *Error) {
 	if t.Centre != nil && !finite(*t.Centre) {
 		return nil, &Error{"centre", fmt.Sprintf("%v: want a finite number", *t.Centre)}
 	}
+	if j.limits.Kind.Counts() {
+		if err := j.checkCountTrace(t); err != nil {
+			return nil, err
+		}
+	}
 	if t.Sigma != nil && (!finite(*t.Sigma) || *t.Sigma <= 0) {
 		return nil, &Error{"sigma", fmt.Sprintf("%v: want a finite number above 0", *t.Sigma)}
 	}

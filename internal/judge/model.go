@@ -3,6 +3,7 @@ package judge
 import (
 	"fmt"
 	"math"
+	"strconv"
 
 	"limitary/internal/chart"
 	"limitary/internal/decimal"
@@ -15,6 +16,29 @@ func (l *Limits) checkModel() error {
 	if err := limits.CheckModel(l.Kind, &l.Model); err != nil {
 		e := err.(*limits.Error)
 		return &Error{"model." + e.Field, e.Value + ": " + e.Problem}
+	}
+	want := map[chart.Kind]float64{chart.NP: float64(l.SubgroupSize), chart.C: 1}[l.Kind]
+	if want != 0 && l.Model.Inspected != want {
+		return &Error{"model.inspected", fmt.Sprintf("%v: all samples of this chart have the size %v", l.Model.Inspected, want)}
+	}
+	return nil
+}
+
+// sigmaSlack is how far a given sigma of counts may lie from the one that follows from the centre: people round it.
+const sigmaSlack = 0.01
+
+// checkCountTrace refuses a trace of counts that no sample has lines by: its lines follow from the centre.
+func (j *Judge) checkCountTrace(t *Trace) *Error {
+	kind, m := j.limits.Kind, &j.limits.Model
+	if t.Centre == nil {
+		return &Error{"centre", fmt.Sprintf("is not set; the lines of a chart of kind %s follow from it", kind)}
+	}
+	sigma, ok := limits.CountSigma(kind, *t.Centre, m.Inspected, m)
+	if !ok || *t.Centre <= 0 {
+		return &Error{"centre", fmt.Sprintf("%v: no chart of kind %s with samples of %v has lines about it", *t.Centre, kind, m.Inspected)}
+	}
+	if t.Sigma != nil && !(math.Abs(*t.Sigma-sigma) <= sigmaSlack*sigma) {
+		return &Error{"sigma", fmt.Sprintf("%v: follows from the centre and is %v for samples of %v; leave it so", *t.Sigma, sigma, m.Inspected)}
 	}
 	return nil
 }
@@ -56,7 +80,7 @@ func (j *Judge) onScale(st *State, pt Point) (Point, bool) {
 			return pt, false
 		}
 		for _, x := range pt.Readings {
-			st.readings = append(st.readings, (x-level.Reference)/level.Sigma)
+			st.readings = append(st.readings, level.Standardise(x))
 		}
 	case m.Transform.Kind != chart.Identity:
 		outside := false
@@ -92,12 +116,23 @@ func (j *Judge) Original(role chart.Role, material string, y float64) (x float64
 		if x = y * level.Sigma; role == chart.Location {
 			x += level.Reference
 		}
-		return x, true, found && finite(x)
+		// A moving range may reach from one material to another, and is then in no unit of either.
+		moving := role == chart.Dispersion && j.limits.Kind == chart.Individuals
+		return significant(x), true, found && finite(x) && !moving
 	case m.Transform.Kind != chart.Identity && role == chart.Location:
 		x, ok = m.Transform.Invert(y)
-		return x, true, ok
+		return significant(x), true, ok && y > m.Transform.Floor()
 	}
 	return y, false, true
+}
+
+// significant leaves off what computing in float64 adds after the twelfth digit.
+func significant(x float64) float64 {
+	y, err := strconv.ParseFloat(strconv.FormatFloat(x, 'g', 12, 64), 64)
+	if err != nil {
+		return x
+	}
+	return y
 }
 
 // CheckPoint refuses a point that the chart cannot have.

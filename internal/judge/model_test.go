@@ -71,10 +71,10 @@ func kindsWithModels() map[string]struct {
 		point  func(r *rand.Rand) judge.Point
 	}{
 		"p exact":    {one(0.04, 0.0196, exact, chart.P, 1), items(4, 50, 100, 200)},
-		"p normal":   {one(0.04, 0.0196, chart.Model{CountMethod: chart.Normal, Inspected: 100, Inflation: 1.4}, chart.P, 1), items(4, 50, 100, 200)},
+		"p normal":   {one(0.04, 1.4*0.0196, chart.Model{CountMethod: chart.Normal, Inspected: 100, Inflation: 1.4}, chart.P, 1), items(4, 50, 100, 200)},
 		"np":         {one(4, 1.96, exact, chart.NP, 100), items(4, 100)},
 		"c":          {one(4, 2, chart.Model{CountMethod: chart.Exact, Inspected: 1}, chart.C, 1), count(4, 1)},
-		"u":          {one(2, 1, chart.Model{CountMethod: chart.Normal, Inspected: 2, BetweenSigma: 0.4}, chart.U, 1), count(4, 1, 2, 2.5)},
+		"u":          {one(2, math.Sqrt(1.16), chart.Model{CountMethod: chart.Normal, Inspected: 2, BetweenSigma: 0.4}, chart.U, 1), count(4, 1, 2, 2.5)},
 		"run means":  {runs, readings(3, normal(10, 0.5))},
 		"log":        {logs, readings(1, normal(2.5, 2))},
 		"root":       {roots, readings(2, normal(1.5, 1.5))},

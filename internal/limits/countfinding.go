@@ -18,6 +18,7 @@ const (
 	CodeSizesTooUnequalForFactor = "SIZES_TOO_UNEQUAL_FOR_FACTOR"
 	CodeCountsTooLowForNormal    = "COUNTS_TOO_LOW_FOR_NORMAL"
 	CodeUpperBoundOfMean         = "UPPER_BOUND_OF_MEAN"
+	CodeNoActionLine             = "NO_ACTION_LINE"
 )
 
 const (
@@ -32,7 +33,7 @@ func (w *countWork) findings() []Finding {
 	var found []Finding
 	for _, look := range []func() (Finding, bool){
 		w.provisional, w.upperBoundOfMean, w.targetCentreDiffers, w.tooLowForNormal,
-		w.overdispersed, w.underdispersed, w.inflationBelowOne, w.sizesTooUnequal,
+		w.noActionLine, w.overdispersed, w.underdispersed, w.inflationBelowOne, w.sizesTooUnequal,
 		func() (Finding, bool) { return w.criterionInside("lower", w.res.Location.LowerAction, -1) },
 		func() (Finding, bool) { return w.criterionInside("upper", w.res.Location.UpperAction, 1) },
 	} {
@@ -50,6 +51,17 @@ func (w *countWork) provisional() (Finding, bool) {
 		Advice:    "Use them as provisional and compute them again when the advised number is reached.",
 		CouldMiss: "Enough samples with few counts in all still know their mean poorly; look at the interval of the centre.",
 	}, w.res.Provisional
+}
+
+// noActionLine tells of a chart on which no count can lie beyond an action line, whatever happens.
+func (w *countWork) noActionLine() (Finding, bool) {
+	t := &w.res.Location
+	return Finding{
+		Code:      CodeNoActionLine,
+		Text:      "There is no action line: no count of samples so small can be that unlikely, or the side that has a line is not watched.",
+		Advice:    "Inspect more in each sample, or count over longer times: such a chart can never signal.",
+		CouldMiss: "A chart that has a line may still need a very large change to pass it; run lengths tell how large.",
+	}, t.LowerAction.Basis == chart.Absent && t.UpperAction.Basis == chart.Absent
 }
 
 // upperBoundOfMean sets the bound against the one that the samples give: with a mean that large, zero counts throughout

@@ -104,7 +104,7 @@ func (w *countWork) published(z float64) chart.Line {
 	if m.CountMethod == chart.Normal {
 		return chart.Line{Value: value, Basis: chart.SigmaMultiple}
 	}
-	tail := chart.TailOf(z)
+	tail := 0.0 // nothing lies beyond it at the published size
 	if exists {
 		tail = w.beyond(m.Inspected, value, z)
 	}

@@ -16,12 +16,13 @@ func ExactCountLine(kind chart.Kind, centre, inspected, z float64) float64 {
 		sigma, _ := CountSigma(kind, centre, inspected, &chart.Model{})
 		return NormalCountLine(kind, centre, sigma, inspected, z)
 	}
+	tail := max(chart.TailOf(z), counts.TailMin) // about seven sigmas; a line farther out stays there
 	var line float64
 	var ok bool
 	if z > 0 {
-		line, _, ok = counts.Upper(law, chart.TailOf(z))
+		line, _, ok = counts.Upper(law, tail)
 	} else {
-		line, _, ok = counts.Lower(law, chart.TailOf(z))
+		line, _, ok = counts.Lower(law, tail)
 	}
 	switch {
 	case !ok:

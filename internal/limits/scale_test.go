@@ -9,6 +9,7 @@ import (
 	"testing"
 
 	"limitary/internal/chart"
+	"limitary/internal/decimal"
 	"limitary/internal/limits"
 )
 
@@ -83,7 +84,7 @@ func TestLevelsEqualStandardisingFirst(t *testing.T) {
 				l := levels[j%3]
 				first.Groups[j].Readings = nil
 				for _, x := range g.Readings {
-					first.Groups[j].Readings = append(first.Groups[j].Readings, (x-l.Reference)/l.Sigma)
+					first.Groups[j].Readings = append(first.Groups[j].Readings, decimal.Round((x-l.Reference)/l.Sigma, 12))
 				}
 			}
 			req.Levels = levels

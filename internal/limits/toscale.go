@@ -61,7 +61,7 @@ func (r *Request) readingsOnScale(i int, model *chart.Model) ([]float64, error) 
 			return nil, refuse(field, x, "with the offset %g it lies outside the domain of the %s scale; use a larger offset or exclude the group", r.Transform.Offset, r.Transform.Kind)
 		}
 		if len(r.Levels) > 0 {
-			y = (x - level.Reference) / level.Sigma
+			y = level.Standardise(x)
 		}
 		if !finiteAndBounded(y) {
 			return nil, refuse(field, x, "is %g on the judged scale, larger in size than the limit of %g", y, MagnitudeMax)

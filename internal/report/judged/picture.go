@@ -107,7 +107,7 @@ func (p *Picture) unproven(row int) (at float64, missing bool) {
 	switch m := &l.Model; {
 	case len(m.Levels) > 0:
 		level, ok := m.LevelOf(p.table.Material(row))
-		return (at - level.Reference) / level.Sigma, !ok
+		return level.Standardise(at), !ok
 	case m.Transform.Kind != chart.Identity:
 		y, ok := m.Transform.Apply(at)
 		return y, !ok
