@@ -15,6 +15,7 @@ import (
 
 	"limitary/internal/chart"
 	"limitary/internal/decimal"
+	"limitary/internal/limits"
 	"limitary/internal/rules"
 )
 
@@ -138,7 +139,12 @@ func (j *Judge) plan(role chart.Role, t *Trace, specs []rules.Spec) (*rules.Plan
 	if j.limits.Kind.Duplicates() {
 		specs = rules.OneSide(specs, rules.UpperOnly)
 	}
-	return rules.CompileLines(t.Trace, j.limits.Places, specs, j.limits.Model.Inspected, j.lineFunc(role))
+	trace := t.Trace
+	if j.limits.Kind.Counts() && trace.Sigma == nil { // it follows from the centre
+		sigma, _ := limits.CountSigma(j.limits.Kind, *trace.Centre, j.limits.Model.Inspected, &j.limits.Model)
+		trace.Sigma = &sigma
+	}
+	return rules.CompileLines(trace, j.limits.Places, specs, j.limits.Model.Inspected, j.lineFunc(role))
 }
 
 // Alone compiles one rule for a trace that is judged, to be asked about points apart from the rest.

@@ -116,6 +116,36 @@ func (o *DuplicateOptions) any() bool {
 	return len(o.Bands) > 0 || len(o.Sigmas) > 0 || o.Function || o.S0 != nil || o.B != nil || o.AbsoluteBelow != 0 || o.AbsoluteSigma != nil
 }
 
+// first names the first option that is given.
+func (o *DuplicateOptions) first() string {
+	switch {
+	case len(o.Bands) > 0:
+		return "duplicates.bands"
+	case len(o.Sigmas) > 0:
+		return "duplicates.sigmas"
+	case o.Function:
+		return "duplicates.function"
+	case o.S0 != nil:
+		return "duplicates.s0"
+	case o.B != nil:
+		return "duplicates.b"
+	case o.AbsoluteBelow != 0:
+		return "duplicates.absoluteBelow"
+	}
+	return "duplicates.absoluteSigma"
+}
+
+// first names the first option that is given.
+func (o *CountOptions) first() string {
+	switch {
+	case o.Method != chart.CountMethodDefault:
+		return "counts.method"
+	case o.Extra != NoExtra:
+		return "counts.extra"
+	}
+	return "counts.meanUpperBound"
+}
+
 // function reports whether sigma is a function of the mean, estimated or given.
 func (o *DuplicateOptions) function() bool { return o.Function || o.S0 != nil }
 

@@ -182,10 +182,10 @@ func (r *Request) checkFigures() error {
 // checkOptions refuses options of other kinds.
 func (r *Request) checkOptions() error {
 	if !r.Kind.Counts() && r.Counts != (CountOptions{}) {
-		return refuse("counts", "given", "a chart of kind %s takes readings", r.Kind)
+		return refuse(r.Counts.first(), "given", "a chart of kind %s takes readings", r.Kind)
 	}
 	if !r.Kind.Duplicates() && r.Duplicates.any() {
-		return refuse("duplicates", "given", "a chart of kind %s has none", r.Kind)
+		return refuse(r.Duplicates.first(), "given", "a chart of kind %s has none", r.Kind)
 	}
 	return nil
 }
