@@ -122,12 +122,12 @@ func limitsFault(err error, src *source, rowOf []int) error {
 	}
 	var group int
 	if n, _ := fmt.Sscanf(e.Field, "groups[%d]", &group); n == 1 && group < len(rowOf) {
-		return fmt.Errorf("%s: line %d: %s: %s", src.name, src.table.Line(rowOf[group]), e.Value, e.Problem)
+		return fmt.Errorf("%s: line %d: %s: %s", src.name, src.table.Line(rowOf[group]), e.Value, optionFlags.Replace(e.Problem))
 	}
 	if e.Field == "groups" {
-		return fmt.Errorf("%s: %s: %s", src.name, e.Value, e.Problem)
+		return fmt.Errorf("%s: %s: %s", src.name, e.Value, optionFlags.Replace(e.Problem))
 	}
-	text := e.Problem
+	text := optionFlags.Replace(e.Problem)
 	if e.Value != "" {
 		text = e.Value + ": " + text
 	}
@@ -146,9 +146,21 @@ func flagName(field string) string {
 			}
 		}
 	}
-	names := map[string]string{"subgroupSize": "--size", "publishedDecimals": "--decimals"}
+	names := map[string]string{"subgroupSize": "--size", "publishedDecimals": "--decimals", "transform": "--scale", "transform.offset": "--offset", "levels": "--level"}
 	if n, ok := names[field]; ok {
+		return n
+	}
+	if n := optionFlags.Replace(field); n != field {
 		return n
 	}
 	return "--" + field
 }
+
+// optionFlags turns the names of what kinds can be asked for into flags, in fields and in sentences.
+var optionFlags = strings.NewReplacer(
+	"counts.method", "--count-method", "counts.extra", "--extra", "counts.meanUpperBound", "--mean-upper-bound",
+	"duplicates.sigmas", "--band-sigma", "duplicates.bands", "--bands", "duplicates.function", "--spread-function",
+	"duplicates.absoluteSigma", "--absolute-sigma", "duplicates.absolute_sigma", "--absolute-sigma",
+	"duplicates.absoluteBelow", "--absolute-below", "duplicates.absolute_below", "--absolute-below",
+	"duplicates.s0", "--spread-at-zero", "duplicates.b", "--spread-growth", "betweenSigma", "--between-sigma",
+)
