@@ -311,7 +311,14 @@ type ByChart struct {
 	// A version number; 0 takes the version in force.
 	Version int32 `protobuf:"varint,3,opt,name=version,proto3" json:"version,omitempty"`
 	// The moment whose version in force is taken; absent, now.
-	At            *timestamppb.Timestamp `protobuf:"bytes,4,opt,name=at,proto3" json:"at,omitempty"`
+	At *timestamppb.Timestamp `protobuf:"bytes,4,opt,name=at,proto3" json:"at,omitempty"`
+	// The values are judged as the next points of the stored track, as if they had been measured at that moment, one after
+	// the other, and posted now: after every result measured at or before it, from the state the judge has there. Segments,
+	// marks, versions, EWMA, CUSUM and head starts are what posting would find; a version that takes effect between the
+	// latest result and the moment begins its segment. Nothing is stored. Not with a version number. Where lots are tracks,
+	// the lot is needed and must have a track. Indices of hits are those of the values sent; where a window, or what counts
+	// in it, begins with a stored point, window_first or first_counting is -1.
+	ContinueTrack bool `protobuf:"varint,5,opt,name=continue_track,json=continueTrack,proto3" json:"continue_track,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -372,6 +379,13 @@ func (x *ByChart) GetAt() *timestamppb.Timestamp {
 		return x.At
 	}
 	return nil
+}
+
+func (x *ByChart) GetContinueTrack() bool {
+	if x != nil {
+		return x.ContinueTrack
+	}
+	return false
 }
 
 // One sequence of values and the limits to judge it by.
@@ -627,7 +641,12 @@ type EvaluationResult struct {
 	Standing     Standing `protobuf:"varint,3,opt,name=standing,proto3,enum=limitary.v1.Standing" json:"standing,omitempty"`
 	PointsJudged int32    `protobuf:"varint,4,opt,name=points_judged,json=pointsJudged,proto3" json:"points_judged,omitempty"`
 	// The version that judged, where limits were taken from a chart; 0 for inline limits.
-	Version       int32 `protobuf:"varint,5,opt,name=version,proto3" json:"version,omitempty"`
+	Version int32 `protobuf:"varint,5,opt,name=version,proto3" json:"version,omitempty"`
+	// Where the values continue a stored track: the track's state and number of open signals as they are read, and the
+	// moment of the latest result that the values come after, absent where there is none.
+	TrackState    TrackState             `protobuf:"varint,6,opt,name=track_state,json=trackState,proto3,enum=limitary.v1.TrackState" json:"track_state,omitempty"`
+	ContinuedFrom *timestamppb.Timestamp `protobuf:"bytes,7,opt,name=continued_from,json=continuedFrom,proto3" json:"continued_from,omitempty"`
+	OpenSignals   int32                  `protobuf:"varint,8,opt,name=open_signals,json=openSignals,proto3" json:"open_signals,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -693,6 +712,27 @@ func (x *EvaluationResult) GetPointsJudged() int32 {
 func (x *EvaluationResult) GetVersion() int32 {
 	if x != nil {
 		return x.Version
+	}
+	return 0
+}
+
+func (x *EvaluationResult) GetTrackState() TrackState {
+	if x != nil {
+		return x.TrackState
+	}
+	return TrackState_TRACK_STATE_UNSPECIFIED
+}
+
+func (x *EvaluationResult) GetContinuedFrom() *timestamppb.Timestamp {
+	if x != nil {
+		return x.ContinuedFrom
+	}
+	return nil
+}
+
+func (x *EvaluationResult) GetOpenSignals() int32 {
+	if x != nil {
+		return x.OpenSignals
 	}
 	return 0
 }
@@ -898,7 +938,7 @@ var File_limitary_v1_evaluation_proto protoreflect.FileDescriptor
 
 const file_limitary_v1_evaluation_proto_rawDesc = "" +
 	"\n" +
-	"\x1climitary/v1/evaluation.proto\x12\vlimitary.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x18limitary/v1/limits.proto\x1a\x17limitary/v1/rules.proto\"\x80\x03\n" +
+	"\x1climitary/v1/evaluation.proto\x12\vlimitary.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x17limitary/v1/chart.proto\x1a\x18limitary/v1/limits.proto\x1a\x17limitary/v1/rules.proto\"\x80\x03\n" +
 	"\fInlineLimits\x12*\n" +
 	"\x04kind\x18\x01 \x01(\x0e2\x16.limitary.v1.ChartKindR\x04kind\x12#\n" +
 	"\rsubgroup_size\x18\x02 \x01(\x05R\fsubgroupSize\x122\n" +
@@ -910,12 +950,13 @@ const file_limitary_v1_evaluation_proto_rawDesc = "" +
 	"\rprocess_sigma\x18\x06 \x01(\x01H\x01R\fprocessSigma\x88\x01\x01\x12(\n" +
 	"\x05model\x18\a \x01(\v2\x12.limitary.v1.ModelR\x05modelB\x15\n" +
 	"\x13_published_decimalsB\x10\n" +
-	"\x0e_process_sigma\"u\n" +
+	"\x0e_process_sigma\"\x9c\x01\n" +
 	"\aByChart\x12\x12\n" +
 	"\x04name\x18\x01 \x01(\tR\x04name\x12\x10\n" +
 	"\x03lot\x18\x02 \x01(\tR\x03lot\x12\x18\n" +
 	"\aversion\x18\x03 \x01(\x05R\aversion\x12*\n" +
-	"\x02at\x18\x04 \x01(\v2\x1a.google.protobuf.TimestampR\x02at\"\x82\x02\n" +
+	"\x02at\x18\x04 \x01(\v2\x1a.google.protobuf.TimestampR\x02at\x12%\n" +
+	"\x0econtinue_track\x18\x05 \x01(\bR\rcontinueTrack\"\x82\x02\n" +
 	"\n" +
 	"Evaluation\x12,\n" +
 	"\x05chart\x18\x01 \x01(\v2\x14.limitary.v1.ByChartH\x00R\x05chart\x123\n" +
@@ -930,13 +971,17 @@ const file_limitary_v1_evaluation_proto_rawDesc = "" +
 	"\x06detail\x18\x02 \x01(\x0e2\x13.limitary.v1.DetailR\x06detail\"n\n" +
 	"\x15EvaluateBatchResponse\x12?\n" +
 	"\vevaluations\x18\x01 \x03(\v2\x1d.limitary.v1.EvaluationResultR\vevaluations\x12\x14\n" +
-	"\x05judge\x18\x02 \x01(\x05R\x05judge\"\xe1\x01\n" +
+	"\x05judge\x18\x02 \x01(\x05R\x05judge\"\x81\x03\n" +
 	"\x10EvaluationResult\x12$\n" +
 	"\x04hits\x18\x01 \x03(\v2\x10.limitary.v1.HitR\x04hits\x125\n" +
 	"\bverdicts\x18\x02 \x03(\v2\x19.limitary.v1.PointVerdictR\bverdicts\x121\n" +
 	"\bstanding\x18\x03 \x01(\x0e2\x15.limitary.v1.StandingR\bstanding\x12#\n" +
 	"\rpoints_judged\x18\x04 \x01(\x05R\fpointsJudged\x12\x18\n" +
-	"\aversion\x18\x05 \x01(\x05R\aversion\"\x9a\x02\n" +
+	"\aversion\x18\x05 \x01(\x05R\aversion\x128\n" +
+	"\vtrack_state\x18\x06 \x01(\x0e2\x17.limitary.v1.TrackStateR\n" +
+	"trackState\x12A\n" +
+	"\x0econtinued_from\x18\a \x01(\v2\x1a.google.protobuf.TimestampR\rcontinuedFrom\x12!\n" +
+	"\fopen_signals\x18\b \x01(\x05R\vopenSignals\"\x9a\x02\n" +
 	"\fPointVerdict\x12\x14\n" +
 	"\x05point\x18\x01 \x01(\x05R\x05point\x121\n" +
 	"\bstanding\x18\x02 \x01(\x0e2\x15.limitary.v1.StandingR\bstanding\x124\n" +
@@ -1016,7 +1061,8 @@ var file_limitary_v1_evaluation_proto_goTypes = []any{
 	(*Series)(nil),                // 15: limitary.v1.Series
 	(*Points)(nil),                // 16: limitary.v1.Points
 	(*Hit)(nil),                   // 17: limitary.v1.Hit
-	(*OriginalScale)(nil),         // 18: limitary.v1.OriginalScale
+	(TrackState)(0),               // 18: limitary.v1.TrackState
+	(*OriginalScale)(nil),         // 19: limitary.v1.OriginalScale
 }
 var file_limitary_v1_evaluation_proto_depIdxs = []int32{
 	11, // 0: limitary.v1.InlineLimits.kind:type_name -> limitary.v1.ChartKind
@@ -1034,17 +1080,19 @@ var file_limitary_v1_evaluation_proto_depIdxs = []int32{
 	17, // 12: limitary.v1.EvaluationResult.hits:type_name -> limitary.v1.Hit
 	9,  // 13: limitary.v1.EvaluationResult.verdicts:type_name -> limitary.v1.PointVerdict
 	0,  // 14: limitary.v1.EvaluationResult.standing:type_name -> limitary.v1.Standing
-	0,  // 15: limitary.v1.PointVerdict.standing:type_name -> limitary.v1.Standing
-	1,  // 16: limitary.v1.PointVerdict.reason:type_name -> limitary.v1.NotJudgedReason
-	10, // 17: limitary.v1.PointVerdict.location:type_name -> limitary.v1.TraceVerdict
-	10, // 18: limitary.v1.PointVerdict.dispersion:type_name -> limitary.v1.TraceVerdict
-	17, // 19: limitary.v1.TraceVerdict.hits:type_name -> limitary.v1.Hit
-	18, // 20: limitary.v1.TraceVerdict.original:type_name -> limitary.v1.OriginalScale
-	21, // [21:21] is the sub-list for method output_type
-	21, // [21:21] is the sub-list for method input_type
-	21, // [21:21] is the sub-list for extension type_name
-	21, // [21:21] is the sub-list for extension extendee
-	0,  // [0:21] is the sub-list for field type_name
+	18, // 15: limitary.v1.EvaluationResult.track_state:type_name -> limitary.v1.TrackState
+	14, // 16: limitary.v1.EvaluationResult.continued_from:type_name -> google.protobuf.Timestamp
+	0,  // 17: limitary.v1.PointVerdict.standing:type_name -> limitary.v1.Standing
+	1,  // 18: limitary.v1.PointVerdict.reason:type_name -> limitary.v1.NotJudgedReason
+	10, // 19: limitary.v1.PointVerdict.location:type_name -> limitary.v1.TraceVerdict
+	10, // 20: limitary.v1.PointVerdict.dispersion:type_name -> limitary.v1.TraceVerdict
+	17, // 21: limitary.v1.TraceVerdict.hits:type_name -> limitary.v1.Hit
+	19, // 22: limitary.v1.TraceVerdict.original:type_name -> limitary.v1.OriginalScale
+	23, // [23:23] is the sub-list for method output_type
+	23, // [23:23] is the sub-list for method input_type
+	23, // [23:23] is the sub-list for extension type_name
+	23, // [23:23] is the sub-list for extension extendee
+	0,  // [0:23] is the sub-list for field type_name
 }
 
 func init() { file_limitary_v1_evaluation_proto_init() }
@@ -1052,6 +1100,7 @@ func file_limitary_v1_evaluation_proto_init() {
 	if File_limitary_v1_evaluation_proto != nil {
 		return
 	}
+	file_limitary_v1_chart_proto_init()
 	file_limitary_v1_limits_proto_init()
 	file_limitary_v1_rules_proto_init()
 	file_limitary_v1_evaluation_proto_msgTypes[0].OneofWrappers = []any{}

@@ -276,6 +276,59 @@ func (TransformKind) EnumDescriptor() ([]byte, []int) {
 	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{3}
 }
 
+// What a reading is where the method could not measure it.
+type ReadingBound int32
+
+const (
+	// Measured: the value is the value.
+	ReadingBound_READING_BOUND_UNSPECIFIED ReadingBound = 0
+	// Less than the value, as in "<0.05".
+	ReadingBound_READING_BOUND_BELOW ReadingBound = 1
+	// Greater than the value, as in ">100".
+	ReadingBound_READING_BOUND_ABOVE ReadingBound = 2
+)
+
+// Enum value maps for ReadingBound.
+var (
+	ReadingBound_name = map[int32]string{
+		0: "READING_BOUND_UNSPECIFIED",
+		1: "READING_BOUND_BELOW",
+		2: "READING_BOUND_ABOVE",
+	}
+	ReadingBound_value = map[string]int32{
+		"READING_BOUND_UNSPECIFIED": 0,
+		"READING_BOUND_BELOW":       1,
+		"READING_BOUND_ABOVE":       2,
+	}
+)
+
+func (x ReadingBound) Enum() *ReadingBound {
+	p := new(ReadingBound)
+	*p = x
+	return p
+}
+
+func (x ReadingBound) String() string {
+	return protoimpl.X.EnumStringOf(x.Descriptor(), protoreflect.EnumNumber(x))
+}
+
+func (ReadingBound) Descriptor() protoreflect.EnumDescriptor {
+	return file_limitary_v1_limits_proto_enumTypes[4].Descriptor()
+}
+
+func (ReadingBound) Type() protoreflect.EnumType {
+	return &file_limitary_v1_limits_proto_enumTypes[4]
+}
+
+func (x ReadingBound) Number() protoreflect.EnumNumber {
+	return protoreflect.EnumNumber(x)
+}
+
+// Deprecated: Use ReadingBound.Descriptor instead.
+func (ReadingBound) EnumDescriptor() ([]byte, []int) {
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{4}
+}
+
 // How process sigma is estimated. Unspecified takes the default of the kind.
 type Estimator int32
 
@@ -328,11 +381,11 @@ func (x Estimator) String() string {
 }
 
 func (Estimator) Descriptor() protoreflect.EnumDescriptor {
-	return file_limitary_v1_limits_proto_enumTypes[4].Descriptor()
+	return file_limitary_v1_limits_proto_enumTypes[5].Descriptor()
 }
 
 func (Estimator) Type() protoreflect.EnumType {
-	return &file_limitary_v1_limits_proto_enumTypes[4]
+	return &file_limitary_v1_limits_proto_enumTypes[5]
 }
 
 func (x Estimator) Number() protoreflect.EnumNumber {
@@ -341,7 +394,7 @@ func (x Estimator) Number() protoreflect.EnumNumber {
 
 // Deprecated: Use Estimator.Descriptor instead.
 func (Estimator) EnumDescriptor() ([]byte, []int) {
-	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{4}
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{5}
 }
 
 // Where a centre or a sigma comes from.
@@ -379,11 +432,11 @@ func (x Origin) String() string {
 }
 
 func (Origin) Descriptor() protoreflect.EnumDescriptor {
-	return file_limitary_v1_limits_proto_enumTypes[5].Descriptor()
+	return file_limitary_v1_limits_proto_enumTypes[6].Descriptor()
 }
 
 func (Origin) Type() protoreflect.EnumType {
-	return &file_limitary_v1_limits_proto_enumTypes[5]
+	return &file_limitary_v1_limits_proto_enumTypes[6]
 }
 
 func (x Origin) Number() protoreflect.EnumNumber {
@@ -392,7 +445,7 @@ func (x Origin) Number() protoreflect.EnumNumber {
 
 // Deprecated: Use Origin.Descriptor instead.
 func (Origin) EnumDescriptor() ([]byte, []int) {
-	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{5}
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{6}
 }
 
 // One side of a chart that is watched.
@@ -429,11 +482,11 @@ func (x WatchedSide) String() string {
 }
 
 func (WatchedSide) Descriptor() protoreflect.EnumDescriptor {
-	return file_limitary_v1_limits_proto_enumTypes[6].Descriptor()
+	return file_limitary_v1_limits_proto_enumTypes[7].Descriptor()
 }
 
 func (WatchedSide) Type() protoreflect.EnumType {
-	return &file_limitary_v1_limits_proto_enumTypes[6]
+	return &file_limitary_v1_limits_proto_enumTypes[7]
 }
 
 func (x WatchedSide) Number() protoreflect.EnumNumber {
@@ -442,7 +495,7 @@ func (x WatchedSide) Number() protoreflect.EnumNumber {
 
 // Deprecated: Use WatchedSide.Descriptor instead.
 func (WatchedSide) EnumDescriptor() ([]byte, []int) {
-	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{6}
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{7}
 }
 
 // How counts may vary more between samples than counting explains; both need normal lines.
@@ -481,11 +534,11 @@ func (x ExtraVariation) String() string {
 }
 
 func (ExtraVariation) Descriptor() protoreflect.EnumDescriptor {
-	return file_limitary_v1_limits_proto_enumTypes[7].Descriptor()
+	return file_limitary_v1_limits_proto_enumTypes[8].Descriptor()
 }
 
 func (ExtraVariation) Type() protoreflect.EnumType {
-	return &file_limitary_v1_limits_proto_enumTypes[7]
+	return &file_limitary_v1_limits_proto_enumTypes[8]
 }
 
 func (x ExtraVariation) Number() protoreflect.EnumNumber {
@@ -494,7 +547,7 @@ func (x ExtraVariation) Number() protoreflect.EnumNumber {
 
 // Deprecated: Use ExtraVariation.Descriptor instead.
 func (ExtraVariation) EnumDescriptor() ([]byte, []int) {
-	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{7}
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{8}
 }
 
 type ChangeDecision int32
@@ -533,11 +586,11 @@ func (x ChangeDecision) String() string {
 }
 
 func (ChangeDecision) Descriptor() protoreflect.EnumDescriptor {
-	return file_limitary_v1_limits_proto_enumTypes[8].Descriptor()
+	return file_limitary_v1_limits_proto_enumTypes[9].Descriptor()
 }
 
 func (ChangeDecision) Type() protoreflect.EnumType {
-	return &file_limitary_v1_limits_proto_enumTypes[8]
+	return &file_limitary_v1_limits_proto_enumTypes[9]
 }
 
 func (x ChangeDecision) Number() protoreflect.EnumNumber {
@@ -546,7 +599,7 @@ func (x ChangeDecision) Number() protoreflect.EnumNumber {
 
 // Deprecated: Use ChangeDecision.Descriptor instead.
 func (ChangeDecision) EnumDescriptor() ([]byte, []int) {
-	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{8}
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{9}
 }
 
 type DiagnosticOutcome int32
@@ -589,11 +642,11 @@ func (x DiagnosticOutcome) String() string {
 }
 
 func (DiagnosticOutcome) Descriptor() protoreflect.EnumDescriptor {
-	return file_limitary_v1_limits_proto_enumTypes[9].Descriptor()
+	return file_limitary_v1_limits_proto_enumTypes[10].Descriptor()
 }
 
 func (DiagnosticOutcome) Type() protoreflect.EnumType {
-	return &file_limitary_v1_limits_proto_enumTypes[9]
+	return &file_limitary_v1_limits_proto_enumTypes[10]
 }
 
 func (x DiagnosticOutcome) Number() protoreflect.EnumNumber {
@@ -602,7 +655,7 @@ func (x DiagnosticOutcome) Number() protoreflect.EnumNumber {
 
 // Deprecated: Use DiagnosticOutcome.Descriptor instead.
 func (DiagnosticOutcome) EnumDescriptor() ([]byte, []int) {
-	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{9}
+	return file_limitary_v1_limits_proto_rawDescGZIP(), []int{10}
 }
 
 // One action or warning line.
@@ -1351,8 +1404,11 @@ func (*Point_Statistic) isPoint_Value() {}
 
 // The readings of one subgroup, in the chart's unit.
 type Readings struct {
-	state         protoimpl.MessageState `protogen:"open.v1"`
-	Values        []float64              `protobuf:"fixed64,1,rep,packed,name=values,proto3" json:"values,omitempty"`
+	state  protoimpl.MessageState `protogen:"open.v1"`
+	Values []float64              `protobuf:"fixed64,1,rep,packed,name=values,proto3" json:"values,omitempty"`
+	// What each value is, as many as there are values; empty where all are measured. A bound is judged as a stored
+	// less-than or greater-than result is. No limits are computed from one.
+	Bounds        []ReadingBound `protobuf:"varint,2,rep,packed,name=bounds,proto3,enum=limitary.v1.ReadingBound" json:"bounds,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -1390,6 +1446,13 @@ func (*Readings) Descriptor() ([]byte, []int) {
 func (x *Readings) GetValues() []float64 {
 	if x != nil {
 		return x.Values
+	}
+	return nil
+}
+
+func (x *Readings) GetBounds() []ReadingBound {
+	if x != nil {
+		return x.Bounds
 	}
 	return nil
 }
@@ -1820,11 +1883,14 @@ func (x *KindOptions) GetAbsoluteSigma() float64 {
 	return 0
 }
 
-// The limits in force, to be set against new data without a stored version.
+// The limits in force, to be set against new data without a stored version. What ComputeLimits answered has all of it
+// under like names.
 type InForce struct {
-	state        protoimpl.MessageState `protogen:"open.v1"`
-	Centre       float64                `protobuf:"fixed64,1,opt,name=centre,proto3" json:"centre,omitempty"`
-	ProcessSigma float64                `protobuf:"fixed64,2,opt,name=process_sigma,json=processSigma,proto3" json:"process_sigma,omitempty"`
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// For all kinds but duplicates, which have none.
+	Centre float64 `protobuf:"fixed64,1,opt,name=centre,proto3" json:"centre,omitempty"`
+	// For all kinds but counts, whose sigma follows from centre and model.
+	ProcessSigma float64 `protobuf:"fixed64,2,opt,name=process_sigma,json=processSigma,proto3" json:"process_sigma,omitempty"`
 	// Targets have no sampling error of their own.
 	CentreGiven bool `protobuf:"varint,3,opt,name=centre_given,json=centreGiven,proto3" json:"centre_given,omitempty"`
 	SigmaGiven  bool `protobuf:"varint,4,opt,name=sigma_given,json=sigmaGiven,proto3" json:"sigma_given,omitempty"`
@@ -1841,7 +1907,15 @@ type InForce struct {
 	// How often the limits were looked at in twelve months, this time included.
 	Looks int32 `protobuf:"varint,12,opt,name=looks,proto3" json:"looks,omitempty"`
 	// The standard deviation between runs, for run_means.
-	BetweenSigma  *float64 `protobuf:"fixed64,13,opt,name=between_sigma,json=betweenSigma,proto3,oneof" json:"between_sigma,omitempty"`
+	BetweenSigma *float64 `protobuf:"fixed64,13,opt,name=between_sigma,json=betweenSigma,proto3,oneof" json:"between_sigma,omitempty"`
+	// For p, np, c and u (inspected and count_method are needed, inflation and between_sigma where there are any), and for
+	// duplicates whose sigma goes by the mean (spread). Not used for other kinds.
+	Model *Model `protobuf:"bytes,14,opt,name=model,proto3" json:"model,omitempty"`
+	// Items or inspection units behind the centre in all, for p and u; 0 stands for n times model.inspected.
+	Inspected float64 `protobuf:"fixed64,15,opt,name=inspected,proto3" json:"inspected,omitempty"`
+	// The sigmas of duplicates where the model has several, in the order of ComputeLimits; origin and degrees_of_freedom are
+	// looked at. Of a function, n and readings tell the rest.
+	Parts         []*SigmaPart `protobuf:"bytes,16,rep,name=parts,proto3" json:"parts,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -1967,6 +2041,27 @@ func (x *InForce) GetBetweenSigma() float64 {
 	return 0
 }
 
+func (x *InForce) GetModel() *Model {
+	if x != nil {
+		return x.Model
+	}
+	return nil
+}
+
+func (x *InForce) GetInspected() float64 {
+	if x != nil {
+		return x.Inspected
+	}
+	return 0
+}
+
+func (x *InForce) GetParts() []*SigmaPart {
+	if x != nil {
+		return x.Parts
+	}
+	return nil
+}
+
 // Whether limits in force should be kept, given results that are not in their basis.
 type ChangeTest struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
@@ -1976,11 +2071,13 @@ type ChangeTest struct {
 	Results    int32 `protobuf:"varint,2,opt,name=results,proto3" json:"results,omitempty"`
 	Excluded   int32 `protobuf:"varint,3,opt,name=excluded,proto3" json:"excluded,omitempty"`
 	InOldBasis int32 `protobuf:"varint,4,opt,name=in_old_basis,json=inOldBasis,proto3" json:"in_old_basis,omitempty"`
-	// Centre: the difference in sigmas of the plotted statistic in force.
+	// Centre: the difference in sigmas of the plotted statistic in force, for counts at model.inspected. Absent for
+	// duplicates.
 	Centre *ChangeFigure `protobuf:"bytes,5,opt,name=centre,proto3" json:"centre,omitempty"`
-	// Spread of single readings: the ratio to the sigma in force.
+	// Spread of single readings: the ratio to the sigma in force, for duplicates to that at the mean of each. Absent for
+	// counts, whose scatter follows from their centre.
 	Spread *ChangeFigure `protobuf:"bytes,6,opt,name=spread,proto3" json:"spread,omitempty"`
-	// Spread of subgroup means; absent for individuals.
+	// Spread of subgroup means; charts of means only.
 	Means *ChangeFigure `protobuf:"bytes,7,opt,name=means,proto3" json:"means,omitempty"`
 	// CHANGE where any figure says so, KEEP where all do.
 	Decision ChangeDecision `protobuf:"varint,8,opt,name=decision,proto3,enum=limitary.v1.ChangeDecision" json:"decision,omitempty"`
@@ -2156,7 +2253,8 @@ type ChangeFigure struct {
 	P       *float64 `protobuf:"fixed64,11,opt,name=p,proto3,oneof" json:"p,omitempty"`
 	PValid  bool     `protobuf:"varint,12,opt,name=p_valid,json=pValid,proto3" json:"p_valid,omitempty"`
 	PReason string   `protobuf:"bytes,13,opt,name=p_reason,json=pReason,proto3" json:"p_reason,omitempty"`
-	// Of the plain t or F test, which takes results for normal and independent.
+	// Of the plain t or F test, which takes results for normal and independent, or of the chi-square test of counts, which
+	// takes counting for all their variation.
 	PlainP        *float64 `protobuf:"fixed64,14,opt,name=plain_p,json=plainP,proto3,oneof" json:"plain_p,omitempty"`
 	Text          string   `protobuf:"bytes,15,opt,name=text,proto3" json:"text,omitempty"`
 	unknownFields protoimpl.UnknownFields
@@ -3939,9 +4037,10 @@ const file_limitary_v1_limits_proto_rawDesc = "" +
 	"\bmaterial\x18\a \x01(\tR\bmaterialB\a\n" +
 	"\x05valueB\t\n" +
 	"\a_centreB\b\n" +
-	"\x06_sigma\"\"\n" +
+	"\x06_sigma\"U\n" +
 	"\bReadings\x12\x16\n" +
-	"\x06values\x18\x01 \x03(\x01R\x06values\"K\n" +
+	"\x06values\x18\x01 \x03(\x01R\x06values\x121\n" +
+	"\x06bounds\x18\x02 \x03(\x0e2\x19.limitary.v1.ReadingBoundR\x06bounds\"K\n" +
 	"\x05Count\x12$\n" +
 	"\rnonconforming\x18\x01 \x01(\x01R\rnonconforming\x12\x1c\n" +
 	"\tinspected\x18\x02 \x01(\x01R\tinspected\"4\n" +
@@ -3979,7 +4078,7 @@ const file_limitary_v1_limits_proto_rawDesc = "" +
 	"\x11_mean_upper_boundB\x05\n" +
 	"\x03_s0B\x04\n" +
 	"\x02_bB\x11\n" +
-	"\x0f_absolute_sigma\"\xb0\x04\n" +
+	"\x0f_absolute_sigma\"\xa6\x05\n" +
 	"\aInForce\x12\x16\n" +
 	"\x06centre\x18\x01 \x01(\x01R\x06centre\x12#\n" +
 	"\rprocess_sigma\x18\x02 \x01(\x01R\fprocessSigma\x12!\n" +
@@ -3995,7 +4094,10 @@ const file_limitary_v1_limits_proto_rawDesc = "" +
 	" \x01(\x01H\x01R\x12relevantSigmaRatio\x88\x01\x01\x12!\n" +
 	"\fafter_signal\x18\v \x01(\bR\vafterSignal\x12\x14\n" +
 	"\x05looks\x18\f \x01(\x05R\x05looks\x12(\n" +
-	"\rbetween_sigma\x18\r \x01(\x01H\x02R\fbetweenSigma\x88\x01\x01B\x18\n" +
+	"\rbetween_sigma\x18\r \x01(\x01H\x02R\fbetweenSigma\x88\x01\x01\x12(\n" +
+	"\x05model\x18\x0e \x01(\v2\x12.limitary.v1.ModelR\x05model\x12\x1c\n" +
+	"\tinspected\x18\x0f \x01(\x01R\tinspected\x12,\n" +
+	"\x05parts\x18\x10 \x03(\v2\x16.limitary.v1.SigmaPartR\x05partsB\x18\n" +
 	"\x16_relevant_shift_sigmasB\x17\n" +
 	"\x15_relevant_sigma_ratioB\x10\n" +
 	"\x0e_between_sigma\"\xaa\x04\n" +
@@ -4250,7 +4352,11 @@ const file_limitary_v1_limits_proto_rawDesc = "" +
 	"\rTransformKind\x12\x1e\n" +
 	"\x1aTRANSFORM_KIND_UNSPECIFIED\x10\x00\x12\x16\n" +
 	"\x12TRANSFORM_KIND_LOG\x10\x01\x12\x1e\n" +
-	"\x1aTRANSFORM_KIND_SQUARE_ROOT\x10\x02*\xd1\x01\n" +
+	"\x1aTRANSFORM_KIND_SQUARE_ROOT\x10\x02*_\n" +
+	"\fReadingBound\x12\x1d\n" +
+	"\x19READING_BOUND_UNSPECIFIED\x10\x00\x12\x17\n" +
+	"\x13READING_BOUND_BELOW\x10\x01\x12\x17\n" +
+	"\x13READING_BOUND_ABOVE\x10\x02*\xd1\x01\n" +
 	"\tEstimator\x12\x19\n" +
 	"\x15ESTIMATOR_UNSPECIFIED\x10\x00\x12\x1f\n" +
 	"\x1bESTIMATOR_MEAN_MOVING_RANGE\x10\x01\x12!\n" +
@@ -4295,127 +4401,131 @@ func file_limitary_v1_limits_proto_rawDescGZIP() []byte {
 	return file_limitary_v1_limits_proto_rawDescData
 }
 
-var file_limitary_v1_limits_proto_enumTypes = make([]protoimpl.EnumInfo, 10)
+var file_limitary_v1_limits_proto_enumTypes = make([]protoimpl.EnumInfo, 11)
 var file_limitary_v1_limits_proto_msgTypes = make([]protoimpl.MessageInfo, 34)
 var file_limitary_v1_limits_proto_goTypes = []any{
 	(ChartKind)(0),                // 0: limitary.v1.ChartKind
 	(Basis)(0),                    // 1: limitary.v1.Basis
 	(CountMethod)(0),              // 2: limitary.v1.CountMethod
 	(TransformKind)(0),            // 3: limitary.v1.TransformKind
-	(Estimator)(0),                // 4: limitary.v1.Estimator
-	(Origin)(0),                   // 5: limitary.v1.Origin
-	(WatchedSide)(0),              // 6: limitary.v1.WatchedSide
-	(ExtraVariation)(0),           // 7: limitary.v1.ExtraVariation
-	(ChangeDecision)(0),           // 8: limitary.v1.ChangeDecision
-	(DiagnosticOutcome)(0),        // 9: limitary.v1.DiagnosticOutcome
-	(*Line)(nil),                  // 10: limitary.v1.Line
-	(*Model)(nil),                 // 11: limitary.v1.Model
-	(*Transform)(nil),             // 12: limitary.v1.Transform
-	(*Level)(nil),                 // 13: limitary.v1.Level
-	(*DuplicateSpread)(nil),       // 14: limitary.v1.DuplicateSpread
-	(*SpreadBand)(nil),            // 15: limitary.v1.SpreadBand
-	(*OriginalScale)(nil),         // 16: limitary.v1.OriginalScale
-	(*TraceLimits)(nil),           // 17: limitary.v1.TraceLimits
-	(*Point)(nil),                 // 18: limitary.v1.Point
-	(*Readings)(nil),              // 19: limitary.v1.Readings
-	(*Count)(nil),                 // 20: limitary.v1.Count
-	(*Points)(nil),                // 21: limitary.v1.Points
-	(*Series)(nil),                // 22: limitary.v1.Series
-	(*FixedLines)(nil),            // 23: limitary.v1.FixedLines
-	(*Exclusion)(nil),             // 24: limitary.v1.Exclusion
-	(*KindOptions)(nil),           // 25: limitary.v1.KindOptions
-	(*InForce)(nil),               // 26: limitary.v1.InForce
-	(*ChangeTest)(nil),            // 27: limitary.v1.ChangeTest
-	(*ChangeFigure)(nil),          // 28: limitary.v1.ChangeFigure
-	(*ComputeLimitsRequest)(nil),  // 29: limitary.v1.ComputeLimitsRequest
-	(*VarianceComponent)(nil),     // 30: limitary.v1.VarianceComponent
-	(*SigmaPart)(nil),             // 31: limitary.v1.SigmaPart
-	(*TailFigure)(nil),            // 32: limitary.v1.TailFigure
-	(*FalseAlarmRate)(nil),        // 33: limitary.v1.FalseAlarmRate
-	(*Compared)(nil),              // 34: limitary.v1.Compared
-	(*DiagnosticTest)(nil),        // 35: limitary.v1.DiagnosticTest
-	(*SetupCount)(nil),            // 36: limitary.v1.SetupCount
-	(*Histogram)(nil),             // 37: limitary.v1.Histogram
-	(*Picture)(nil),               // 38: limitary.v1.Picture
-	(*Diagnostics)(nil),           // 39: limitary.v1.Diagnostics
-	(*SigmaEstimate)(nil),         // 40: limitary.v1.SigmaEstimate
-	(*Interval)(nil),              // 41: limitary.v1.Interval
-	(*Finding)(nil),               // 42: limitary.v1.Finding
-	(*ComputeLimitsResponse)(nil), // 43: limitary.v1.ComputeLimitsResponse
-	(*RuleSpec)(nil),              // 44: limitary.v1.RuleSpec
-	(TraceRole)(0),                // 45: limitary.v1.TraceRole
+	(ReadingBound)(0),             // 4: limitary.v1.ReadingBound
+	(Estimator)(0),                // 5: limitary.v1.Estimator
+	(Origin)(0),                   // 6: limitary.v1.Origin
+	(WatchedSide)(0),              // 7: limitary.v1.WatchedSide
+	(ExtraVariation)(0),           // 8: limitary.v1.ExtraVariation
+	(ChangeDecision)(0),           // 9: limitary.v1.ChangeDecision
+	(DiagnosticOutcome)(0),        // 10: limitary.v1.DiagnosticOutcome
+	(*Line)(nil),                  // 11: limitary.v1.Line
+	(*Model)(nil),                 // 12: limitary.v1.Model
+	(*Transform)(nil),             // 13: limitary.v1.Transform
+	(*Level)(nil),                 // 14: limitary.v1.Level
+	(*DuplicateSpread)(nil),       // 15: limitary.v1.DuplicateSpread
+	(*SpreadBand)(nil),            // 16: limitary.v1.SpreadBand
+	(*OriginalScale)(nil),         // 17: limitary.v1.OriginalScale
+	(*TraceLimits)(nil),           // 18: limitary.v1.TraceLimits
+	(*Point)(nil),                 // 19: limitary.v1.Point
+	(*Readings)(nil),              // 20: limitary.v1.Readings
+	(*Count)(nil),                 // 21: limitary.v1.Count
+	(*Points)(nil),                // 22: limitary.v1.Points
+	(*Series)(nil),                // 23: limitary.v1.Series
+	(*FixedLines)(nil),            // 24: limitary.v1.FixedLines
+	(*Exclusion)(nil),             // 25: limitary.v1.Exclusion
+	(*KindOptions)(nil),           // 26: limitary.v1.KindOptions
+	(*InForce)(nil),               // 27: limitary.v1.InForce
+	(*ChangeTest)(nil),            // 28: limitary.v1.ChangeTest
+	(*ChangeFigure)(nil),          // 29: limitary.v1.ChangeFigure
+	(*ComputeLimitsRequest)(nil),  // 30: limitary.v1.ComputeLimitsRequest
+	(*VarianceComponent)(nil),     // 31: limitary.v1.VarianceComponent
+	(*SigmaPart)(nil),             // 32: limitary.v1.SigmaPart
+	(*TailFigure)(nil),            // 33: limitary.v1.TailFigure
+	(*FalseAlarmRate)(nil),        // 34: limitary.v1.FalseAlarmRate
+	(*Compared)(nil),              // 35: limitary.v1.Compared
+	(*DiagnosticTest)(nil),        // 36: limitary.v1.DiagnosticTest
+	(*SetupCount)(nil),            // 37: limitary.v1.SetupCount
+	(*Histogram)(nil),             // 38: limitary.v1.Histogram
+	(*Picture)(nil),               // 39: limitary.v1.Picture
+	(*Diagnostics)(nil),           // 40: limitary.v1.Diagnostics
+	(*SigmaEstimate)(nil),         // 41: limitary.v1.SigmaEstimate
+	(*Interval)(nil),              // 42: limitary.v1.Interval
+	(*Finding)(nil),               // 43: limitary.v1.Finding
+	(*ComputeLimitsResponse)(nil), // 44: limitary.v1.ComputeLimitsResponse
+	(*RuleSpec)(nil),              // 45: limitary.v1.RuleSpec
+	(TraceRole)(0),                // 46: limitary.v1.TraceRole
 }
 var file_limitary_v1_limits_proto_depIdxs = []int32{
 	1,  // 0: limitary.v1.Line.basis:type_name -> limitary.v1.Basis
 	2,  // 1: limitary.v1.Model.count_method:type_name -> limitary.v1.CountMethod
-	12, // 2: limitary.v1.Model.transform:type_name -> limitary.v1.Transform
-	13, // 3: limitary.v1.Model.levels:type_name -> limitary.v1.Level
-	14, // 4: limitary.v1.Model.spread:type_name -> limitary.v1.DuplicateSpread
+	13, // 2: limitary.v1.Model.transform:type_name -> limitary.v1.Transform
+	14, // 3: limitary.v1.Model.levels:type_name -> limitary.v1.Level
+	15, // 4: limitary.v1.Model.spread:type_name -> limitary.v1.DuplicateSpread
 	3,  // 5: limitary.v1.Transform.kind:type_name -> limitary.v1.TransformKind
-	15, // 6: limitary.v1.DuplicateSpread.bands:type_name -> limitary.v1.SpreadBand
-	10, // 7: limitary.v1.TraceLimits.lower_action:type_name -> limitary.v1.Line
-	10, // 8: limitary.v1.TraceLimits.upper_action:type_name -> limitary.v1.Line
-	10, // 9: limitary.v1.TraceLimits.lower_warning:type_name -> limitary.v1.Line
-	10, // 10: limitary.v1.TraceLimits.upper_warning:type_name -> limitary.v1.Line
-	44, // 11: limitary.v1.TraceLimits.rules:type_name -> limitary.v1.RuleSpec
-	16, // 12: limitary.v1.TraceLimits.original:type_name -> limitary.v1.OriginalScale
-	19, // 13: limitary.v1.Point.readings:type_name -> limitary.v1.Readings
-	20, // 14: limitary.v1.Point.count:type_name -> limitary.v1.Count
-	18, // 15: limitary.v1.Points.points:type_name -> limitary.v1.Point
-	10, // 16: limitary.v1.FixedLines.lower_action:type_name -> limitary.v1.Line
-	10, // 17: limitary.v1.FixedLines.upper_action:type_name -> limitary.v1.Line
-	10, // 18: limitary.v1.FixedLines.lower_warning:type_name -> limitary.v1.Line
-	10, // 19: limitary.v1.FixedLines.upper_warning:type_name -> limitary.v1.Line
-	12, // 20: limitary.v1.KindOptions.transform:type_name -> limitary.v1.Transform
-	13, // 21: limitary.v1.KindOptions.levels:type_name -> limitary.v1.Level
-	6,  // 22: limitary.v1.KindOptions.one_sided:type_name -> limitary.v1.WatchedSide
-	2,  // 23: limitary.v1.KindOptions.count_method:type_name -> limitary.v1.CountMethod
-	7,  // 24: limitary.v1.KindOptions.extra_variation:type_name -> limitary.v1.ExtraVariation
-	4,  // 25: limitary.v1.InForce.estimator:type_name -> limitary.v1.Estimator
-	28, // 26: limitary.v1.ChangeTest.centre:type_name -> limitary.v1.ChangeFigure
-	28, // 27: limitary.v1.ChangeTest.spread:type_name -> limitary.v1.ChangeFigure
-	28, // 28: limitary.v1.ChangeTest.means:type_name -> limitary.v1.ChangeFigure
-	8,  // 29: limitary.v1.ChangeTest.decision:type_name -> limitary.v1.ChangeDecision
-	8,  // 30: limitary.v1.ChangeFigure.decision:type_name -> limitary.v1.ChangeDecision
-	8,  // 31: limitary.v1.ChangeFigure.published_decision:type_name -> limitary.v1.ChangeDecision
-	0,  // 32: limitary.v1.ComputeLimitsRequest.kind:type_name -> limitary.v1.ChartKind
-	21, // 33: limitary.v1.ComputeLimitsRequest.points:type_name -> limitary.v1.Points
-	22, // 34: limitary.v1.ComputeLimitsRequest.series:type_name -> limitary.v1.Series
-	4,  // 35: limitary.v1.ComputeLimitsRequest.estimator:type_name -> limitary.v1.Estimator
-	23, // 36: limitary.v1.ComputeLimitsRequest.location_lines:type_name -> limitary.v1.FixedLines
-	23, // 37: limitary.v1.ComputeLimitsRequest.dispersion_lines:type_name -> limitary.v1.FixedLines
-	24, // 38: limitary.v1.ComputeLimitsRequest.exclusions:type_name -> limitary.v1.Exclusion
-	25, // 39: limitary.v1.ComputeLimitsRequest.options:type_name -> limitary.v1.KindOptions
-	26, // 40: limitary.v1.ComputeLimitsRequest.in_force:type_name -> limitary.v1.InForce
-	5,  // 41: limitary.v1.SigmaPart.origin:type_name -> limitary.v1.Origin
-	45, // 42: limitary.v1.TailFigure.trace:type_name -> limitary.v1.TraceRole
-	9,  // 43: limitary.v1.DiagnosticTest.outcome:type_name -> limitary.v1.DiagnosticOutcome
-	37, // 44: limitary.v1.Picture.histogram:type_name -> limitary.v1.Histogram
-	35, // 45: limitary.v1.Diagnostics.tests:type_name -> limitary.v1.DiagnosticTest
-	36, // 46: limitary.v1.Diagnostics.setup:type_name -> limitary.v1.SetupCount
-	38, // 47: limitary.v1.Diagnostics.pictures:type_name -> limitary.v1.Picture
-	0,  // 48: limitary.v1.ComputeLimitsResponse.kind:type_name -> limitary.v1.ChartKind
-	17, // 49: limitary.v1.ComputeLimitsResponse.location:type_name -> limitary.v1.TraceLimits
-	17, // 50: limitary.v1.ComputeLimitsResponse.dispersion:type_name -> limitary.v1.TraceLimits
-	5,  // 51: limitary.v1.ComputeLimitsResponse.centre_origin:type_name -> limitary.v1.Origin
-	5,  // 52: limitary.v1.ComputeLimitsResponse.sigma_origin:type_name -> limitary.v1.Origin
-	40, // 53: limitary.v1.ComputeLimitsResponse.estimates:type_name -> limitary.v1.SigmaEstimate
-	41, // 54: limitary.v1.ComputeLimitsResponse.intervals:type_name -> limitary.v1.Interval
-	24, // 55: limitary.v1.ComputeLimitsResponse.exclusions:type_name -> limitary.v1.Exclusion
-	42, // 56: limitary.v1.ComputeLimitsResponse.findings:type_name -> limitary.v1.Finding
-	11, // 57: limitary.v1.ComputeLimitsResponse.model:type_name -> limitary.v1.Model
-	30, // 58: limitary.v1.ComputeLimitsResponse.components:type_name -> limitary.v1.VarianceComponent
-	32, // 59: limitary.v1.ComputeLimitsResponse.tails:type_name -> limitary.v1.TailFigure
-	33, // 60: limitary.v1.ComputeLimitsResponse.false_alarm:type_name -> limitary.v1.FalseAlarmRate
-	34, // 61: limitary.v1.ComputeLimitsResponse.compared:type_name -> limitary.v1.Compared
-	39, // 62: limitary.v1.ComputeLimitsResponse.diagnostics:type_name -> limitary.v1.Diagnostics
-	27, // 63: limitary.v1.ComputeLimitsResponse.change_test:type_name -> limitary.v1.ChangeTest
-	31, // 64: limitary.v1.ComputeLimitsResponse.parts:type_name -> limitary.v1.SigmaPart
-	65, // [65:65] is the sub-list for method output_type
-	65, // [65:65] is the sub-list for method input_type
-	65, // [65:65] is the sub-list for extension type_name
-	65, // [65:65] is the sub-list for extension extendee
-	0,  // [0:65] is the sub-list for field type_name
+	16, // 6: limitary.v1.DuplicateSpread.bands:type_name -> limitary.v1.SpreadBand
+	11, // 7: limitary.v1.TraceLimits.lower_action:type_name -> limitary.v1.Line
+	11, // 8: limitary.v1.TraceLimits.upper_action:type_name -> limitary.v1.Line
+	11, // 9: limitary.v1.TraceLimits.lower_warning:type_name -> limitary.v1.Line
+	11, // 10: limitary.v1.TraceLimits.upper_warning:type_name -> limitary.v1.Line
+	45, // 11: limitary.v1.TraceLimits.rules:type_name -> limitary.v1.RuleSpec
+	17, // 12: limitary.v1.TraceLimits.original:type_name -> limitary.v1.OriginalScale
+	20, // 13: limitary.v1.Point.readings:type_name -> limitary.v1.Readings
+	21, // 14: limitary.v1.Point.count:type_name -> limitary.v1.Count
+	4,  // 15: limitary.v1.Readings.bounds:type_name -> limitary.v1.ReadingBound
+	19, // 16: limitary.v1.Points.points:type_name -> limitary.v1.Point
+	11, // 17: limitary.v1.FixedLines.lower_action:type_name -> limitary.v1.Line
+	11, // 18: limitary.v1.FixedLines.upper_action:type_name -> limitary.v1.Line
+	11, // 19: limitary.v1.FixedLines.lower_warning:type_name -> limitary.v1.Line
+	11, // 20: limitary.v1.FixedLines.upper_warning:type_name -> limitary.v1.Line
+	13, // 21: limitary.v1.KindOptions.transform:type_name -> limitary.v1.Transform
+	14, // 22: limitary.v1.KindOptions.levels:type_name -> limitary.v1.Level
+	7,  // 23: limitary.v1.KindOptions.one_sided:type_name -> limitary.v1.WatchedSide
+	2,  // 24: limitary.v1.KindOptions.count_method:type_name -> limitary.v1.CountMethod
+	8,  // 25: limitary.v1.KindOptions.extra_variation:type_name -> limitary.v1.ExtraVariation
+	5,  // 26: limitary.v1.InForce.estimator:type_name -> limitary.v1.Estimator
+	12, // 27: limitary.v1.InForce.model:type_name -> limitary.v1.Model
+	32, // 28: limitary.v1.InForce.parts:type_name -> limitary.v1.SigmaPart
+	29, // 29: limitary.v1.ChangeTest.centre:type_name -> limitary.v1.ChangeFigure
+	29, // 30: limitary.v1.ChangeTest.spread:type_name -> limitary.v1.ChangeFigure
+	29, // 31: limitary.v1.ChangeTest.means:type_name -> limitary.v1.ChangeFigure
+	9,  // 32: limitary.v1.ChangeTest.decision:type_name -> limitary.v1.ChangeDecision
+	9,  // 33: limitary.v1.ChangeFigure.decision:type_name -> limitary.v1.ChangeDecision
+	9,  // 34: limitary.v1.ChangeFigure.published_decision:type_name -> limitary.v1.ChangeDecision
+	0,  // 35: limitary.v1.ComputeLimitsRequest.kind:type_name -> limitary.v1.ChartKind
+	22, // 36: limitary.v1.ComputeLimitsRequest.points:type_name -> limitary.v1.Points
+	23, // 37: limitary.v1.ComputeLimitsRequest.series:type_name -> limitary.v1.Series
+	5,  // 38: limitary.v1.ComputeLimitsRequest.estimator:type_name -> limitary.v1.Estimator
+	24, // 39: limitary.v1.ComputeLimitsRequest.location_lines:type_name -> limitary.v1.FixedLines
+	24, // 40: limitary.v1.ComputeLimitsRequest.dispersion_lines:type_name -> limitary.v1.FixedLines
+	25, // 41: limitary.v1.ComputeLimitsRequest.exclusions:type_name -> limitary.v1.Exclusion
+	26, // 42: limitary.v1.ComputeLimitsRequest.options:type_name -> limitary.v1.KindOptions
+	27, // 43: limitary.v1.ComputeLimitsRequest.in_force:type_name -> limitary.v1.InForce
+	6,  // 44: limitary.v1.SigmaPart.origin:type_name -> limitary.v1.Origin
+	46, // 45: limitary.v1.TailFigure.trace:type_name -> limitary.v1.TraceRole
+	10, // 46: limitary.v1.DiagnosticTest.outcome:type_name -> limitary.v1.DiagnosticOutcome
+	38, // 47: limitary.v1.Picture.histogram:type_name -> limitary.v1.Histogram
+	36, // 48: limitary.v1.Diagnostics.tests:type_name -> limitary.v1.DiagnosticTest
+	37, // 49: limitary.v1.Diagnostics.setup:type_name -> limitary.v1.SetupCount
+	39, // 50: limitary.v1.Diagnostics.pictures:type_name -> limitary.v1.Picture
+	0,  // 51: limitary.v1.ComputeLimitsResponse.kind:type_name -> limitary.v1.ChartKind
+	18, // 52: limitary.v1.ComputeLimitsResponse.location:type_name -> limitary.v1.TraceLimits
+	18, // 53: limitary.v1.ComputeLimitsResponse.dispersion:type_name -> limitary.v1.TraceLimits
+	6,  // 54: limitary.v1.ComputeLimitsResponse.centre_origin:type_name -> limitary.v1.Origin
+	6,  // 55: limitary.v1.ComputeLimitsResponse.sigma_origin:type_name -> limitary.v1.Origin
+	41, // 56: limitary.v1.ComputeLimitsResponse.estimates:type_name -> limitary.v1.SigmaEstimate
+	42, // 57: limitary.v1.ComputeLimitsResponse.intervals:type_name -> limitary.v1.Interval
+	25, // 58: limitary.v1.ComputeLimitsResponse.exclusions:type_name -> limitary.v1.Exclusion
+	43, // 59: limitary.v1.ComputeLimitsResponse.findings:type_name -> limitary.v1.Finding
+	12, // 60: limitary.v1.ComputeLimitsResponse.model:type_name -> limitary.v1.Model
+	31, // 61: limitary.v1.ComputeLimitsResponse.components:type_name -> limitary.v1.VarianceComponent
+	33, // 62: limitary.v1.ComputeLimitsResponse.tails:type_name -> limitary.v1.TailFigure
+	34, // 63: limitary.v1.ComputeLimitsResponse.false_alarm:type_name -> limitary.v1.FalseAlarmRate
+	35, // 64: limitary.v1.ComputeLimitsResponse.compared:type_name -> limitary.v1.Compared
+	40, // 65: limitary.v1.ComputeLimitsResponse.diagnostics:type_name -> limitary.v1.Diagnostics
+	28, // 66: limitary.v1.ComputeLimitsResponse.change_test:type_name -> limitary.v1.ChangeTest
+	32, // 67: limitary.v1.ComputeLimitsResponse.parts:type_name -> limitary.v1.SigmaPart
+	68, // [68:68] is the sub-list for method output_type
+	68, // [68:68] is the sub-list for method input_type
+	68, // [68:68] is the sub-list for extension type_name
+	68, // [68:68] is the sub-list for extension extendee
+	0,  // [0:68] is the sub-list for field type_name
 }
 
 func init() { file_limitary_v1_limits_proto_init() }
@@ -4449,7 +4559,7 @@ func file_limitary_v1_limits_proto_init() {
 		File: protoimpl.DescBuilder{
 			GoPackagePath: reflect.TypeOf(x{}).PkgPath(),
 			RawDescriptor: unsafe.Slice(unsafe.StringData(file_limitary_v1_limits_proto_rawDesc), len(file_limitary_v1_limits_proto_rawDesc)),
-			NumEnums:      10,
+			NumEnums:      11,
 			NumMessages:   34,
 			NumExtensions: 0,
 			NumServices:   0,
