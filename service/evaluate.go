@@ -4,12 +4,9 @@ import (
 	"context"
 	"errors"
 	"fmt"
-	"math"
 	"time"
 
 	pb "limitary/api/limitary/v1"
-	"limitary/internal/chart"
-	"limitary/internal/decimal"
 	"limitary/internal/definition"
 	"limitary/internal/judge"
 	"limitary/internal/rules"
@@ -109,30 +106,21 @@ type chosenVersion struct {
 type resolved struct {
 	judge   *judge.Judge
 	version int
+	// after is set where the values continue a stored track.
+	after *store.Continuation
 }
 
 func (b *evaluator) evaluate(ctx context.Context, e *pb.Evaluation) (*pb.EvaluationResult, error) {
-	var with resolved
-	var err error
-	switch l := e.GetLimits().(type) {
-	case *pb.Evaluation_Inline:
-		with.judge, err = b.byInline(l.Inline)
-		err = under("inline", err)
-	case *pb.Evaluation_Chart:
-		with, err = b.byChart(ctx, l.Chart)
-		err = under("chart", err)
-	default:
-		err = definition.Invalid("limits", "are not set; want one of chart and inline")
-	}
+	with, err := b.resolve(ctx, e)
 	if err != nil {
 		return nil, err
 	}
 	var out *pb.EvaluationResult
 	switch d := e.GetData().(type) {
 	case *pb.Evaluation_Series:
-		out, err = b.series(with.judge, d.Series.GetValues(), int(e.FirstJudged))
+		out, err = b.series(with, d.Series.GetValues(), int(e.FirstJudged))
 	case *pb.Evaluation_Points:
-		out, err = b.points(with.judge, d.Points.GetPoints(), int(e.FirstJudged))
+		out, err = b.points(with, d.Points.GetPoints(), int(e.FirstJudged))
 	default:
 		err = definition.Invalid("data", "are not set; want one of series and points")
 	}
@@ -140,8 +128,22 @@ func (b *evaluator) evaluate(ctx context.Context, e *pb.Evaluation) (*pb.Evaluat
 		return nil, err
 	}
 	out.Version = int32(with.version)
+	with.say(out)
 	b.hits += len(out.Hits)
 	return out, tooMany(dataField(e), b.hits, HitsMax, "hits in one answer; do the limits belong to these values?")
+}
+
+// resolve finds what judges the values.
+func (b *evaluator) resolve(ctx context.Context, e *pb.Evaluation) (with resolved, err error) {
+	switch l := e.GetLimits().(type) {
+	case *pb.Evaluation_Inline:
+		with.judge, err = b.byInline(l.Inline)
+		return with, under("inline", err)
+	case *pb.Evaluation_Chart:
+		with, err = b.byChart(ctx, l.Chart)
+		return with, under("chart", err)
+	}
+	return with, definition.Invalid("limits", "are not set; want one of chart and inline")
 }
 
 func (b *evaluator) byInline(in *pb.InlineLimits) (*judge.Judge, error) {
@@ -184,6 +186,10 @@ func (b *evaluator) byChart(ctx context.Context, in *pb.ByChart) (resolved, erro
 		return resolved{}, definition.Invalid("version", "%d: want a version number, or 0 for the one in force", in.Version)
 	case in.Version > 0 && in.At != nil:
 		return resolved{}, definition.Invalid("at", "is given beside version %d; give at most one of them", in.Version)
+	case in.Version > 0 && in.ContinueTrack:
+		return resolved{}, definition.Invalid("continue_track", "is given beside version %d; the next points of a track are judged by the version in force", in.Version)
+	case in.ContinueTrack:
+		return b.byTrack(ctx, in, at)
 	}
 	key := chosenVersion{in.Name, in.Lot, in.Version, at}
 	if r, ok := b.judges[key]; ok {
@@ -193,25 +199,29 @@ func (b *evaluator) byChart(ctx context.Context, in *pb.ByChart) (resolved, erro
 	if err != nil {
 		return resolved{}, err
 	}
-	var v definition.Version
+	var r resolved
 	if in.Version > 0 {
-		v, _, _, err = b.service.store.GetVersion(ctx, who, in.Name, int(in.Version))
+		r, err = b.byNumber(ctx, who, in.Name, int(in.Version))
 	} else {
-		v, err = b.service.store.VersionInForce(ctx, who, in.Name, in.Lot, at)
+		r.version, r.judge, err = b.service.store.JudgeInForce(ctx, who, in.Name, in.Lot, at)
 	}
 	if err != nil {
 		return resolved{}, chartIsName(err)
 	}
-	j, err := b.service.store.VersionJudge(v)
-	if err != nil {
-		return resolved{}, err
-	}
-	r := resolved{j, v.Number}
 	if b.judges == nil {
 		b.judges = map[chosenVersion]resolved{}
 	}
 	b.judges[key] = r
 	return r, nil
+}
+
+func (b *evaluator) byNumber(ctx context.Context, who store.Actor, chart string, number int) (resolved, error) {
+	v, _, _, err := b.service.store.GetVersion(ctx, who, chart, number)
+	if err != nil {
+		return resolved{}, err
+	}
+	j, err := b.service.store.VersionJudge(v)
+	return resolved{judge: j, version: v.Number}, err
 }
 
 // chartIsName gives what the store says of a chart the field that holds its name here.
@@ -223,87 +233,4 @@ func chartIsName(err error) error {
 	renamed := *e
 	renamed.Field = "name"
 	return &renamed
-}
-
-// inlineJudge builds the judge of limits sent along.
-func inlineJudge(in *pb.InlineLimits) (*judge.Judge, error) {
-	kind, err := kindFromProto("kind", in.GetKind())
-	if err != nil {
-		return nil, err
-	}
-	l := judge.Limits{Kind: kind, SubgroupSize: int(in.GetSubgroupSize()), Places: decimal.Unrounded}
-	if in.PublishedDecimals != nil {
-		if l.Places = int(*in.PublishedDecimals); l.Places < 0 || l.Places > decimal.PlacesMax {
-			return nil, definition.Invalid("published_decimals", "%d: want 0 to %d", l.Places, decimal.PlacesMax)
-		}
-	}
-	if l.Model, err = modelFromProto(in.GetModel()); err != nil {
-		return nil, under("model", err)
-	}
-	if kind.SizeImplied() && l.SubgroupSize == 0 {
-		l.SubgroupSize = 1
-	}
-	if kind == chart.Given && l.SubgroupSize != 0 {
-		return nil, definition.Invalid("subgroup_size", "%d is given, but no kind; statistics are plotted as given", l.SubgroupSize)
-	}
-	for role, t := range [...]*pb.TraceLimits{in.GetLocation(), in.GetDispersion()} {
-		l.Traces[role], _, err = traceFromProto(t, l.Places)
-		if err != nil {
-			return nil, under(chart.Role(role).String(), err)
-		}
-	}
-	if !hasRules(l) {
-		return nil, definition.Invalid("location.rules", "neither rules nor rule_set is given; give exactly one of them for a trace that is to be judged")
-	}
-	if l.ProcessSigma, err = inlineSigma(in, l); err != nil {
-		return nil, err
-	}
-	j, err := judge.New(l)
-	if err != nil {
-		return nil, judgeRefusal(err)
-	}
-	return j, nil
-}
-
-func hasRules(l judge.Limits) bool {
-	for _, t := range l.Traces {
-		if t != nil && len(t.Rules) > 0 {
-			return true
-		}
-	}
-	return false
-}
-
-// inlineSigma gives the standard deviation of a single reading; 0 where none is known or needed.
-func inlineSigma(in *pb.InlineLimits, l judge.Limits) (float64, error) {
-	var sigma float64
-	switch location := l.Traces[chart.Location]; {
-	case in.ProcessSigma != nil:
-		sigma = *in.ProcessSigma
-		if l.Kind == chart.Given {
-			return 0, definition.Invalid("process_sigma", "%v is given, but no kind; statistics are plotted as given", sigma)
-		}
-		if !(sigma > 0) || math.IsInf(sigma, 0) {
-			return 0, definition.Invalid("process_sigma", "%v: want a finite number above 0", sigma)
-		}
-	case l.Kind == chart.RunMeans && l.Model.BetweenSigma > 0:
-		return 0, definition.Invalid("process_sigma", "is not set; it is the standard deviation within runs, which the location trace does not tell")
-	case l.Kind == chart.Given || l.Kind.Counts() || location == nil || location.Sigma == nil || !(*location.Sigma > 0):
-		return 0, nil
-	default:
-		sigma = *location.Sigma * math.Sqrt(float64(l.SubgroupSize))
-	}
-	if l.Places != decimal.Unrounded && decimal.Round(sigma, l.Places) == 0 {
-		return 0, definition.Invalid("published_decimals", "%d: the sigma of a single reading, %.4g, rounds to zero; publish more decimals", l.Places, sigma)
-	}
-	return sigma, nil
-}
-
-// judgeRefusal turns what the judge says of limits into a refusal; it names fields as the contract does.
-func judgeRefusal(err error) error {
-	var e *judge.Error
-	if errors.As(err, &e) {
-		return definition.Invalid(e.Field, "%s", e.Problem)
-	}
-	return err
 }
