@@ -21,26 +21,25 @@ const looksPeriod = 365 * 24 * time.Hour
 
 // CanCompare reports whether limits of a kind can be set against new data.
 func CanCompare(kind chart.Kind) bool {
-	return changetest.Estimators(kind) != nil
+	return changetest.Compared(kind)
 }
 
-// CompareSent sets the data of a computation against figures in force that were sent along.
-func CompareSent(in *pb.InForce, req limits.Request) (*pb.ChangeTest, error) {
+// CompareSent sets the data of a computation against figures in force that were sent along. A refusal of group i names it
+// by path; nil leaves the name of package changetest.
+func CompareSent(in *pb.InForce, req limits.Request, path func(i int, tail string) string) (*pb.ChangeTest, error) {
 	if !CanCompare(req.Kind) {
 		return nil, definition.Invalid("kind", "charts of kind %s are not set against limits in force", req.Kind)
 	}
-	estimator, err := estimatorFromProto(in.Estimator)
+	old, err := inForceFromProto(in, req.Kind, req.SubgroupSize)
 	if err != nil {
-		return nil, err
+		return nil, under("in_force", err)
 	}
 	looks := int(in.Looks)
 	if looks == 0 {
 		looks = 1
 	}
 	r := changetest.Request{
-		InForce: changetest.InForce{Kind: req.Kind, SubgroupSize: req.SubgroupSize, Centre: in.Centre, Sigma: in.ProcessSigma,
-			CentreTarget: in.CentreGiven, SigmaTarget: in.SigmaGiven, Groups: int(in.N), Readings: int(in.Readings),
-			Estimator: estimator, DegreesOfFreedom: in.DegreesOfFreedom, BetweenSigma: in.BetweenSigma},
+		InForce:   old,
 		Relevance: changetest.Relevance{CentreSigmas: in.GetRelevantShiftSigmas(), SigmaRatio: in.GetRelevantSigmaRatio()},
 		Trigger:   trigger(in.AfterSignal), Looks: looks,
 	}
@@ -50,7 +49,7 @@ func CompareSent(in *pb.InForce, req limits.Request) (*pb.ChangeTest, error) {
 	}
 	res, err := changetest.Compare(r)
 	if err != nil {
-		return nil, changeRefusal(err)
+		return nil, changeRefusal(err, path)
 	}
 	out := changeOf(res)
 	return changeTestToProto(&out), nil
@@ -63,9 +62,9 @@ func trigger(afterSignal bool) changetest.Trigger {
 	return changetest.Planned
 }
 
-// compareStored sets the data of a proposal against the version it would follow; nil where there is none, or where the
-// two do not speak of the same figure.
-func (s *LimitService) compareStored(ctx context.Context, who store.Actor, p *proposal, c definition.Chart, basis *basisData, model *chart.Model) (*definition.ChangeTest, error) {
+// compareStored sets the data of a proposal against the version it would follow, on that version's scale; nil where there
+// is none, or where it has no centre.
+func (s *LimitService) compareStored(ctx context.Context, who store.Actor, p *proposal, c definition.Chart, basis *basisData) (*definition.ChangeTest, error) {
 	if !CanCompare(c.Kind) || len(basis.groups) == 0 {
 		return nil, nil
 	}
@@ -81,7 +80,7 @@ func (s *LimitService) compareStored(ctx context.Context, who store.Actor, p *pr
 	if err != nil {
 		return nil, err
 	}
-	if !sameScale(v.Model, model) || v.Location == nil || v.Location.Centre == nil {
+	if centred := v.Location != nil && v.Location.Centre != nil; !centred && !v.Kind.Duplicates() {
 		return nil, nil
 	}
 	shift, ratio := c.Relevance()
@@ -90,11 +89,11 @@ func (s *LimitService) compareStored(ctx context.Context, who store.Actor, p *pr
 		Relevance: changetest.Relevance{CentreSigmas: shift, SigmaRatio: ratio},
 	}
 	for i, g := range basis.groups {
-		req.Groups = append(req.Groups, changetest.Group{Group: onScale(g, model), InOldBasis: basis.inBasisOf(v.Content, i)})
+		req.Groups = append(req.Groups, changetest.Group{Group: onScale(g, v.Model), InOldBasis: basis.inBasisOf(v.Content, i)})
 	}
 	res, err := changetest.Compare(req)
 	if err != nil {
-		return nil, changeRefusal(err)
+		return nil, changeRefusal(err, basis.path)
 	}
 	out := changeOf(res)
 	out.Against = v.Number
@@ -113,67 +112,65 @@ func (b *basisData) inBasisOf(v definition.Content, i int) bool {
 	return !at.Before(*v.BasisFrom) && at.Before(*v.BasisTo)
 }
 
-func inForce(v definition.Content) changetest.InForce {
-	f := changetest.InForce{
-		Kind: v.Kind, SubgroupSize: v.SubgroupSize, Centre: *v.Location.Centre, Sigma: v.ProcessSigma,
-		CentreTarget: v.CentreGiven, SigmaTarget: v.SigmaGiven, Groups: v.Groups, Readings: v.Readings,
-	}
-	if v.Kind == chart.RunMeans && v.Model != nil {
-		f.BetweenSigma = &v.Model.BetweenSigma
-	}
-	for _, e := range v.Estimates {
-		if e.Chosen {
-			f.DegreesOfFreedom = e.DegreesOfFreedom
-			f.Estimator, _ = limits.ParseEstimator(e.Name)
-		}
-	}
-	return f
-}
-
-// sameScale reports whether two versions are judged on one scale, so that their figures can be compared.
-func sameScale(a, b *chart.Model) bool {
-	var none chart.Model
-	if a == nil {
-		a = &none
-	}
-	if b == nil {
-		b = &none
-	}
-	return a.Transform == b.Transform && len(a.Levels) == len(b.Levels)
-}
-
-// onScale gives a group with its readings on the judged scale. What has no place there has been refused before.
+// onScale gives a group with its readings on the judged scale. One with a reading that has no place there is left out.
 func onScale(g limits.Group, m *chart.Model) limits.Group {
 	if m == nil || m.Transform.Kind == chart.Identity && len(m.Levels) == 0 {
 		return g
 	}
-	level, _ := m.LevelOf(g.Material)
+	level, placed := m.LevelOf(g.Material)
+	placed = placed || len(m.Levels) == 0
 	readings := make([]float64, len(g.Readings))
 	for i, x := range g.Readings {
-		if readings[i], _ = m.Transform.Apply(x); len(m.Levels) > 0 {
-			readings[i] = (x - level.Reference) / level.Sigma
+		switch {
+		case len(m.Levels) == 0:
+			var ok bool
+			readings[i], ok = m.Transform.Apply(x)
+			placed = placed && ok
+		case placed:
+			readings[i] = level.Standardise(x)
 		}
 	}
 	g.Readings, g.Decimals = readings, limits.DecimalsUnknown
+	if !placed && !g.Excluded {
+		g.Excluded, g.ExclusionReason = true, "it has no place on the scale of the limits in force"
+	}
 	return g
 }
 
-func changeRefusal(err error) error {
+func changeRefusal(err error, path func(i int, tail string) string) error {
 	var e *changetest.Error
 	if !errors.As(err, &e) {
 		return err
 	}
-	names := strings.NewReplacer("inForce.", "", "subgroupSize", "subgroup_size", "degreesOfFreedom", "degrees_of_freedom", "groups", "n", "sigma", "process_sigma",
-		"relevance.centreSigmas", "relevant_shift_sigmas", "relevance.sigmaRatio", "relevant_sigma_ratio")
-	return definition.Invalid(names.Replace(e.Field), "%s: %s", e.Value, e.Problem)
+	if strings.HasPrefix(e.Field, "groups[") && path != nil {
+		return computeRefusal(err, path)
+	}
+	name, text := strings.TrimPrefix(e.Field, "inForce."), e.Problem
+	if !strings.HasPrefix(name, "model.") && !strings.HasPrefix(name, "groups[") { // which have other names
+		name = changeNames.Replace(name)
+	}
+	if e.Value != "" {
+		text = e.Value + ": " + e.Problem
+	}
+	return definition.Invalid("in_force."+name, "%s", text)
 }
+
+// changeNames turns the field names of package changetest into those of the contract.
+var changeNames = strings.NewReplacer("subgroupSize", "subgroup_size", "degreesOfFreedom", "degrees_of_freedom", "groups", "n", "sigma", "process_sigma",
+	"betweenSigma", "between_sigma", "relevance.centreSigmas", "relevant_shift_sigmas", "relevance.sigmaRatio", "relevant_sigma_ratio")
 
 func changeOf(r changetest.Result) definition.ChangeTest {
 	out := definition.ChangeTest{
 		Results: r.Groups, Excluded: r.ExcludedLeftOut, InOldBasis: r.BasisLeftOut,
-		Centre: figureOf(r.Centre), Spread: figureOf(r.Spread), Decision: r.Decision.String(),
-		Looks: r.Looks.Count, OneWrongMax: r.Looks.OneWrongMax, Lag1: r.Correlation.Lag1,
+		Decision: r.Decision.String(),
+		Looks:    r.Looks.Count, OneWrongMax: r.Looks.OneWrongMax, Lag1: r.Correlation.Lag1,
 		EffectiveForCentre: r.Correlation.EffectiveForCentre, EffectiveForSpread: r.Correlation.EffectiveForSpread, Text: r.Sentence,
+	}
+	if r.Centre != nil {
+		out.Centre = figureOf(*r.Centre)
+	}
+	if r.Spread != nil {
+		out.Spread = figureOf(*r.Spread)
 	}
 	if r.Means != nil {
 		means := figureOf(*r.Means)
@@ -229,7 +226,11 @@ func changeTestToProto(c *definition.ChangeTest) *pb.ChangeTest {
 	return out
 }
 
+// figureToProto writes a figure; nil where the kind has no such figure, which is then without a decision.
 func figureToProto(f definition.ChangeFigure) *pb.ChangeFigure {
+	if f.Decision == "" {
+		return nil
+	}
 	out := &pb.ChangeFigure{
 		Estimate: f.Estimate, Lower: f.Lower, Upper: f.Upper, RelevantLower: f.RelevantLower, RelevantUpper: f.RelevantUpper,
 		Decision: decisionToProto(f.Decision), Reason: f.Reason, Differs: f.Differs, PublishedDecision: decisionToProto(f.PublishedDecision),

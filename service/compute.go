@@ -57,8 +57,8 @@ func (s *LimitService) ComputeLimits(_ context.Context, in *pb.ComputeLimitsRequ
 	}
 	out := computedToProto(c)
 	if in.InForce != nil {
-		if out.ChangeTest, err = CompareSent(in.InForce, req); err != nil {
-			return nil, under("in_force", err)
+		if out.ChangeTest, err = CompareSent(in.InForce, req, data.path); err != nil {
+			return nil, err
 		}
 	}
 	return out, nil
@@ -235,6 +235,9 @@ func (s *sent) takePoints(kind chart.Kind, points []*pb.Point) error {
 			if kind.Counts() {
 				return definition.Invalid(field("readings"), "a chart of kind %s takes counts", kind)
 			}
+			if len(v.Readings.GetBounds()) > 0 {
+				return definition.Invalid(field("readings.bounds"), "are given, but no limits are computed from bounds; leave such points out")
+			}
 			g.Readings = v.Readings.GetValues()
 		case *pb.Point_Count:
 			if !kind.Counts() {
@@ -287,9 +290,9 @@ func computeRefusal(err error, group func(i int, tail string) string) error {
 	if !errors.As(err, &e) {
 		return err
 	}
-	text := e.Problem
+	text := optionNames.Replace(e.Problem)
 	if e.Value != "" {
-		text = e.Value + ": " + e.Problem
+		text = e.Value + ": " + text
 	}
 	switch name, rest, below := strings.Cut(e.Field, "["); {
 	case e.Field == "sigma":
@@ -309,8 +312,28 @@ func computeRefusal(err error, group func(i int, tail string) string) error {
 		}
 		return &definition.Error{Reason: reason, Field: group(i, tail), Text: text}
 	}
-	return definition.Invalid(contractNames.Replace(e.Field), "%s", text)
+	return definition.Invalid(contractField(e.Field), "%s", text)
 }
+
+// contractField gives the path of a field of package limits in the contract.
+func contractField(field string) string {
+	if named := optionNames.Replace(field); named != field {
+		return named
+	}
+	if strings.HasPrefix(field, "transform") || strings.HasPrefix(field, "levels") {
+		return "options." + field
+	}
+	return contractNames.Replace(field)
+}
+
+// optionNames turns the names of what kinds can be asked for into those of the contract.
+var optionNames = strings.NewReplacer(
+	"counts.method", "options.count_method", "counts.extra", "options.extra_variation", "counts.meanUpperBound", "options.mean_upper_bound",
+	"duplicates.sigmas", "options.band_sigma", "duplicates.bands", "options.band_from", "duplicates.function", "options.spread_function",
+	"duplicates.absoluteSigma", "options.absolute_sigma", "duplicates.absoluteBelow", "options.absolute_below",
+	"duplicates.absolute_below", "options.absolute_below", "duplicates.s0", "options.s0", "duplicates.b", "options.b",
+	"betweenSigma", "options.between_sigma",
+)
 
 // contractNames turns the field names of package limits into those of the contract.
 var contractNames = strings.NewReplacer(

@@ -37,6 +37,7 @@ func showImpossible(in *pb.TraceLimits) *pb.TraceLimits {
 	for _, l := range []*pb.Line{t.LowerAction, t.UpperAction, t.LowerWarning, t.UpperWarning} {
 		if l != nil && l.Basis == pb.Basis_BASIS_TAIL_PROBABILITY && l.Value == nil {
 			l.Value = &zero
+			l.Tail = max(l.Tail, chart.ActionTail) // any: the judge takes the line from the centre
 		}
 	}
 	return t

@@ -6,6 +6,7 @@ import (
 
 	pb "limitary/api/limitary/v1"
 	"limitary/internal/chart"
+	"limitary/internal/decimal"
 	"limitary/internal/definition"
 	"limitary/internal/store"
 )
@@ -70,8 +71,8 @@ func resultToProto(r definition.Result) *pb.Result {
 	}
 }
 
-// verdictToProto writes a verdict on a result of the material.
-func verdictToProto(v store.Verdict, material string) *pb.ResultVerdict {
+// verdictToProto writes a verdict on a result of the material with the readings.
+func verdictToProto(v store.Verdict, material string, readings []string) *pb.ResultVerdict {
 	out := &pb.ResultVerdict{
 		Standing: standingToProto(v.Standing), Reason: notJudgedToProto(v.Reason), ByBound: v.ByBound, Version: int32(v.Version), Judge: int32(v.Judge),
 		Instruction: v.Instruction, RecordedAt: timeToProto(v.RecordedAt),
@@ -82,6 +83,9 @@ func verdictToProto(v store.Verdict, material string) *pb.ResultVerdict {
 		}
 		trace := traceVerdictToProto(t.Statistic, t.Scale, t.Lines)
 		trace.Original = originalVerdict(v.By, chart.Role(role), material, t.Statistic, t.Lines)
+		if chart.Role(role) == chart.Location {
+			asMeasured(trace.Original, readings)
+		}
 		if chart.Role(role) == chart.Location {
 			out.Location = trace
 		} else {
@@ -97,10 +101,21 @@ func verdictToProto(v store.Verdict, material string) *pb.ResultVerdict {
 	return out
 }
 
+// asMeasured gives a single reading as it was measured: what is judged was rounded on another scale, and back in the unit
+// it would be another figure.
+func asMeasured(o *pb.OriginalScale, readings []string) {
+	if o == nil || len(readings) != 1 {
+		return
+	}
+	if r, err := decimal.ParseReading(readings[0]); err == nil && r.Bound == decimal.Measured {
+		o.Statistic = &r.Value
+	}
+}
+
 func storedToProto(s store.StoredResult) *pb.StoredResult {
 	return &pb.StoredResult{
 		Result: resultToProto(s.Result), Revision: int32(s.Revision), Voided: s.Voided, Poster: s.Poster,
-		RecordedAt: timeToProto(s.RecordedAt), Verdict: verdictToProto(s.Verdict, s.Result.Material),
+		RecordedAt: timeToProto(s.RecordedAt), Verdict: verdictToProto(s.Verdict, s.Result.Material, s.Result.Readings),
 	}
 }
 
@@ -118,7 +133,7 @@ func revisionToProto(r store.Revision) *pb.ResultRevision {
 		ReasonCode: r.ReasonCode, Reason: r.ReasonText, RecordedAt: timeToProto(r.RecordedAt),
 	}
 	for _, v := range r.Verdicts {
-		out.Verdicts = append(out.Verdicts, verdictToProto(v, r.Result.Material))
+		out.Verdicts = append(out.Verdicts, verdictToProto(v, r.Result.Material, r.Result.Readings))
 	}
 	return out
 }
@@ -135,11 +150,11 @@ func postedToProto(i int, row *pb.Result, p store.Posted) *pb.PostedResult {
 	}
 	switch p.Outcome {
 	case store.Accepted:
-		out.Verdict = verdictToProto(p.First, row.GetMaterial())
+		out.Verdict = verdictToProto(p.First, row.GetMaterial(), row.GetReadings())
 	case store.Duplicate:
-		out.Verdict, out.CurrentVerdict = verdictToProto(p.First, row.GetMaterial()), verdictToProto(p.Current, row.GetMaterial())
+		out.Verdict, out.CurrentVerdict = verdictToProto(p.First, row.GetMaterial(), row.GetReadings()), verdictToProto(p.Current, row.GetMaterial(), row.GetReadings())
 	case store.Conflict:
-		out.Stored, out.CurrentVerdict = resultToProto(p.Stored), verdictToProto(p.Current, row.GetMaterial())
+		out.Stored, out.CurrentVerdict = resultToProto(p.Stored), verdictToProto(p.Current, row.GetMaterial(), row.GetReadings())
 	}
 	if p.HasTrack {
 		out.TrackState = trackStateToProto(p.TrackState)

@@ -146,15 +146,20 @@ func hideImpossible(kind chart.Kind, t *pb.TraceLimits) {
 		return
 	}
 	for _, l := range []*pb.Line{t.LowerAction, t.LowerWarning} {
-		if l.Value != nil && *l.Value <= 0 {
+		if l.Value != nil && *l.Value <= 0 && follows(l) {
 			l.Value = nil
 		}
 	}
 	for _, l := range []*pb.Line{t.UpperAction, t.UpperWarning} {
-		if kind == chart.P && l.Value != nil && *l.Value >= 1 {
+		if kind == chart.P && l.Value != nil && *l.Value >= 1 && follows(l) {
 			l.Value = nil
 		}
 	}
+}
+
+// follows reports a line that follows from the centre, as opposed to one that somebody set.
+func follows(l *pb.Line) bool {
+	return l.Basis == pb.Basis_BASIS_SIGMA_MULTIPLE || l.Basis == pb.Basis_BASIS_TAIL_PROBABILITY
 }
 
 func lineToProto(l chart.Line) *pb.Line {

@@ -19,11 +19,14 @@ var notJudgedTexts = map[judge.Reason]string{
 	judge.TooFewReadings:     "It has fewer readings than any trace of the chart needs.",
 	judge.BoundProvesNothing: "It is a less-than or greater-than result, and its bound leaves open on which side of the lines the value lies, or the chart has no rule that a bound can enter.",
 	judge.Voided:             "It was voided.",
-	judge.NoScale:            "Nothing says how far such a result may lie from the centre: its material is no level of the standardised track, or its relative range has a mean of zero.",
+	judge.NoScale:            "Nothing says how far such a result may lie from the centre.",
 }
 
 func notJudgedSentences(r store.StoredResult) []string {
 	text := notJudgedTexts[r.Verdict.Reason]
+	if r.Verdict.Reason == judge.NoScale && r.Verdict.By != nil {
+		text = noScale(r)
+	}
 	if r.Voided {
 		text = notJudgedTexts[judge.Voided]
 	}
@@ -33,8 +36,8 @@ func notJudgedSentences(r store.StoredResult) []string {
 // sentences tells how the statistics and lines of the verdict came about.
 func (e *explainer) sentences() []string {
 	v := e.version
-	out := []string{fmt.Sprintf("Version %d of chart %s judged it, effective from %s; it publishes %d decimals and a process sigma of %s %s.",
-		v.Number, v.Chart, v.EffectiveFrom.UTC().Format("2006-01-02T15:04:05Z07:00"), v.Decimals, e.number(v.ProcessSigma), v.Unit)}
+	out := []string{fmt.Sprintf("Version %d of chart %s judged it, effective from %s; it publishes %d decimals%s.",
+		v.Number, v.Chart, v.EffectiveFrom.UTC().Format("2006-01-02T15:04:05Z07:00"), v.Decimals, e.processSigma())}
 	out = append(out, e.modelSentences()...)
 	if e.result.Result.Role == definition.Repeat {
 		out = append(out, "It is a repeat: it is judged as the next point would be, but is no point itself, and does not overrule the first result.")
@@ -97,7 +100,7 @@ func (e *explainer) statistic(role chart.Role, x float64) string {
 	readings := e.result.Result.Readings
 	rounded := fmt.Sprintf("rounded half away from zero to %d decimals: %s", e.version.Decimals, e.number(x))
 	if e.result.Verdict.ByBound {
-		return fmt.Sprintf("Location: the readings %s bound the value, and the bound, %s, proves the verdict.", strings.Join(readings, ", "), e.number(x))
+		return e.boundStatistic(x)
 	}
 	if c := e.result.Result.Count; c != nil {
 		return e.countStatistic(*c, rounded)
@@ -106,8 +109,8 @@ func (e *explainer) statistic(role chart.Role, x float64) string {
 	if err != nil { // the readings were checked when they were stored
 		return ""
 	}
-	if onScale := e.onScale(); onScale != "" {
-		return fmt.Sprintf("%s: %s, %s.", capital(role.String()), onScale, rounded)
+	if e.scaled() {
+		return e.scaledStatistic(role, rounded)
 	}
 	switch {
 	case role == chart.Location && len(readings) == 1:
@@ -131,7 +134,8 @@ func (e *explainer) statistic(role chart.Role, x float64) string {
 			}
 		}
 		if e.relative(pt) {
-			return fmt.Sprintf("Dispersion: the range %s - %s in percent of the mean of the readings, %s.", readings[hi], readings[lo], rounded)
+			return fmt.Sprintf("Dispersion: the range %s - %s in percent of the mean of the readings, %s, %s.", readings[hi], readings[lo],
+				shortest(decimal.Mean(pt.Readings, decimal.Unrounded)), rounded)
 		}
 		return fmt.Sprintf("Dispersion: the range %s - %s, %s.", readings[hi], readings[lo], rounded)
 	}
@@ -158,8 +162,7 @@ func (e *explainer) scale(role chart.Role, t store.TraceVerdict) string {
 		return fmt.Sprintf("Its centre is %s and its sigma the root of %s squared between runs and %s squared / %d within: %s.", e.number(t.Scale.Centre),
 			e.number(e.judge.Limits().Model.BetweenSigma), e.number(e.version.ProcessSigma), n, shortest(significant(t.Scale.Sigma)))
 	case e.version.Kind.Duplicates():
-		return fmt.Sprintf("Its centre is %s and its sigma %s; both follow from the sigma of a single reading at this mean by the chart factors for %d readings.",
-			e.number(t.Scale.Centre), shortest(significant(t.Scale.Sigma)), n)
+		return e.duplicateScale(t, n)
 	case role == chart.Dispersion:
 		return fmt.Sprintf("Its centre is %s and its sigma %s; both follow from the process sigma by the chart factors for %d readings.",
 			e.number(t.Scale.Centre), shortest(significant(t.Scale.Sigma)), e.dispersionSize(n))
@@ -182,8 +185,7 @@ func (e *explainer) line(role chart.Role, name string, l chart.Line, at *float64
 	case at == nil:
 		return fmt.Sprintf("There is no %s line on the %s trace.", name, role)
 	case l.Basis == chart.TailProbability && e.version.Kind.Counts():
-		return fmt.Sprintf("The %s line is %s: the whole count that leaves at most %v beyond it on its side while the mean stays at the centre.",
-			name, e.number(*at), chart.TailOf(multiple))
+		return e.exactLine(name, *at, multiple)
 	case l.Fixed():
 		return fmt.Sprintf("The %s line is %s, a %s: it does not depend on sigma.", name, e.number(*at), strings.ReplaceAll(l.Basis.String(), "_", " "))
 	}

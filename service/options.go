@@ -31,6 +31,9 @@ func readOptions(in *pb.KindOptions, req *limits.Request) (sides rules.Sides, er
 		Bands: in.BandFrom, Sigmas: in.BandSigma, Function: in.SpreadFunction, S0: in.S0, B: in.B,
 		AbsoluteBelow: in.AbsoluteBelow, AbsoluteSigma: in.AbsoluteSigma,
 	}
+	if in.OneSided != pb.WatchedSide_WATCHED_SIDE_UNSPECIFIED && !req.Kind.Has(chart.Location) {
+		return sides, definition.Invalid("one_sided", "is given, but a chart of kind %s has no location trace; it watches the upper side by itself", req.Kind)
+	}
 	return oneSided(in.OneSided, req)
 }
 
@@ -64,6 +67,9 @@ func watched(field string, specs []rules.Spec, sides rules.Sides) ([]rules.Spec,
 		return specs, nil
 	}
 	for i, s := range specs {
+		if s.Sides != rules.BothSides && s.Sides != sides {
+			return nil, definition.Invalid(fmt.Sprintf("%s.rules[%d].sides", field, i), "%s watches the side that this chart does not watch", s.ID)
+		}
 		if s.Kind == rules.Span {
 			return nil, definition.Invalid(fmt.Sprintf("%s.rules[%d]", field, i), "%s looks for points on opposite sides, and one side only is watched", s.ID)
 		}

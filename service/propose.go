@@ -155,18 +155,28 @@ func (s *LimitService) content(ctx context.Context, who store.Actor, p *proposal
 			return none, definition.Invalid(role.String()+"_rules", "are given, but a chart of kind %s has no %s trace", c.Kind, role)
 		}
 	}
-	if c.Kind.Duplicates() {
-		p.dispersion = rules.OneSide(p.dispersion, rules.UpperOnly) // replicates that agree too well are no fault
+	if c.Kind.Duplicates() { // replicates that agree too well are no fault
+		if p.in.GetOptions().GetOneSided() != pb.WatchedSide_WATCHED_SIDE_UNSPECIFIED {
+			return none, definition.Invalid("options.one_sided", "is given, but a chart of kind %s watches the upper side by itself", c.Kind)
+		}
+		if p.dispersion, err = watched("dispersion_rules", p.dispersion, rules.UpperOnly); err != nil {
+			return none, err
+		}
 	}
 	found := cautions(c.Kind, p.location, p.dispersion, append(res.Findings, made.diagnostics.Findings...))
 	if err := accept(found, p.in.AcceptedCautions); err != nil {
 		return none, err
 	}
 	content := p.describe(c, who, res, basis)
-	if content.ChangeTest, err = s.compareStored(ctx, who, p, c, basis, content.Model); err != nil {
+	if content.ChangeTest, err = s.compareStored(ctx, who, p, c, basis); err != nil {
 		return none, err
 	}
-	content.Findings = slices.Concat(findingsOf(res), foundBy(made.diagnostics), found)
+	content.Findings = append(findingsOf(res), foundBy(made.diagnostics)...)
+	for _, f := range found { // a caution about a finding of the computation is that finding
+		if !slices.ContainsFunc(content.Findings, func(have definition.Finding) bool { return have.Code == f.Code }) {
+			content.Findings = append(content.Findings, f)
+		}
+	}
 	return content, checkContent(content)
 }
 

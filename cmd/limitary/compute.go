@@ -140,7 +140,7 @@ func (c *computeCall) againstInForce(req *limits.Request) (*pb.ChangeTest, error
 	if err != nil {
 		return nil, err
 	}
-	out, err := service.CompareSent(inForce, *req)
+	out, err := service.CompareSent(inForce, *req, nil)
 	if err != nil {
 		return nil, fmt.Errorf("--in-force: %w", err)
 	}

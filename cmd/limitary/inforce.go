@@ -44,9 +44,6 @@ func plainReadings(kind chart.Kind) bool {
 
 // read gives the limits in force, which must be of the kind, size and scale of the request.
 func (c *inForceFlags) read(req *limits.Request) (*pb.InForce, error) {
-	if !service.CanCompare(req.Kind) {
-		return nil, usageError{fmt.Errorf("--in-force: fits charts of kind %s, and this one is of kind %s", kindsThat(service.CanCompare), req.Kind)}
-	}
 	in, l, err := readComputed("--in-force", c.file)
 	if err != nil {
 		return nil, err
@@ -72,6 +69,7 @@ func (c *inForceFlags) message(in *pb.ComputeLimitsResponse) *pb.InForce {
 		Centre: in.GetLocation().GetCentre(), ProcessSigma: in.ProcessSigma, CentreGiven: in.CentreOrigin == pb.Origin_ORIGIN_GIVEN,
 		SigmaGiven: in.SigmaOrigin == pb.Origin_ORIGIN_GIVEN, N: in.N, Readings: in.Readings,
 		RelevantShiftSigmas: c.shift.value, RelevantSigmaRatio: c.ratio.value, AfterSignal: c.afterSignal, Looks: int32(c.looks),
+		Model: in.Model, Parts: in.Parts,
 	}
 	if in.Kind == pb.ChartKind_CHART_KIND_RUN_MEANS {
 		between := in.GetModel().GetBetweenSigma()

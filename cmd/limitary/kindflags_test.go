@@ -52,7 +52,7 @@ func TestFlagsThatDoNotFitAreRefused(t *testing.T) {
 		{"--kind individuals --value x --scale log --offset -2", exitFailure, "line 2: 2: with the offset -2 it lies outside the domain of the log scale"},
 		{"--kind duplicate_range --value n,x --bands 0,ten", exitUsage, "want numbers with a decimal point, separated by commas"},
 		{"--kind individuals --value x --looks 2", exitUsage, "go with --in-force FILE"},
-		{"--kind c --value x --in-force nosuch.json", exitUsage, "--in-force: fits charts of kind individuals, xbar_r, xbar_s, run_means, and this one is of kind c"},
+		{"--kind c --value x --in-force nosuch.json", exitFailure, "--in-force: open nosuch.json"},
 		{"--kind individuals --value x --in-force nosuch.json", exitFailure, "--in-force: open nosuch.json"},
 	} {
 		t.Run(c.args, func(t *testing.T) {

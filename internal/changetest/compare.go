@@ -13,32 +13,50 @@ func Compare(req Request) (Result, error) {
 	if err := req.check(); err != nil {
 		return Result{}, err
 	}
+	if req.InForce.Kind.Counts() {
+		return compareCounts(&req)
+	}
 	d, err := gather(&req)
 	if err != nil {
 		return Result{}, err
 	}
-	res := Result{
-		Groups: d.groups(), Readings: d.total, ExcludedLeftOut: d.excluded, BasisLeftOut: d.inOldBasis,
-		Relevance: req.Relevance, Tails: 1, Estimator: req.InForce.Estimator, Looks: looks(req.Looks),
-	}
-	res.Centre.Old, res.Centre.Relevance = req.InForce.Centre, limits.Interval{Lower: -req.Relevance.CentreSigmas, Upper: req.Relevance.CentreSigmas}
-	ratios := limits.Interval{Lower: 1 / req.Relevance.SigmaRatio, Upper: req.Relevance.SigmaRatio}
-	res.Spread.Old, res.Spread.Relevance = req.InForce.Sigma, ratios
-	if req.InForce.Kind != chart.Individuals {
-		res.Means = &Comparison{Old: req.InForce.unit() * req.InForce.Sigma, Relevance: ratios}
-	}
-	if d.groups() > 0 {
+	res := req.InForce.outline(req.Relevance)
+	res.Groups, res.Readings, res.ExcludedLeftOut, res.BasisLeftOut = d.groups(), d.total, d.excluded, d.inOldBasis
+	res.Looks = looks(req.Looks)
+	switch {
+	case req.InForce.Kind.Duplicates(): // whose means say nothing of the process
+		n := float64(d.groups())
+		res.Correlation = Correlation{EffectiveForCentre: n, EffectiveForSpread: n}
+	case d.groups() > 0:
 		res.Correlation = d.correlation()
 	}
 	res.fill(&req, d)
+	res.planned(&req)
 	res.finish(&req)
 	return res, nil
 }
 
+// outline is a result with the figures that a chart of the kind has.
+func (f *InForce) outline(r Relevance) Result {
+	res := Result{Relevance: r, Tails: 1, Dispersion: 1, Estimator: f.Estimator}
+	ratios := limits.Interval{Lower: 1 / r.SigmaRatio, Upper: r.SigmaRatio}
+	res.Spread = &Comparison{Old: f.Sigma, Relevance: ratios}
+	if f.Kind.Duplicates() {
+		return res
+	}
+	res.Centre = &Comparison{Old: f.Centre, Relevance: limits.Interval{Lower: -r.CentreSigmas, Upper: r.CentreSigmas}}
+	if f.Kind != chart.Individuals {
+		res.Means = &Comparison{Old: f.unit() * f.Sigma, Relevance: ratios}
+	}
+	return res
+}
+
 func (res *Result) fill(req *Request, d *fresh) {
 	few := d.groups() < GroupsMin
-	if res.Centre.Reason = TooFew; d.groups() > 0 {
-		res.Centre.takeCentre(req, d, res.Correlation, few)
+	if res.Centre != nil {
+		if res.Centre.Reason = TooFew; d.groups() > 0 {
+			res.Centre.takeCentre(req, d, res.Correlation, few)
+		}
 	}
 	old, now, phi, reason := req.spreadSides(d, res.Correlation)
 	res.Tails = phi

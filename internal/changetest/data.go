@@ -22,6 +22,8 @@ type fresh struct {
 
 	excluded, inOldBasis int
 	estimates            []limits.Estimate
+	// parts are the degrees of freedom of sets of duplicates by the part of the sigma in force that they lie in.
+	parts []float64
 }
 
 // inBasis is the reason by which groups of the old basis are kept from the estimators.
@@ -29,28 +31,40 @@ const inBasis = "in the basis of the limits in force"
 
 // gather checks the groups, takes up the new ones and estimates their sigma by every estimator of the kind.
 func gather(req *Request) (*fresh, error) {
+	if req.InForce.Kind.Duplicates() {
+		return gatherDuplicates(req)
+	}
 	d := &fresh{size: req.InForce.SubgroupSize}
-	groups := make([]limits.Group, len(req.Groups))
-	for i, g := range req.Groups {
+	groups := req.newGroups()
+	if err := d.estimateAll(&req.InForce, groups); err != nil {
+		return nil, err
+	}
+	for i := range d.estimates {
+		d.estimates[i].Sigma /= req.InForce.Sigma
+	}
+	return d, d.take(req, groups)
+}
+
+// newGroups are the groups with those of the old basis excluded.
+func (r *Request) newGroups() []limits.Group {
+	groups := make([]limits.Group, len(r.Groups))
+	for i, g := range r.Groups {
 		groups[i] = g.Group
 		if g.InOldBasis && !g.Excluded {
 			groups[i].Excluded, groups[i].ExclusionReason = true, inBasis
 		}
 	}
-	// Centre and sigma given mean that package limits publishes nothing from the groups, and so refuses none of them for
-	// what it could not publish. The estimates come along all the same.
+	return groups
+}
+
+// estimateAll estimates sigma of the groups by every estimator of the kind. Centre and sigma given mean that package
+// limits publishes nothing from the groups, and so refuses none of them for what it could not publish. The estimates come
+// along all the same.
+func (d *fresh) estimateAll(f *InForce, groups []limits.Group) error {
 	zero, one := 0.0, 1.0
-	res, err := limits.Compute(limits.Request{
-		Kind: req.InForce.estimating(), SubgroupSize: req.InForce.SubgroupSize, Groups: groups, Centre: &zero, Sigma: &one,
-	})
-	if err != nil {
-		return nil, err
-	}
+	res, err := limits.Compute(limits.Request{Kind: f.estimating(), SubgroupSize: f.SubgroupSize, Groups: groups, Centre: &zero, Sigma: &one})
 	d.estimates = res.Estimates
-	for i := range d.estimates {
-		d.estimates[i].Sigma /= req.InForce.Sigma
-	}
-	return d, d.take(req, groups)
+	return err
 }
 
 func (d *fresh) take(req *Request, groups []limits.Group) error {
@@ -168,8 +182,13 @@ func isMovingRange(name limits.Estimator) bool {
 }
 
 func noun(kind chart.Kind) string {
-	if kind == chart.Individuals {
+	switch {
+	case kind == chart.Individuals:
 		return "results"
+	case kind.Counts():
+		return "samples"
+	case kind.Duplicates():
+		return "sets of duplicates"
 	}
 	return "subgroups"
 }

@@ -85,16 +85,9 @@ func search(low int, settles func(n int) bool) Needed {
 func (res *Result) planned(req *Request) {
 	f := &req.InForce
 	perGroup := sync.OnceValue(func() float64 { return freedomPerGroup(f) })
-	res.Centre.plan(func(n float64, old bool) *limits.Interval {
-		m := meanTest{now: variance{1 / n, n - 1}}
-		if old && !f.CentreTarget {
-			m.old = variance{float64(f.SubgroupSize) / float64(f.Readings), f.freedom()}
-			if _, freedom, known := f.means(); known {
-				m.old.freedom = freedom
-			}
-		}
-		return m.interval(1)
-	})
+	if res.Centre != nil {
+		res.Centre.plan(f.plannedCentre)
+	}
 	res.Spread.plan(func(n float64, old bool) *limits.Interval {
 		return spreadTest{1, n * perGroup(), freedomIf(old, f.freedom())}.interval(1)
 	})
@@ -108,6 +101,18 @@ func (res *Result) planned(req *Request) {
 	res.Means.plan(func(n float64, old bool) *limits.Interval {
 		return spreadTest{1, n - 1, freedomIf(old, freedom)}.interval(1)
 	})
+}
+
+// plannedCentre is the interval of a centre that has not changed.
+func (f *InForce) plannedCentre(n float64, old bool) *limits.Interval {
+	m := meanTest{now: variance{1 / n, n - 1}}
+	if old && !f.CentreTarget {
+		m.old = variance{float64(f.SubgroupSize) / float64(f.Readings), f.freedom()}
+		if _, freedom, known := f.means(); known {
+			m.old.freedom = freedom
+		}
+	}
+	return m.interval(1)
 }
 
 // plan takes the interval that n groups would give, with the old side's error or without.

@@ -106,7 +106,7 @@ func TestNeededSettles(t *testing.T) {
 		return groups
 	}
 	for shift, want := range map[float64]changetest.Decision{0.3: changetest.Keep, -0.72: changetest.Change} {
-		decide := func(n int) changetest.Comparison {
+		decide := func(n int) *changetest.Comparison {
 			return mustCompare(t, changetest.Request{InForce: f, Groups: series(shift, n), Looks: 1}).Centre
 		}
 		first := decide(20)

@@ -46,12 +46,35 @@
 // new estimate of sigma varies more than that of normal readings, for the overall sigma from the kurtosis (Shoemaker 2003,
 // Bonett 2006, both from memory), for the others from the moving ranges or subgroups themselves.
 //
+// # Counts
+//
+// Charts of counts have one figure, the centre: where nothing but counting scatters, the scatter follows from it, and what
+// goes beyond counting is a matter of the model of the limits, not of this comparison. The unit is the sigma in force at
+// Model.Inspected, with the extra variation of the model in it. Each side has a score interval (Wilson 1927), which holds
+// for few counts and for none, and the two are joined by the square-and-add rule (Newcombe 1998; both from memory). The
+// new side is freed of the factor φ >= 1 by which its mean varies more than counting explains: Pearson's from the new
+// counts, or that of the model in force where it is more, as after counts of zero, which show none. The old side has that
+// of its model, or, where the model has none, the new side's. Quantiles are those of Student's t at the degrees of freedom
+// of the factors, so intervals are a little wide: they hold the truth in 96 to 98 % of cases where counts vary as counting
+// has it, and in 95 to 98 % with two or three times its variance (simulated, see the tests). The p-value is that at
+// which the interval reaches no difference; the plain test is χ² of the totals, which then finds a difference that is none in
+// 15 to 45 % of cases.
+//
+// # Duplicates
+//
+// Charts of duplicates have one figure, the spread. Readings are divided by the sigma in force at the mean of their set, so
+// that bands, a function of the mean and percentages all come to one ratio; a set without a sigma in force, a percentage
+// of a mean of zero, is left out. The error of the old side is that of the parts that the new sets lie in, see Part. A
+// function of the mean takes its error from all sets of its basis, which holds where the new means lie like the old ones.
+// Ranges of different samples are taken for independent.
+//
 // # Correlation
 //
 // Results that follow each other closely are worth fewer. The lag-1 correlation r of the new series, within unbroken
 // stretches and corrected for bias, leaves n(1-r)/(1+r) of n results for the centre and n(1-r²)/(1+r²) for a standard
 // deviation about it (first-order autoregression, from memory). The old results are taken to be alike, since only summary
-// figures of them are at hand. The uncertainty of r itself lowers the degrees of freedom.
+// figures of them are at hand. The uncertainty of r itself lowers the degrees of freedom. For counts r is that of the
+// standardised counts, and no more than what goes beyond counting allows.
 //
 // # What is not covered
 //

@@ -108,7 +108,7 @@ func TestTooFewResults(t *testing.T) {
 			f.CentreTarget, f.SigmaTarget = true, true
 			groups := groupsOf(laws[0].draw(rand.New(rand.NewPCG(2, 2)), n*size), size, 0, 1)
 			res := mustCompare(t, changetest.Request{InForce: f, Groups: groups, Looks: 1})
-			for _, c := range []*changetest.Comparison{&res.Centre, &res.Spread} {
+			for _, c := range []*changetest.Comparison{res.Centre, res.Spread} {
 				if c.Decision != changetest.NotEnoughData || c.Reason != changetest.TooFew || c.Interval != nil || c.PValid || c.Needed == nil || c.Published != nil || !c.Needed.Reachable {
 					t.Errorf("%s, %d groups: got %+v", kind, n, c)
 				}

@@ -40,3 +40,8 @@ func VarianceOfMeans(f InForce, readings []float64, r float64) (now, old float64
 	b, _ := f.oldVariance(d, c)
 	return a.of, b.of
 }
+
+// CountsWithin gives the differences of two means of counts within q standard errors; old of none inspected is a target.
+func CountsWithin(items bool, nowMean, nowInspected, oldMean, oldInspected, q float64) limits.Interval {
+	return countTest{items: items, now: countSide{nowMean, nowInspected, 1}, old: countSide{oldMean, oldInspected, 1}, unit: 1}.within(q, 1)
+}

@@ -35,7 +35,7 @@ func requests(r *rand.Rand) (all []changetest.Request) {
 
 // figures of a result that do not hang on the unit.
 func figures(res changetest.Result) (all []float64) {
-	comparisons := []*changetest.Comparison{&res.Centre, &res.Spread}
+	comparisons := []*changetest.Comparison{res.Centre, res.Spread}
 	if res.Means != nil {
 		comparisons = append(comparisons, res.Means)
 	}
@@ -136,7 +136,7 @@ func TestTargetIsTheLimitOfALargeBasis(t *testing.T) {
 		wanted := figures(want)
 		got[7], got[8] = wanted[7], wanted[8]
 		sameFigures(t, req.InForce.Estimator.String(), got, wanted, 2e-4)
-		for _, c := range []*changetest.Comparison{&want.Centre, &want.Spread} {
+		for _, c := range []*changetest.Comparison{want.Centre, want.Spread} {
 			if *c.Published.Interval != *c.Interval || c.Published.Decision != c.Decision {
 				t.Errorf("%s: against a target got %+v and, as published, %+v", req.InForce.Estimator, *c.Interval, *c.Published.Interval)
 			}
@@ -179,7 +179,7 @@ func TestIntervalAndTestAgree(t *testing.T) {
 	for range 20 {
 		for _, req := range requests(r) {
 			res := mustCompare(t, req)
-			for _, c := range []*changetest.Comparison{&res.Centre, &res.Spread} {
+			for _, c := range []*changetest.Comparison{res.Centre, res.Spread} {
 				if c.Differs != (c.Test.P < 0.05) {
 					t.Errorf("interval %+v, p %g, differs %t", *c.Interval, c.Test.P, c.Differs)
 				}

@@ -61,7 +61,8 @@ const (
 	Confidence = limits.Confidence
 )
 
-// Test is a significance test: t with one, F with two degrees of freedom. A target has infinite ones.
+// Test is a significance test: t with one, F with two degrees of freedom. A target has infinite ones, and so has the
+// plain test of counts.
 type Test struct {
 	Statistic, Freedom, FreedomBelow float64
 	P                                float64
@@ -110,22 +111,35 @@ type Published struct {
 
 // Result of a comparison.
 type Result struct {
-	// Groups and Readings of the new side; ExcludedLeftOut and BasisLeftOut count groups that were given and not used. A
+	// Groups and Readings of the new side, or for counts what was Inspected in all, in items or units; ExcludedLeftOut and BasisLeftOut count groups that were given and not used. A
 	// group that is excluded and of the old basis counts as the latter.
 	Groups, Readings              int
+	Inspected                     float64
 	ExcludedLeftOut, BasisLeftOut int
 	Relevance                     Relevance
 	Correlation                   Correlation
 	// Tails is the factor φ by which the new sigma varies more than that of normal readings, at least 1.
 	Tails float64
-	// Estimator of both sigmas of the spread.
+	// Dispersion is the factor φ, at least 1, by which a mean of the new counts varies more than counting explains, as a
+	// variance; 1 for other kinds.
+	Dispersion float64
+	// Estimator of both sigmas of the spread; none for counts.
 	Estimator limits.Estimator
-	// Centre, and Spread of single readings (within subgroups for means). Means is the spread of the subgroup means, nil for
-	// individuals.
-	Centre, Spread Comparison
-	Means          *Comparison
+	// Centre, nil for duplicates, and Spread of single readings (within subgroups for means), nil for counts. Means is the
+	// spread of the subgroup means, nil but for charts of means.
+	Centre, Spread, Means *Comparison
 	// Decision is Change where any comparison says so, Keep where all do, else NotEnoughData.
 	Decision Decision
 	Looks    Looks
 	Sentence string
+}
+
+// Figures are the comparisons that there are.
+func (res *Result) Figures() (all []*Comparison) {
+	for _, c := range []*Comparison{res.Centre, res.Spread, res.Means} {
+		if c != nil {
+			all = append(all, c)
+		}
+	}
+	return all
 }

@@ -61,7 +61,11 @@ func (r *Request) spreadSides(d *fresh, c Correlation) (old, now side, phi float
 	}
 	square := isSquare(f.Estimator)
 	now = side{sigma: e.Sigma, plain: e.DegreesOfFreedom, used: reduced(e.DegreesOfFreedom, factor), square: square}
-	old = side{sigma: 1, plain: f.freedom(), used: reduced(f.freedom(), factor), square: square}
+	freedom := f.freedom()
+	if f.Kind.Duplicates() {
+		freedom = f.duplicatesFreedom(d.parts)
+	}
+	old = side{sigma: 1, plain: freedom, used: reduced(freedom, factor), square: square}
 	return old, now, phi, Settled
 }
 

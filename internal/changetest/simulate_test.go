@@ -169,8 +169,8 @@ func run(t testing.TB, d design, l law, s scenario, runs int, seed uint64) (all 
 		if err != nil {
 			t.Fatal(err)
 		}
-		all[0].add(&res.Centre, s.shift, (10+s.shift*unit-old.Centre)/unit)
-		all[1].add(&res.Spread, s.scale, s.scale/old.Sigma)
+		all[0].add(res.Centre, s.shift, (10+s.shift*unit-old.Centre)/unit)
+		all[1].add(res.Spread, s.scale, s.scale/old.Sigma)
 		if res.Means != nil {
 			all[2].add(res.Means, s.scale, s.scale/math.Sqrt(float64(d.size))/unit)
 		}

@@ -8,15 +8,10 @@ import (
 	"limitary/internal/limits"
 )
 
-// finish adds what depends on how the comparison came about, the plans, and the words.
+// finish adds what depends on how the comparison came about, and the words.
 func (res *Result) finish(req *Request) {
-	res.planned(req)
-	all := []*Comparison{&res.Centre, &res.Spread}
-	if res.Means != nil {
-		all = append(all, res.Means)
-	}
 	res.Decision = Keep
-	for _, c := range all {
+	for _, c := range res.Figures() {
 		switch {
 		case c.Decision == Change:
 			res.Decision = Change
@@ -26,13 +21,20 @@ func (res *Result) finish(req *Request) {
 		c.PValid, c.PReason = validity(c, req)
 	}
 	things := noun(req.InForce.Kind)
-	res.Centre.Sentence = res.Centre.sentence("centre", "%.2f sigmas", things)
+	if res.Centre != nil {
+		res.Centre.Sentence = res.Centre.sentence("centre", "%.2f sigmas", things)
+	}
 	spread := "spread"
 	if res.Means != nil {
 		spread = "spread within subgroups"
 		res.Means.Sentence = res.Means.sentence("spread of the subgroup means", "%.2f times the old", things)
 	}
-	res.Spread.Sentence = res.Spread.sentence(spread, "%.2f times the old", things)
+	if req.InForce.Kind.Duplicates() {
+		spread = "spread within duplicates"
+	}
+	if res.Spread != nil {
+		res.Spread.Sentence = res.Spread.sentence(spread, "%.2f times the old", things)
+	}
 	res.Sentence = res.overall(req, things)
 }
 
@@ -147,10 +149,16 @@ func (res *Result) overall(req *Request, things string) string {
 		b.WriteString("The new results do not decide whether to keep the limits; go on with those in force.")
 	}
 	fmt.Fprintf(&b, " New %s compared: %d", things, res.Groups)
-	if req.InForce.Kind != chart.Individuals {
+	switch kind := req.InForce.Kind; {
+	case kind.Items():
+		fmt.Fprintf(&b, " (%.10g items)", res.Inspected)
+	case kind.Counts():
+		fmt.Fprintf(&b, " (%.6g inspection units)", res.Inspected)
+	case kind != chart.Individuals:
 		fmt.Fprintf(&b, " (%d readings)", res.Readings)
 	}
 	fmt.Fprintf(&b, "; left out: %d of the old basis, %d excluded.", res.BasisLeftOut, res.ExcludedLeftOut)
+	b.WriteString(res.oneFigure(req.InForce.Kind))
 	if res.Correlation.Used >= correlationTold {
 		fmt.Fprintf(&b, " Neighbours are correlated (%.2f), so the centre counts as that of %.0f independent %s.", res.Correlation.Used, res.Correlation.EffectiveForCentre, things)
 	}
@@ -162,6 +170,22 @@ func (res *Result) overall(req *Request, things string) string {
 	}
 	return b.String()
 }
+
+// oneFigure says what the one figure of a kind is.
+func (res *Result) oneFigure(kind chart.Kind) string {
+	switch {
+	case kind.Duplicates():
+		return " The one figure is the spread: each range over what the limits in force expect at its mean."
+	case kind.Counts() && res.Dispersion > dispersionTold:
+		return fmt.Sprintf(" The one figure is the centre; counts vary more than counting explains, so its variance is taken as %.2f times that.", res.Dispersion)
+	case kind.Counts():
+		return " The one figure is the centre, from which the scatter of counts follows."
+	}
+	return ""
+}
+
+// dispersionTold is the factor from which on it is mentioned, as a tenth of the samples at most are taken off below.
+const dispersionTold = 1.1
 
 // correlationTold is the correlation from which on it is mentioned: less takes off a tenth of the results at most. It is
 // used all the same.

@@ -175,8 +175,8 @@ type ChangeTest struct {
 	Results            int           `json:"results"`
 	Excluded           int           `json:"excluded"`
 	InOldBasis         int           `json:"in_old_basis"`
-	Centre             ChangeFigure  `json:"centre"`
-	Spread             ChangeFigure  `json:"spread"`
+	Centre             ChangeFigure  `json:"centre,omitzero"`
+	Spread             ChangeFigure  `json:"spread,omitzero"`
 	Means              *ChangeFigure `json:"means,omitempty"`
 	Decision           string        `json:"decision"`
 	Looks              int           `json:"looks"`

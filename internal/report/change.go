@@ -26,7 +26,7 @@ type ChangeFigure struct {
 	Decision, Text               string
 	// Needed is about how many new results would settle it; nil where it is settled, or nothing would.
 	Needed *int
-	// P of no difference; not valid for PReason. PlainP is that of the plain t or F test.
+	// P of no difference; not valid for PReason. PlainP is that of the plain t, F or chi-square test.
 	P       *float64
 	PValid  bool
 	PReason string
