@@ -34,6 +34,7 @@ var (
 	grpc     = []string{"google.golang.org/grpc", "google.golang.org/protobuf", "google.golang.org/genproto/googleapis"}
 	gateway  = []string{"github.com/grpc-ecosystem/grpc-gateway/v2"}
 	wire     = joined(grpc, gateway)
+	excelize = []string{"github.com/xuri/excelize/v2"}
 	outworld = []string{"net", "database/sql", "log", "os", "context", "time", "runtime"}
 
 	coreWhy = "the numeric core takes values and gives values: no clock, context, log, file, network or database"
@@ -74,8 +75,10 @@ var table = []row{
 	{pkg: "api/...", modules: wire},
 	{pkg: "service", own: joined(core, []string{"api/...", "internal/definition", "internal/track", "internal/store"}), modules: grpc,
 		refused: []string{"net/http", "database/sql"}, why: "a handler decodes, calls and encodes; SQL and HTTP live elsewhere"},
-	planned(row{pkg: "internal/sheet/...", own: []string{"api/..."}, modules: grpc, refused: []string{"database/sql"},
-		why: "the sheet is a client of the API", unreachable: pgx}),
+	{pkg: "internal/sheet", own: []string{"api/...", "internal/decimal", "internal/sheet/..."}, modules: grpc, refused: []string{"database/sql"},
+		why: "the sheet is a client of the API", unreachable: pgx},
+	{pkg: "internal/sheet/...", own: []string{"internal/sheet/..."}, modules: excelize, refused: []string{"net/http", "database/sql"},
+		why: "blocks, tables and workbooks are read and written the same whoever asks", unreachable: joined(wire, pgx)},
 	planned(row{pkg: "internal/console/...", own: []string{"api/..."}, modules: grpc, refused: []string{"database/sql"},
 		why: "the console is a client of the API", unreachable: pgx}),
 	{pkg: "internal/server", own: []string{"api/...", "service", "internal/sheet/...", "internal/console/...", "internal/store", "internal/definition"},

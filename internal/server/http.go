@@ -59,8 +59,16 @@ func (s *Server) newHTTP(h *health, secure *tls.Config) error {
 	mux.HandleFunc("/", func(w http.ResponseWriter, r *http.Request) {
 		s.routingError(r.Context(), nil, nil, w, r, http.StatusNotFound)
 	})
+	sheets := s.newSheets()
+	handler := http.HandlerFunc(func(w http.ResponseWriter, r *http.Request) {
+		if strings.HasPrefix(r.URL.Path, sheetPath) { // before the mux, which would redirect with the address, and its key, in the answer
+			sheets.ServeHTTP(w, r)
+			return
+		}
+		mux.ServeHTTP(w, r)
+	})
 	s.http = &http.Server{
-		Handler: s.identify(mux), TLSConfig: secure,
+		Handler: s.identify(handler), TLSConfig: secure,
 		ReadHeaderTimeout: headerTimeout, ReadTimeout: bodyTimeout, IdleTimeout: idleTimeout,
 		WriteTimeout: bodyTimeout + s.options.TimeoutMax, MaxHeaderBytes: headerBytesMax,
 		ErrorLog: log.New(logWriter{s.options.Log}, "", 0),

@@ -1,7 +1,7 @@
 // Package server is everything around the services: listeners, interceptors, the REST gateway, health and the way down.
 //
 // There are two listeners. One speaks gRPC on its native transport. The other speaks HTTP: REST through the gateway, the
-// OpenAPI document, /healthz (the process lives) and /readyz (the database answers and has the schema of this build).
+// OpenAPI document, spreadsheets under /sheet/, /healthz (the process lives) and /readyz (the database answers and has the schema of this build).
 // The gateway calls the same services over a connection in memory, so that identity, limits, deadlines, logging and the
 // error table act once for both faces.
 //
@@ -17,6 +17,7 @@ import (
 	"log/slog"
 	"net"
 	"net/http"
+	"runtime"
 	"sync"
 	"time"
 
@@ -43,6 +44,10 @@ const (
 	// DefaultTimeout is for calls that bring no deadline of their own, DefaultTimeoutMax for those that bring a longer one.
 	DefaultTimeout    = 30 * time.Second
 	DefaultTimeoutMax = 5 * time.Minute
+	// DefaultSheetRate and DefaultSheetBurst are how many sheet reads a second one key may do, and how many at once: a
+	// workbook with 5,000 cells recalculates without waiting.
+	DefaultSheetRate  = 200
+	DefaultSheetBurst = 5000
 	// DefaultDrain is how long calls in work may take to end once the server is told to stop.
 	DefaultDrain = 20 * time.Second
 )
@@ -60,6 +65,10 @@ type Options struct {
 	Timeout, TimeoutMax time.Duration
 	Drain               time.Duration
 
+	// SheetRate is in reads a second for each key, SheetBurst in reads. SheetCallsMax bounds the sheet reads in work, so that
+	// many workbooks at once leave room for posting; by default half the processors, and at least 2.
+	SheetRate, SheetBurst, SheetCallsMax int
+
 	Log *slog.Logger
 	Now func() time.Time
 }
@@ -73,6 +82,15 @@ func (o *Options) fill() {
 	set(&o.Timeout, DefaultTimeout)
 	set(&o.TimeoutMax, DefaultTimeoutMax)
 	set(&o.Drain, DefaultDrain)
+	count := func(at *int, n int) {
+		if *at == 0 {
+			*at = n
+		}
+	}
+	count(&o.SheetRate, DefaultSheetRate)
+	count(&o.SheetBurst, DefaultSheetBurst)
+	count(&o.SheetCallsMax, max(2, runtime.GOMAXPROCS(0)/2))
+	count(&o.CallsMax, DefaultCallsMax)
 	if o.HTTPAddress == "" {
 		o.HTTPAddress = DefaultHTTPAddress
 	}
@@ -82,15 +100,20 @@ func (o *Options) fill() {
 	if o.BodyBytesMax == 0 {
 		o.BodyBytesMax = DefaultBodyBytesMax
 	}
-	if o.CallsMax == 0 {
-		o.CallsMax = DefaultCallsMax
-	}
 	if o.Log == nil {
 		o.Log = slog.New(slog.DiscardHandler)
 	}
 	if o.Now == nil {
 		o.Now = time.Now
 	}
+}
+
+// scheme is how callers reach the HTTP listener.
+func (o *Options) scheme() string {
+	if o.TLSCert != "" || o.BehindProxy {
+		return "https"
+	}
+	return "http"
 }
 
 // Server is a running service. New makes its listeners, Run serves until its context ends.
