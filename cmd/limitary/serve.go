@@ -11,9 +11,9 @@ import (
 	"limitary/internal/store"
 )
 
-const serveAbout = `Serves gRPC, and REST with the OpenAPI document, until it is stopped. Without the address of a database it runs
-a private, durable PostgreSQL of its own and keeps its schema up to date; a database given by its address must have been
-brought up to date with "limitary migrate".
+const serveAbout = `Serves gRPC, REST with the OpenAPI document, and spreadsheets under /sheet/, until it is stopped. Without the
+address of a database it runs a private, durable PostgreSQL of its own and keeps its schema up to date; a database given
+by its address must have been brought up to date with "limitary migrate".
 
 Listening beyond this machine needs --tls-cert and --tls-key, or --behind-proxy where a proxy in front does TLS.`
 
@@ -37,6 +37,9 @@ func (s *serveFlags) add(f *flagSet) {
 	f.DurationVar(&s.server.Timeout, "timeout", server.DefaultTimeout, "time for a call that brings no deadline")
 	f.DurationVar(&s.server.TimeoutMax, "timeout-max", server.DefaultTimeoutMax, "time for a call that brings a longer deadline")
 	f.DurationVar(&s.server.Drain, "drain", server.DefaultDrain, "time for calls in work when the service is stopped")
+	f.IntVar(&s.server.SheetRate, "sheet-rate", server.DefaultSheetRate, "`N` sheet reads a second for each key, once the burst is used up")
+	f.IntVar(&s.server.SheetBurst, "sheet-burst", server.DefaultSheetBurst, "`N` sheet reads at once for each key: cells of a workbook that recalculates")
+	f.IntVar(&s.server.SheetCallsMax, "sheet-calls-max", 0, "`N` sheet reads in work at once, so that they leave room for posting (default half the processors, at least 2)")
 	f.IntVar(&s.maxConns, "database-connections", 0, "`N` connections to the database at most (default 16)")
 	f.StringVar(&s.logLevel, "log-level", "info", "debug, info, warn or error")
 }
@@ -49,6 +52,9 @@ func (s *serveFlags) check(env *environment) error {
 	}
 	if s.server.CallsMax < 1 || s.server.BodyBytesMax < 1 || s.maxConns < 0 {
 		return errors.New("--calls-max and --body-bytes-max want 1 or more, --database-connections 0 or more")
+	}
+	if s.server.SheetRate < 1 || s.server.SheetBurst < 1 || s.server.SheetCallsMax < 0 {
+		return errors.New("--sheet-rate and --sheet-burst want 1 or more, --sheet-calls-max 0 or more")
 	}
 	for _, d := range []time.Duration{s.server.Timeout, s.server.TimeoutMax, s.server.Drain} {
 		if d <= 0 {

@@ -52,6 +52,16 @@ func TestServeMakesNoDatabaseWhereItCannotListen(t *testing.T) {
 	}
 }
 
+func TestServeRefusesFiguresThatServeNobody(t *testing.T) {
+	for _, c := range [][2]string{{"--sheet-rate", "0"}, {"--sheet-burst", "0"}, {"--sheet-calls-max", "-1"}, {"--calls-max", "0"}} {
+		var out, errs bytes.Buffer
+		if code := run(t.Context(), testEnvironment(&out, &errs), []string{"serve", c[0], c[1]}); code != exitUsage {
+			t.Errorf("%s %s: got code %d, want %d", c[0], c[1], code, exitUsage)
+		}
+		wantText(t, errs.String(), c[0], "want")
+	}
+}
+
 func TestMissingServerProgramsNameTheCommandThatInstallsThem(t *testing.T) {
 	for _, c := range []struct {
 		data    string

@@ -15,12 +15,14 @@ import (
 )
 
 // The principals of the demo: a version needs two people, and posting, reviewing and administration have one each.
+// The key of sheets can only read: it stands in addresses.
 const (
 	demoLIMS     = "demo-lims"
 	demoAuthor   = "demo-author"
 	demoApprover = "demo-approver"
 	demoReviewer = "demo-reviewer"
 	demoAdmin    = "demo-admin"
+	demoSheet    = "demo-sheet"
 )
 
 var demoRoles = []struct {
@@ -33,6 +35,7 @@ var demoRoles = []struct {
 	{demoApprover, definition.Approver, "approves them, confirms requests"},
 	{demoReviewer, definition.Reviewer, "decides on signals, releases tracks"},
 	{demoAdmin, definition.Admin, "makes keys, archives charts"},
+	{demoSheet, definition.Reader, "reads, for cells of a workbook"},
 }
 
 // demoKeyLife is short: the demo's keys are made anew at every start.
@@ -44,6 +47,9 @@ func demoKeys(ctx context.Context, env *environment, s *store.Store) (map[string
 	for _, d := range demoRoles {
 		k := definition.Key{
 			Principal: d.principal, Roles: []definition.Permission{d.role}, ExpiresAt: env.Now().Add(demoKeyLife).UTC().Truncate(time.Second),
+		}
+		if d.principal == demoSheet {
+			k.Labels = demo.Labels() // a key in an address sees no more than it must
 		}
 		_, token, err := makeKey(ctx, s, k)
 		if err != nil {

@@ -7,9 +7,11 @@ import (
 	"errors"
 	"io"
 	"net"
+	"net/http"
 	"os"
 	"os/exec"
 	"path/filepath"
+	"strconv"
 	"strings"
 	"syscall"
 	"testing"
@@ -102,6 +104,11 @@ func TestTryKeepsEverythingThroughKill(t *testing.T) {
 	wantText(t, calls[2].do(t), `"rule":"nelson-1984/1"`, `"chart":"nitrate-ic2-mid"`, `"chart":"lead-icpms-low"`)
 	wantText(t, calls[0].do(t), `"POST_OUTCOME_DUPLICATE"`)
 
+	limit := fetchSheet(t, first.text)
+	if n, err := strconv.ParseFloat(limit, 64); err != nil || n < 5 || n > 5.241 {
+		t.Errorf("the cell that is printed gives %q, want a line below the 5.241 that was too high", limit)
+	}
+
 	if err := first.cmd.Process.Kill(); err != nil {
 		t.Fatal(err)
 	}
@@ -126,6 +133,27 @@ func TestTryKeepsEverythingThroughKill(t *testing.T) {
 	if err := second.cmd.Wait(); err != nil {
 		t.Errorf("stopped by SIGTERM: got %v, want a good end; it said:\n%s", err, second.stderr)
 	}
+}
+
+// fetchSheet fetches the address that is printed for a cell.
+func fetchSheet(t *testing.T, text string) string {
+	t.Helper()
+	at := strings.Index(text, "/sheet/limit/")
+	if at < 0 {
+		t.Fatalf("no address for a cell in:\n%s", text)
+	}
+	address := text[strings.LastIndex(text[:at], "\n")+1:]
+	address, _, _ = strings.Cut(address, "\n")
+	resp, err := http.Get(address)
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer resp.Body.Close()
+	body, err := io.ReadAll(resp.Body)
+	if err != nil {
+		t.Fatal(err)
+	}
+	return string(body)
 }
 
 func testEnvironment(stdout, stderr io.Writer) *environment {

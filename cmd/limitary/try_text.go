@@ -28,6 +28,11 @@ func (t tryText) Poster() string { return t.Tokens[demoLIMS] }
 // Reviewer reads and decides.
 func (t tryText) Reviewer() string { return t.Tokens[demoReviewer] }
 
+// Sheet is an address that any cell can fetch: its key can only read.
+func (t tryText) Sheet() string {
+	return t.HTTP + "/sheet/limit/nitrate-ic2-mid/upper_action?key=" + t.Tokens[demoSheet]
+}
+
 // Keys lists who has which.
 func (t tryText) Keys() []tryKey {
 	var out []tryKey
@@ -77,6 +82,12 @@ curl -sS -w '\n' '{{.HTTP}}/v1/charts/nitrate-ic2-mid/results:explain?source=lim
 
 curl -sS -w '\n' '{{.HTTP}}/v1/signals?labels=group=fellmark-water&statuses=SIGNAL_STATUS_OPEN' \
   -H 'Authorization: Bearer {{.Reviewer}}'
+
+In a browser, or in a spreadsheet as =NUMBERVALUE(WEBSERVICE("..."),"."), the upper action limit in force:
+
+{{.Sheet}}
+
+For formulas of other programs, macros and a workbook that asks by itself: {{.HTTP}}/sheet/kit
 
 All data here are invented. A signal is statistical evidence about the measuring process, not a compliance, release or
 safety decision, and a clear standing does not mean that a result is right. Every explanation carries the full text.
