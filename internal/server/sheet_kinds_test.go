@@ -87,6 +87,9 @@ func TestCellsOfEveryKind(t *testing.T) {
 		"limit/lead/dispersion_centre?unit=original&material=high":    "0.90", // 1.128·0.8
 		"limit/turbidity/lower_action?unit=original&decimal=comma":    "0,2231",
 		"limit/turbidity/upper_warning?unit=original&decimal=comma":   "2,718",
+		"limit/turbidity/scale":                                       "LOG",
+		"limit/turbidity/original_centre":                             "1",
+		"limit/lead/scale":                                            "STANDARDISED",
 		"verdict/turbidity?value=4.5":                                 "not recorded; STOP;",
 		"verdict/turbidity?value=4.4":                                 "not recorded; CLEAR;",
 		"verdict/turbidity?value=4.4&inspected=":                      "not recorded; CLEAR;",
@@ -100,6 +103,10 @@ func TestCellsOfEveryKind(t *testing.T) {
 	got, err := strconv.ParseFloat(b.get("limit/turbidity/upper_action?unit=original"), 64)
 	if want := math.Exp(1.5); err != nil || math.Abs(got-want) > 1e-12*want {
 		t.Errorf("the upper action line of turbidity: %v, %v, want %v", got, err, want)
+	}
+	table := b.get("limits.csv")
+	if header, _, _ := strings.Cut(table, "\n"); !strings.Contains(header, ",scale,original_centre,") || !strings.Contains(table, ",LOG,1,0.2231") {
+		t.Errorf("a table that does not say on which scale the limits of turbidity are:\n%s", table)
 	}
 }
 

@@ -144,7 +144,37 @@ func init() {
 		names[name] = func(v *pb.Version) grid.Value { return ofTrace(v.Location, of) }
 		names[ofDispersion+name] = func(v *pb.Version) grid.Value { return ofTrace(v.Dispersion, of) }
 	}
+	for name, of := range places {
+		names[inUnit+name] = func(v *pb.Version) grid.Value {
+			if o := v.Location.GetOriginal(); o != nil {
+				return grid.Optional(of(o))
+			}
+			return grid.Value{}
+		}
+	}
+	names["scale"] = func(v *pb.Version) grid.Value { return scaleOf(v.Model) }
+	names["inspected"] = func(v *pb.Version) grid.Value {
+		if n := v.GetModel().GetInspected(); n > 0 {
+			return grid.Float(n)
+		}
+		return grid.Value{}
+	}
 	names[ofDispersion+"rules"] = func(v *pb.Version) grid.Value { return rulesOf(v.Dispersion) }
+}
+
+// inUnit begins the names of places in the chart's unit, where the chart is judged on a transformed scale; they are blank
+// elsewhere.
+const inUnit = "original_"
+
+// scaleOf names the scale that centre, sigma and lines are on; blank where it is the chart's unit.
+func scaleOf(m *pb.Model) grid.Value {
+	switch {
+	case m.GetTransform().GetKind() != pb.TransformKind_TRANSFORM_KIND_UNSPECIFIED:
+		return grid.Of(word(m.Transform.Kind.String(), "TRANSFORM_KIND_"))
+	case len(m.GetLevels()) > 0:
+		return grid.Of("STANDARDISED")
+	}
+	return grid.Value{}
 }
 
 func ofTrace(t *pb.TraceLimits, of func(*pb.TraceLimits) grid.Value) grid.Value {

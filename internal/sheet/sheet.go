@@ -17,7 +17,8 @@
 // (no key, too many reads, a fault of the service) have their status. An address may have 2,048 characters.
 //
 //	/sheet/limit/{chart}/{name}   a number or short text of the version in force; see Names. lot= chooses the track,
-//	                              version= pins an approved version, whose answer never changes.
+//	                              version= pins an approved version, whose answer never changes. Centre, sigma and lines are
+//	                              on the scale that is judged; the name "scale" tells it where it is not the chart's unit.
 //	                              unit=original gives the centre and the lines in the chart's unit where they are judged
 //	                              on another scale: after a logarithm or a square root (the centre is then a median), or
 //	                              standardised, where material= names the level.

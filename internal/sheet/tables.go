@@ -20,7 +20,8 @@ const pageSize = 1_000
 // limitColumns are those of the table of limits that come from the version.
 var limitColumns = []string{"version", "effective_from", "n", "provisional", "decimals", "process_sigma", "centre", "sigma", "lower_action", "lower_warning",
 	"upper_warning", "upper_action", "rules", "dispersion_centre", "dispersion_sigma", "dispersion_lower_action", "dispersion_lower_warning",
-	"dispersion_upper_warning", "dispersion_upper_action", "dispersion_rules"}
+	"dispersion_upper_warning", "dispersion_upper_action", "dispersion_rules", "inspected", "scale", "original_centre", "original_lower_action",
+	"original_lower_warning", "original_upper_warning", "original_upper_action"}
 
 // limitsTable answers with the limits in force of many charts.
 func (h *Handler) limitsTable(r *request) (*answer, error) {

@@ -74,13 +74,28 @@ func verdictsOf(all []*pb.StoredResult) *grid.Table {
 	for _, c := range traceColumns {
 		t.Columns = append(t.Columns, ofDispersion+c)
 	}
+	for _, c := range originalColumns {
+		t.Columns = append(t.Columns, inUnit+c)
+	}
 	for _, s := range all {
 		v := s.Verdict
 		row := append(keyCells(s.Result), grid.Of(standingWord(v.GetStanding(), v.GetReason())), grid.Yes(v.GetByBound()), versionCell(v.GetVersion()),
 			versionCell(v.GetJudge()), grid.Of(v.GetInstruction()), grid.Of(storedRules(v)))
-		t.Rows = append(t.Rows, append(append(row, traceCells(v.GetLocation())...), traceCells(v.GetDispersion())...))
+		row = append(append(row, traceCells(v.GetLocation())...), traceCells(v.GetDispersion())...)
+		t.Rows = append(t.Rows, append(row, originalCells(v.GetLocation().GetOriginal())...))
 	}
 	return t
+}
+
+// originalColumns are the location trace in the chart's unit, where it is judged on another scale; blank elsewhere.
+var originalColumns = []string{"statistic", "centre", "lower_action", "lower_warning", "upper_warning", "upper_action"}
+
+func originalCells(o *pb.OriginalScale) []grid.Value {
+	if o == nil {
+		return make([]grid.Value, len(originalColumns))
+	}
+	return []grid.Value{grid.Optional(o.Statistic), grid.Optional(o.Centre), grid.Optional(o.LowerAction), grid.Optional(o.LowerWarning),
+		grid.Optional(o.UpperWarning), grid.Optional(o.UpperAction)}
 }
 
 func traceCells(t *pb.TraceVerdict) []grid.Value {
