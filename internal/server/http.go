@@ -122,6 +122,19 @@ func (s *Server) bodies(next http.Handler) http.Handler {
 	return http.HandlerFunc(func(w http.ResponseWriter, r *http.Request) {
 		w.Header().Set("Cache-Control", "no-store")
 		id := r.Header.Get(requestIDHeader)
+		_, _, err := credentialsOf(r.Header.Get("Authorization"))
+		long := r.ContentLength < 0 || r.ContentLength > firstRead
+		if !long && err == nil { // a short body is read before it takes a slot, so that nobody holds one by being slow to send
+			within(w, shortBodyTimeout)
+			defer within(w, 0)
+			b, st := s.read(w, r)
+			if st != nil {
+				s.writeStatus(w, r, st)
+				return
+			}
+			r.Body = b
+			within(w, 0)
+		}
 		select {
 		case slots <- struct{}{}:
 			defer func() { <-slots }()
@@ -129,8 +142,7 @@ func (s *Server) bodies(next http.Handler) http.Handler {
 			s.writeStatus(w, r, busy(cap(slots), id))
 			return
 		}
-		_, _, err := credentialsOf(r.Header.Get("Authorization"))
-		if long := r.ContentLength < 0 || r.ContentLength > firstRead; err == nil && long {
+		if err == nil && long {
 			_, err = s.calls.keys.actor(r.Context(), r.Header.Get("Authorization"))
 		}
 		if err != nil {
@@ -146,12 +158,14 @@ func (s *Server) bodies(next http.Handler) http.Handler {
 			s.writeStatus(w, r, tooManyBytes(r.ContentLength, s.options.BodyBytesMax, id))
 			return
 		}
-		b, st := s.read(w, r)
-		if st != nil {
-			s.writeStatus(w, r, st)
-			return
+		if long {
+			b, st := s.read(w, r)
+			if st != nil {
+				s.writeStatus(w, r, st)
+				return
+			}
+			r.Body = b
 		}
-		r.Body = b
 		next.ServeHTTP(w, r)
 	})
 }

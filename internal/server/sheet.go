@@ -30,6 +30,10 @@ const (
 	sheetBytesMax = 8 << 20
 	// sheetPatience is how long a read waits for room among the reads in work.
 	sheetPatience = 10 * time.Second
+	// longBodiesMax bounds the long bodies that are being read, shortBodyTimeout and longBodyTimeout how long a body may take.
+	longBodiesMax    = 16
+	shortBodyTimeout = 10 * time.Second
+	longBodyTimeout  = 60 * time.Second
 	// preflightSeconds is how long a browser may remember what other origins are allowed.
 	preflightSeconds = "600"
 )
@@ -39,8 +43,9 @@ type sheets struct {
 	server *Server
 	sheet  http.Handler
 	reads  *buckets
-	// reading has room for the reads in work, posting for the posts.
-	reading, posting chan struct{}
+	// reading has room for the one-cell reads in work, tables for the reads that take longer, posting for the posts: none of
+	// them can hold up another. long has room for the long bodies that are being read.
+	reading, tables, posting, long chan struct{}
 	// patience is how long a read waits for room.
 	patience time.Duration
 }
@@ -50,7 +55,8 @@ func (s *Server) newSheets() *sheets {
 	return &sheets{
 		server: s, sheet: sheet.New(newReadConn(s.gateway, o.Timeout), o.scheme(), o.Now),
 		reads:   newBuckets(float64(o.SheetRate), float64(o.SheetBurst), o.Now),
-		reading: make(chan struct{}, o.SheetCallsMax), posting: make(chan struct{}, o.CallsMax),
+		reading: make(chan struct{}, o.SheetCallsMax), tables: make(chan struct{}, max(1, o.SheetCallsMax/2)), posting: make(chan struct{}, o.CallsMax),
+		long:     make(chan struct{}, longBodiesMax),
 		patience: sheetPatience,
 	}
 }
@@ -76,12 +82,12 @@ func (f *sheets) ServeHTTP(w http.ResponseWriter, r *http.Request) {
 		f.refuse(w, r, err)
 		return
 	}
-	done, err := f.admit(r, token)
-	if err != nil {
+	if err := f.rate(r, token); err != nil {
 		f.refuse(w, r, err)
 		return
 	}
-	defer done()
+	// A caller who is slow to send or to take is let be slow in nobody's room: the body is read before, and the answer is
+	// written after.
 	if r.Method == http.MethodPost {
 		if err := f.body(w, r, token); err != nil {
 			w.Header().Set("Connection", "close") // the body is not going to be read
@@ -89,24 +95,45 @@ func (f *sheets) ServeHTTP(w http.ResponseWriter, r *http.Request) {
 			return
 		}
 	}
-	begin, answered := f.server.options.Now(), &statusWriter{ResponseWriter: w, status: http.StatusOK}
+	held := &heldAnswer{header: w.Header(), status: http.StatusOK}
+	if err := f.work(held, r, token); err != nil {
+		f.refuse(w, r, err)
+		return
+	}
+	w.WriteHeader(held.status)
+	_, _ = w.Write(held.body.Bytes()) // a caller who went away gets no answer
+}
+
+// work has the request answered, when there is room for it.
+func (f *sheets) work(answered *heldAnswer, r *http.Request, token string) error {
+	done, err := f.room(r)
+	if err != nil {
+		return err
+	}
+	defer done()
+	begin := f.server.options.Now()
 	ctx := metadata.AppendToOutgoingContext(r.Context(), "authorization", "Bearer "+token,
 		requestIDHeader, r.Header.Get(requestIDHeader), faceHeader, "sheet")
 	f.sheet.ServeHTTP(answered, r.WithContext(ctx))
 	f.record(r, answered.status, f.server.options.Now().Sub(begin))
+	return nil
 }
 
-// statusWriter remembers the status of an answer.
-type statusWriter struct {
-	http.ResponseWriter
+// heldAnswer is an answer in memory.
+type heldAnswer struct {
+	header http.Header
 	status int
+	body   bytes.Buffer
 }
+
+// Header implements http.ResponseWriter.
+func (h *heldAnswer) Header() http.Header { return h.header }
 
 // WriteHeader implements http.ResponseWriter.
-func (w *statusWriter) WriteHeader(code int) {
-	w.status = code
-	w.ResponseWriter.WriteHeader(code)
-}
+func (h *heldAnswer) WriteHeader(code int) { h.status = code }
+
+// Write implements http.ResponseWriter.
+func (h *heldAnswer) Write(b []byte) (int, error) { return h.body.Write(b) }
 
 // record logs a request that came through, so that verdicts that nobody stored can be counted. The calls it made have lines of
 // their own with the same request id. The query is left out: it held the key.
@@ -190,8 +217,20 @@ func (f *sheets) checkAddressKey(r *http.Request, token string) error {
 	return nil
 }
 
-// admit holds reads to the rate of their key and to the room there is. Posts have a room of their own.
-func (f *sheets) admit(r *http.Request, token string) (done func(), err error) {
+// rate holds reads to the rate of their key.
+func (f *sheets) rate(r *http.Request, token string) error {
+	if r.Method == http.MethodOptions || sheet.Posts(r) {
+		return nil
+	}
+	if wait := f.reads.take(sha256.Sum256([]byte(token))); wait > 0 {
+		return &sheetFault{status: http.StatusTooManyRequests, wait: wait,
+			text: fmt.Sprintf("this key reads more than %d cells at once and %d a second; read a table instead, or wait", f.server.options.SheetBurst, f.server.options.SheetRate)}
+	}
+	return nil
+}
+
+// room waits for room among the requests of its kind in work.
+func (f *sheets) room(r *http.Request) (done func(), err error) {
 	if r.Method == http.MethodOptions {
 		return func() {}, nil
 	}
@@ -203,33 +242,54 @@ func (f *sheets) admit(r *http.Request, token string) (done func(), err error) {
 			return nil, &sheetFault{status: http.StatusTooManyRequests, text: "too many posts are in work; repeating this one later is safe", wait: retryAfter}
 		}
 	}
-	if wait := f.reads.take(sha256.Sum256([]byte(token))); wait > 0 {
-		return nil, &sheetFault{status: http.StatusTooManyRequests, wait: wait,
-			text: fmt.Sprintf("this key reads more than %d cells at once and %d a second; read a table instead, or wait", f.server.options.SheetBurst, f.server.options.SheetRate)}
+	in := f.reading
+	if r.Method == http.MethodPost || isTable(r.URL.Path) {
+		in = f.tables
 	}
+	if err := f.wait(r.Context(), in); err != nil {
+		return nil, err
+	}
+	return func() { <-in }, nil
+}
+
+// wait takes a place in a room, for as long as a read has patience.
+func (f *sheets) wait(ctx context.Context, room chan struct{}) error {
 	patience := time.NewTimer(f.patience)
 	defer patience.Stop()
 	select {
-	case f.reading <- struct{}{}:
-		return func() { <-f.reading }, nil
+	case room <- struct{}{}:
+		return nil
 	case <-patience.C:
-		return nil, &sheetFault{status: http.StatusServiceUnavailable, text: "too many reads are in work; try again", wait: retryAfter}
-	case <-r.Context().Done():
-		return nil, r.Context().Err()
+		return &sheetFault{status: http.StatusServiceUnavailable, text: "too many reads are in work; try again", wait: retryAfter}
+	case <-ctx.Done():
+		return ctx.Err()
 	}
 }
 
-// body takes the body into memory. A long one is read only for a key that is valid.
+// isTable reports the path of a table or workbook.
+func isTable(path string) bool {
+	return strings.HasSuffix(path, ".csv") || strings.HasSuffix(path, ".tsv") || strings.HasSuffix(path, ".xlsx")
+}
+
+// body takes the body into memory, for a key that is valid. A body has its time: whoever sends a byte now and then is cut off.
 func (f *sheets) body(w http.ResponseWriter, r *http.Request, token string) error {
 	most := min(sheetBytesMax, f.server.options.BodyBytesMax)
 	if r.ContentLength > most {
 		return &sheetFault{status: http.StatusRequestEntityTooLarge, text: fmt.Sprintf("the body has %d bytes, the limit is %d; send it in parts", r.ContentLength, most)}
 	}
+	if _, err := f.server.calls.keys.actor(r.Context(), bearer+token); err != nil {
+		return err
+	}
+	patience := shortBodyTimeout
 	if r.ContentLength < 0 || r.ContentLength > firstRead {
-		if _, err := f.server.calls.keys.actor(r.Context(), bearer+token); err != nil {
+		if err := f.wait(r.Context(), f.long); err != nil {
 			return err
 		}
+		defer func() { <-f.long }()
+		patience = longBodyTimeout
 	}
+	within(w, patience)
+	defer within(w, 0)
 	data, err := io.ReadAll(http.MaxBytesReader(w, r.Body, most))
 	var over *http.MaxBytesError
 	switch {
@@ -240,6 +300,15 @@ func (f *sheets) body(w http.ResponseWriter, r *http.Request, token string) erro
 	}
 	r.Body = io.NopCloser(bytes.NewReader(data))
 	return nil
+}
+
+// within gives a request so long to send its body; 0 takes the bound back, for the requests that follow on the connection.
+func within(w http.ResponseWriter, d time.Duration) {
+	var at time.Time
+	if d > 0 {
+		at = time.Now().Add(d)
+	}
+	_ = http.NewResponseController(w).SetReadDeadline(at) // a writer that knows no deadlines has the server's own
 }
 
 // refuse answers a request that did not come through to the handler, and logs it.
