@@ -157,7 +157,7 @@ func TestJudgingABlockStoresNothing(t *testing.T) {
 			"9,9\tCLEAR\t\t1\tnot recorded; after no stored result\r\n"},
 		{"?header=no&alone=1&decimal=comma", "10,1\n8,4\n", "10,1\tCLEAR\t\t1\tnot recorded; judged alone\n" +
 			"8,4\tSTOP\twestern-electric-1956/1 lower\t1\tnot recorded; judged alone\n"},
-		{"?values=result", "sample,result\n=cmd(),10.1\n", "sample,result,limitary_standing,limitary_rules,limitary_version,limitary_note\n'=cmd(),10.1,CLEAR,,1,not recorded; after no stored result\n"},
+		{"?values=result", "sample,result\n=cmd(),10.1\n", "sample,result,limitary_standing,limitary_rules,limitary_version,limitary_note\n'=cmd(),10.1,CLEAR,,1,not recorded; after no stored result; columns not read: sample\n"},
 	} {
 		r := b.ask("reader", http.MethodPost, "judge/nitrate"+c.params, c.body)
 		if r.status != 200 || r.body != c.want {

@@ -45,7 +45,7 @@ func (h *Handler) ServeHTTP(w http.ResponseWriter, r *http.Request) {
 	if err != nil {
 		code, text, expected := explain(err)
 		if expected && (rt.cell || rt.takes("refusals") && saysText(r.URL.RawQuery)) {
-			a, err = textAnswer("refused: "+strings.ReplaceAll(text, "\n", "; ")), nil
+			a, err = textAnswer("refused: "+redact(strings.ReplaceAll(text, "\n", "; "))), nil
 		} else {
 			WriteError(w, code, text)
 		}
@@ -117,7 +117,7 @@ func notRouted(w http.ResponseWriter, r *http.Request, allowed []string) {
 // retrySeconds is what a caller is asked to wait where the service cannot say better.
 const retrySeconds = "1"
 
-// WriteError answers with a line of text.
+// WriteError answers with a line of text, from which what may be a token is taken out.
 func WriteError(w http.ResponseWriter, code int, text string) {
 	h := w.Header()
 	h.Set("Content-Type", plain)
@@ -131,7 +131,7 @@ func WriteError(w http.ResponseWriter, code int, text string) {
 		}
 	}
 	w.WriteHeader(code)
-	_, _ = w.Write([]byte(text))
+	_, _ = w.Write([]byte(redact(text)))
 }
 
 // write answers a read with its digest, or with 304 where the caller has it; what was posted is answered as it is.

@@ -62,7 +62,9 @@ type trackOrWhy struct {
 
 // row answers one key. Only a fault is an error.
 func (b *batch) row(ctx context.Context, key string) ([]grid.Value, error) {
-	marked := func(why string) []grid.Value { return []grid.Value{grid.Of(key), {}, {}, grid.Of("refused: " + why)} }
+	marked := func(why string) []grid.Value {
+		return []grid.Value{grid.Of(redact(key)), {}, {}, grid.Of("refused: " + redact(why))}
+	}
 	chart, name, ok := strings.Cut(key, "/")
 	switch {
 	case !ok:

@@ -3,8 +3,7 @@ package sheet
 import (
 	"fmt"
 	"io"
-	"regexp"
-	"sort"
+	"slices"
 	"strconv"
 	"strings"
 
@@ -18,10 +17,13 @@ type pasted struct {
 	*block.Block
 	request  *request
 	workbook bool
-	// values are the columns of readings, or the one of counts; inspected is the column of how much was inspected and
-	// material that of the level, -1 where there is none.
-	values              []int
-	inspected, material int
+	// values are the columns of readings, or the one of counts; inspected is the column of how much was inspected, -1 where
+	// there is none; fields are the columns taken by their own name.
+	values    []int
+	inspected int
+	fields    map[string]int
+	// inspectedGiven is what the address says was inspected.
+	inspectedGiven string
 }
 
 // paste reads the body.
@@ -43,11 +45,13 @@ func (r *request) paste() (*pasted, error) {
 	if len(p.Rows) == 0 {
 		return nil, refuse("the block has no rows under its header")
 	}
-	p.inspected, p.material = p.Index("inspected"), p.Index("material")
+	p.inspected = p.Index("inspected")
 	if p.values, err = p.valueColumns(r.query.Get("values")); err != nil {
 		return nil, err
 	}
-	return p, nil
+	p.findFields()
+	p.inspectedGiven, err = r.inspected()
+	return p, err
 }
 
 func (r *request) textBlock(data []byte) (*block.Block, error) {
@@ -80,7 +84,31 @@ func (r *request) workbookBlock(data []byte) (*block.Block, error) {
 		}
 		row = n
 	}
-	return book.Read(data, book.Options{Sheet: r.query.Get("sheet"), HeaderRow: row, RawDates: strings.HasPrefix(r.query.Get("dates"), "serial")})
+	dates := r.query.Get("dates")
+	return book.Read(data, book.Options{Sheet: r.query.Get("sheet"), HeaderRow: row, RawDates: strings.HasPrefix(dates, "serial"), Dates: block.Dates(dates), Use: r.use})
+}
+
+// use tells what a column of a workbook is for, as the caller names columns or else by the usual names. A column of another
+// name may be the only one, and then holds readings, unless the caller has named those.
+func (r *request) use(name string) book.Use {
+	is := func(param string, usual ...string) bool {
+		if named := r.query.Get(param); named != "" {
+			usual = strings.Split(named, ",")
+		}
+		return slices.ContainsFunc(usual, func(u string) bool { return strings.EqualFold(strings.TrimSpace(u), name) })
+	}
+	named := r.query.Get("values") != ""
+	switch {
+	case named && is("values"), !named && valueName.MatchString(name), strings.EqualFold(name, "inspected"):
+		return book.Reading
+	case is("time", "time", "measured_at"):
+		return book.Any
+	case is("id", "id", "source_id"), is("", "source"), is("", fieldNames...):
+		return book.Text
+	case named:
+		return book.Other
+	}
+	return book.Any
 }
 
 // column finds a column that the caller named, or one of the usual names; -1 where it is none of those.
@@ -105,60 +133,13 @@ func (p *pasted) column(param, named string, usual ...string) (int, error) {
 
 func (p *pasted) list() string { return clip(strings.Join(p.Names, ", ")) }
 
-var valueName = regexp.MustCompile(`(?i)^(?:(?:value|reading|result)s?[ _]?([0-9]{0,3})|nonconforming)$`)
-
-// valueColumns finds the columns of readings.
-func (p *pasted) valueColumns(named string) ([]int, error) {
-	var found []int
-	if named != "" {
-		for name := range strings.SplitSeq(named, ",") {
-			at, err := p.column("values", strings.TrimSpace(name))
-			if err != nil {
-				return nil, err
-			}
-			found = append(found, at)
-		}
-		return found, p.distinct(found)
-	}
-	if len(p.Names) == 1 {
-		return []int{0}, nil
-	}
-	order := map[int]int{}
-	for i, name := range p.Names {
-		if m := valueName.FindStringSubmatch(name); m != nil {
-			order[i], _ = strconv.Atoi(m[1])
-			found = append(found, i)
-		}
-	}
-	sort.SliceStable(found, func(a, b int) bool { return order[found[a]] < order[found[b]] })
-	if len(found) == 0 {
-		return nil, refuse("which columns hold the readings is not clear; say values=, some of %s", p.list())
-	}
-	return found, nil
-}
-
-func (p *pasted) distinct(columns []int) error {
-	seen := map[int]bool{}
-	for _, c := range columns {
-		if seen[c] {
-			return refuse("values=: column %s is named twice", p.Names[c])
-		}
-		seen[c] = true
-	}
-	return nil
-}
-
 // numbers are the columns of numbers.
 func (p *pasted) numbers() []int { return append(append([]int{}, p.values...), p.inspected) }
 
 // inspectedOf gives how much was inspected for the count of a row, "" where the row holds readings.
 func (p *pasted) inspectedOf(r block.Row) (string, *trouble) {
 	if p.inspected < 0 || strings.TrimSpace(r.Cells[p.inspected]) == "" {
-		text, err := p.request.inspected()
-		if err != nil {
-			return "", &trouble{r.Number, "", err.Error()}
-		}
-		return text, nil
+		return p.inspectedGiven, nil
 	}
 	text, err := p.Dialect.Number(r.Cells[p.inspected])
 	if err == nil {
@@ -170,25 +151,26 @@ func (p *pasted) inspectedOf(r block.Row) (string, *trouble) {
 	return text, nil
 }
 
-// materialOf gives the level of a row.
-func (p *pasted) materialOf(r block.Row) string {
-	if p.material >= 0 {
-		return strings.TrimSpace(r.Cells[p.material])
-	}
-	return p.request.query.Get("material")
-}
-
 // settle finds the decimal from all columns of numbers.
 func (p *pasted) settle(columns ...int) error {
 	var cells []block.Cell
 	for _, r := range p.Rows {
 		for _, c := range columns {
 			if c >= 0 && strings.TrimSpace(r.Cells[c]) != "" {
-				cells = append(cells, block.Cell{Row: r.Number, Column: p.Names[c], Text: r.Cells[c]})
+				cells = append(cells, block.Cell{Row: r.Number, Column: p.Names[c], Text: r.Cells[c], Count: p.isCount(r, c)})
 			}
 		}
 	}
 	return p.Dialect.SettleDecimal(cells)
+}
+
+// isCount reports a cell that is to hold a number of pieces.
+func (p *pasted) isCount(r block.Row, column int) bool {
+	if column == p.inspected || strings.EqualFold(p.Names[column], "nonconforming") {
+		return true
+	}
+	counted := p.inspectedGiven != "" || p.inspected >= 0 && strings.TrimSpace(r.Cells[p.inspected]) != ""
+	return counted && slices.Contains(p.values, column)
 }
 
 // trouble is what is wrong with a row, at a column.

@@ -1,7 +1,10 @@
 package sheet
 
 import (
+	"context"
+	"fmt"
 	"regexp"
+	"slices"
 	"strconv"
 
 	"google.golang.org/grpc/status"
@@ -40,37 +43,98 @@ func (h *Handler) judge(r *request) (*answer, error) {
 	if err := p.settle(p.numbers()...); err != nil {
 		return nil, err
 	}
-	for _, row := range p.Rows {
+	if err := h.checkUnits(r.ctx(), p); err != nil {
+		return nil, err
+	}
+	var places []int // the rows of the points
+	notes := make([]string, len(p.Rows))
+	for i, row := range p.Rows {
+		note, left, bad := p.standsAs(row)
+		if bad != nil {
+			return nil, refuse("%s", bad)
+		}
+		if notes[i] = note; left {
+			continue
+		}
 		point, bad := p.point(row)
 		if bad != nil {
 			return nil, refuse("%s", bad)
 		}
-		t.points = append(t.points, point)
+		t.points, places = append(t.points, point), append(places, i)
 	}
 	j, err := h.try(r.ctx(), t)
 	if err != nil {
-		return nil, p.named(err)
+		return nil, p.named(err, places)
 	}
 	more := make([][]string, len(p.Rows))
-	note := "not recorded; " + j.afterText(t.alone)
-	for i, v := range j.result.Verdicts {
-		more[i] = []string{standingWord(v.Standing, v.Reason), rulesHit(v), j.version(), note}
+	for i, note := range notes {
+		more[i] = []string{"NOT_JUDGED", "", "", "not recorded; " + note}
 	}
+	after := "not recorded; " + j.afterText(t.alone)
+	for k, v := range j.result.Verdicts {
+		note := after
+		if text := notes[places[k]]; text != "" {
+			note += "; " + text
+		}
+		more[places[k]] = []string{standingWord(v.Standing, v.Reason), rulesHit(v), j.version(), note}
+	}
+	p.sayUnread(more, p.Index("id"), p.Index("source_id"), p.Index("time"), p.Index("measured_at"), p.Index("source"))
 	return p.answer(judgedColumns, more)
+}
+
+// standsAs says what a row is other than an ordinary point; one that is left is no point at all.
+func (p *pasted) standsAs(row block.Row) (note string, left bool, bad *trouble) {
+	if bad = p.contradicts(row); bad != nil {
+		return "", false, bad
+	}
+	role, bad := p.role(row)
+	if bad != nil {
+		return "", false, bad
+	}
+	voided, bad := p.isVoided(row)
+	switch {
+	case bad != nil:
+		return "", false, bad
+	case voided:
+		return "the row is voided and no point", true, nil
+	case role == pb.ResultRole_RESULT_ROLE_REPEAT:
+		return "a REPEAT is no point", true, nil
+	case role == pb.ResultRole_RESULT_ROLE_UNSPECIFIED, role == pb.ResultRole_RESULT_ROLE_ROUTINE:
+		return "", false, nil
+	}
+	return "role " + word(role.String(), rolePrefix) + ", judged as any point", false, nil
+}
+
+// checkUnits refuses rows in another unit than the chart's.
+func (h *Handler) checkUnits(ctx context.Context, p *pasted) error {
+	at := slices.IndexFunc(p.Rows, func(row block.Row) bool { return p.field(row, "unit") != "" })
+	if at < 0 {
+		return nil
+	}
+	got, err := h.charts.GetChart(ctx, &pb.GetChartRequest{Name: p.request.chart()})
+	if err != nil {
+		return err
+	}
+	for _, row := range p.Rows[at:] {
+		if unit := p.field(row, "unit"); unit != "" && unit != got.Chart.Unit {
+			return refuse("%s", &trouble{row.Number, "unit", fmt.Sprintf("%q: chart %q is in %q", clip(unit), got.Chart.Name, got.Chart.Unit)})
+		}
+	}
+	return nil
 }
 
 // pointInError finds the point that the service refuses.
 var pointInError = regexp.MustCompile(`^evaluations\[[0-9]+\]\.points\.points\[([0-9]+)\]`)
 
 // named puts the row before what the service says of a point.
-func (p *pasted) named(err error) error {
+func (p *pasted) named(err error, places []int) error {
 	m := pointInError.FindStringSubmatch(status.Convert(err).Message())
 	if m == nil {
 		return err
 	}
 	_, text, _ := explain(err)
 	i, _ := strconv.Atoi(m[1])
-	return refuse("%s", &trouble{p.Rows[i].Number, p.Names[p.values[0]], text})
+	return refuse("%s", &trouble{p.Rows[places[i]].Number, p.Names[p.values[0]], text})
 }
 
 // point makes a point of a row; a row without a reading is a point without a value.
@@ -83,7 +147,7 @@ func (p *pasted) point(row block.Row) (*pb.Point, *trouble) {
 	if bad != nil {
 		return nil, bad
 	}
-	point, err := pointOf(texts, inspected, p.materialOf(row))
+	point, err := pointOf(texts, inspected, p.orGiven(row, "material"))
 	if err != nil {
 		return nil, &trouble{row.Number, p.Names[p.values[0]], err.Error()}
 	}

@@ -33,10 +33,13 @@ func (h *Handler) post(r *request) (*answer, error) {
 		return nil, err
 	}
 	if preview {
+		if err := h.mayPost(r.ctx()); err != nil {
+			return nil, err
+		}
 		if err := h.checkChart(r.ctx(), b); err != nil {
 			return nil, err
 		}
-		return b.preview()
+		return b.preview(whole)
 	}
 	if whole && len(b.troubles) > 0 {
 		return nil, nothingStored(b.troubles)
@@ -105,6 +108,8 @@ func (b *rows) asTrouble(i int) *trouble {
 	}
 	text = strings.TrimPrefix(text, p.Field+": ")
 	switch {
+	case p.Outcome == pb.PostOutcome_POST_OUTCOME_CONFLICT && b.first[i] != i && !sameContent(nil, b.all[b.first[i]], b.all[i]):
+		text, field = b.otherContent(b.first[i]), "source_id"
 	case p.Outcome == pb.PostOutcome_POST_OUTCOME_CONFLICT:
 		text = fmt.Sprintf("the id is stored with other content: measured %s, %s", p.Stored.GetMeasuredAt(), measuredText(p.Stored))
 		field = "source_id"
@@ -151,7 +156,13 @@ func (b *rows) answered() (*answer, error) {
 	for i := range more {
 		more[i] = b.line(i)
 	}
-	return b.answer(postedColumns, more)
+	return b.answer(postedColumns, b.saying(more))
+}
+
+// saying adds what is not read.
+func (b *rows) saying(more [][]string) [][]string {
+	b.sayUnread(more, b.columns.id, b.columns.time, b.columns.source)
+	return more
 }
 
 func (b *rows) line(i int) []string {

@@ -5,8 +5,20 @@ import (
 	"fmt"
 	"strings"
 
+	"google.golang.org/grpc/codes"
+	"google.golang.org/grpc/status"
+
 	pb "limitary/api/limitary/v1"
 )
+
+// mayPost refuses a key that may not post. A post of no results, which is refused for everyone else as well, tells that
+// apart and touches nothing.
+func (h *Handler) mayPost(ctx context.Context) error {
+	if _, err := h.evaluations.PostResults(ctx, &pb.PostResultsRequest{}); status.Code(err) != codes.InvalidArgument {
+		return err
+	}
+	return nil
+}
 
 // checkChart refuses what the chart would not take, as far as that can be seen without posting.
 func (h *Handler) checkChart(ctx context.Context, b *rows) error {
@@ -18,53 +30,32 @@ func (h *Handler) checkChart(ctx context.Context, b *rows) error {
 	if c.Archived {
 		return refuse("chart %q is archived; nothing more is posted to it", c.Name)
 	}
-	seen := map[string]int{}
+	now := h.now()
 	for i, r := range b.results {
 		if r == nil {
 			continue
 		}
-		if bad := b.checkRow(c, r, b.Rows[i].Number, seen); bad != nil {
+		if bad := b.checkRow(c, i, now); bad != nil {
 			b.trouble[i], b.results[i] = bad, nil
+			b.troubles = append(b.troubles, bad)
 		}
 	}
 	return nil
 }
 
-func (b *rows) checkRow(c *pb.Chart, r *pb.Result, row int, seen map[string]int) *trouble {
-	key := r.Source + "\x00" + r.SourceId
-	first, twice := seen[key]
-	seen[key] = row
-	switch {
-	case twice:
-		return &trouble{row, b.Names[b.columns.id], fmt.Sprintf("%q stands in row %d too", clip(r.SourceId), first)}
-	case len(r.Readings) > int(c.SubgroupSize):
-		return &trouble{row, b.Names[b.values[0]], fmt.Sprintf("%d readings: want 1 to %d, the subgroup size", len(r.Readings), c.SubgroupSize)}
-	case countsKind(c.Kind) && r.Count == nil:
-		return &trouble{row, b.Names[b.values[0]], fmt.Sprintf("chart %q takes counts%s", c.Name, wantInspected)}
-	case !countsKind(c.Kind) && r.Count != nil:
-		return &trouble{row, "inspected", fmt.Sprintf("is given, and chart %q takes readings", c.Name)}
-	case c.Standardised && r.Material == "":
-		return &trouble{row, "material", fmt.Sprintf("is empty, and results of chart %q are standardised by their material", c.Name)}
-	case r.Unit != "" && r.Unit != c.Unit:
-		return &trouble{row, "unit", fmt.Sprintf("%q: chart %q is in %q", clip(r.Unit), c.Name, c.Unit)}
-	case c.LotsAreTracks && r.Lot == "":
-		return &trouble{row, "lot", fmt.Sprintf("is empty, and every lot of chart %q is a track of its own", c.Name)}
-	}
-	return nil
-}
-
-// countsKind reports a chart whose results are counts.
-func countsKind(k pb.ChartKind) bool {
-	switch k {
-	case pb.ChartKind_CHART_KIND_P, pb.ChartKind_CHART_KIND_NP, pb.ChartKind_CHART_KIND_C, pb.ChartKind_CHART_KIND_U:
-		return true
-	}
-	return false
-}
+// Notes of a preview. What is stored is not looked at, so that a conflict with it shows only when posting.
+const (
+	wouldBe    = "not stored; would be stored, if nothing else is stored under this id"
+	wouldNotBe = "not stored; would not be while another row is refused"
+)
 
 // preview gives the block back with what posting would store.
-func (b *rows) preview() (*answer, error) {
+func (b *rows) preview(whole bool) (*answer, error) {
 	more := make([][]string, len(b.Rows))
+	note := wouldBe
+	if whole && len(b.troubles) > 0 {
+		note = wouldNotBe
+	}
 	for i, r := range b.results {
 		switch {
 		case b.trouble[i] != nil:
@@ -72,8 +63,12 @@ func (b *rows) preview() (*answer, error) {
 		case r == nil:
 			more[i] = make([]string, len(previewColumns))
 		default:
-			more[i] = []string{"PREVIEW", r.Source + "/" + r.SourceId, r.MeasuredAt, strings.TrimPrefix(measuredText(r), "readings "), "not stored; this is what would be"}
+			outcome, note := "PREVIEW", note
+			if first := b.first[i]; first != i {
+				outcome, note = "DUPLICATE", fmt.Sprintf("not stored; row %d has the same id and content", b.Rows[first].Number)
+			}
+			more[i] = []string{outcome, r.Source + "/" + r.SourceId, r.MeasuredAt, strings.TrimPrefix(measuredText(r), "readings "), note}
 		}
 	}
-	return b.answer(previewColumns, more)
+	return b.answer(previewColumns, b.saying(more))
 }

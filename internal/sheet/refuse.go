@@ -47,6 +47,12 @@ func clip(s string) string {
 	return s
 }
 
+// tokenLike is what may be a key's token, whole or cut off.
+var tokenLike = regexp.MustCompile(`(?i)\blim_[a-z0-9_]{8,}`)
+
+// redact takes what may be a key's token out of a text: a refusal is shown, logged and sent on.
+func redact(text string) string { return tokenLike.ReplaceAllString(text, "lim_(redacted)") }
+
 // statuses give the codes of the API their status. Expected are those that a one-cell read answers as text, and a block
 // that asks for it.
 var statuses = map[codes.Code]struct {

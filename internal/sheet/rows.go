@@ -2,6 +2,8 @@ package sheet
 
 import (
 	"fmt"
+	"net/http"
+	"slices"
 	"strconv"
 	"strings"
 
@@ -19,16 +21,15 @@ type rows struct {
 	trouble  []*trouble
 	troubles []*trouble
 	posted   []*pb.PostedResult
+	// all are the results as they were read, also of rows that are refused later; first is the first row of each row's id.
+	all   []*pb.Result
+	first []int
 }
 
 // resultColumns are where the parts of a result stand; -1 for none.
 type resultColumns struct {
 	id, time, source int
-	more             map[string]int
 }
-
-// moreFields are the columns taken by their own name.
-var moreFields = []string{"lot", "run_id", "position", "replicate", "role", "repeat_of", "unit", "analyst", "instrument"}
 
 func (r *request) batchOfResults() (*rows, error) {
 	p, err := r.paste()
@@ -50,6 +51,9 @@ func (r *request) batchOfResults() (*rows, error) {
 	if err := p.settle(numbers...); err != nil {
 		return nil, err
 	}
+	if !slices.ContainsFunc(p.Rows, func(row block.Row) bool { return !row.Blank() }) {
+		return nil, &refusal{status: http.StatusUnprocessableEntity, text: "nothing stored: every row is blank"}
+	}
 	for i, row := range p.Rows {
 		if row.Blank() {
 			continue
@@ -59,7 +63,26 @@ func (r *request) batchOfResults() (*rows, error) {
 			b.troubles = append(b.troubles, b.trouble[i])
 		}
 	}
+	b.findFirst()
 	return b, nil
+}
+
+// findFirst finds the first row of each id.
+func (b *rows) findFirst() {
+	b.all, b.first = slices.Clone(b.results), make([]int, len(b.results))
+	seen := map[string]int{}
+	for i, r := range b.results {
+		b.first[i] = i
+		if r == nil {
+			continue
+		}
+		key := r.Source + "\x00" + r.SourceId
+		if first, twice := seen[key]; twice {
+			b.first[i] = first
+		} else {
+			seen[key] = i
+		}
+	}
 }
 
 func (r *request) clock() (c block.Clock, err error) {
@@ -71,7 +94,6 @@ func (r *request) clock() (c block.Clock, err error) {
 }
 
 func (r *request) resultColumns(p *pasted) (c resultColumns, err error) {
-	c.more = map[string]int{}
 	if c.id, err = p.column("id", r.query.Get("id"), "id", "source_id"); err != nil {
 		return c, err
 	}
@@ -89,9 +111,6 @@ func (r *request) resultColumns(p *pasted) (c resultColumns, err error) {
 	case c.source >= 0 && r.query.Get("source") != "":
 		return c, refuse("source=%s: is given, and so is a column source; give one of them", clip(r.query.Get("source")))
 	}
-	for _, name := range moreFields {
-		c.more[name] = p.Index(name)
-	}
 	return c, nil
 }
 
@@ -103,17 +122,23 @@ func (b *rows) result(row block.Row, r *request, clock block.Clock) (*pb.Result,
 		}
 		return strings.TrimSpace(row.Cells[column])
 	}
-	more := func(name string) string { return at(b.columns.more[name]) }
-	out := &pb.Result{Chart: b.chart, SourceId: at(b.columns.id), Source: at(b.columns.source), Lot: more("lot"), RunId: more("run_id"),
-		RepeatOf: more("repeat_of"), Unit: more("unit"), Material: b.materialOf(row), Analyst: more("analyst"), Instrument: more("instrument")}
+	if bad := b.contradicts(row); bad != nil {
+		return nil, bad
+	}
+	if voided, bad := b.isVoided(row); voided || bad != nil {
+		if bad == nil {
+			bad = &trouble{row.Number, "voided", "says that the result is voided; it is not posted again, take the row out"}
+		}
+		return nil, bad
+	}
+	more := func(name string) string { return b.field(row, name) }
+	out := &pb.Result{Chart: b.chart, SourceId: at(b.columns.id), Source: at(b.columns.source), Lot: b.orGiven(row, "lot"), RunId: more("run_id"),
+		RepeatOf: more("repeat_of"), Unit: more("unit"), Material: b.orGiven(row, "material"), Analyst: more("analyst"), Instrument: more("instrument")}
 	if out.SourceId == "" {
 		return nil, &trouble{row.Number, b.Names[b.columns.id], "is empty; every result needs its own id"}
 	}
 	if b.columns.source < 0 {
 		out.Source = r.query.Get("source")
-	}
-	if b.columns.more["lot"] < 0 {
-		out.Lot = r.query.Get("lot")
 	}
 	measured, err := clock.Read(at(b.columns.time), b.Dialect.Decimal)
 	if err != nil {
@@ -123,7 +148,7 @@ func (b *rows) result(row block.Row, r *request, clock block.Clock) (*pb.Result,
 	if bad := b.measured(row, out); bad != nil {
 		return nil, bad
 	}
-	return out, b.whole(row.Number, out, more)
+	return out, b.whole(row, out)
 }
 
 // measured reads the readings, or the count, of a row.
@@ -149,24 +174,33 @@ func (b *rows) measured(row block.Row, out *pb.Result) *trouble {
 }
 
 // whole reads the fields that are not text.
-func (b *rows) whole(row int, out *pb.Result, more func(string) string) *trouble {
+func (b *rows) whole(row block.Row, out *pb.Result) (bad *trouble) {
 	for name, to := range map[string]*int32{"position": &out.Position, "replicate": &out.Replicate} {
-		text := more(name)
+		text := b.field(row, name)
 		if text == "" {
 			continue
 		}
 		n, err := strconv.ParseInt(text, 10, 32)
 		if err != nil || n < 0 {
-			return &trouble{row, name, fmt.Sprintf("%q: want a whole number of at least 0", clip(text))}
+			return &trouble{row.Number, name, fmt.Sprintf("%q: want a whole number of at least 0", clip(text))}
 		}
 		*to = int32(n)
 	}
-	if text := more("role"); text != "" {
-		role, ok := pb.ResultRole_value["RESULT_ROLE_"+strings.ToUpper(text)]
-		if !ok || role == 0 {
-			return &trouble{row, "role", fmt.Sprintf("%q: want ROUTINE, REPEAT, OVERLAP or SETUP", clip(text))}
-		}
-		out.Role = pb.ResultRole(role)
+	out.Role, bad = b.role(row)
+	return bad
+}
+
+const rolePrefix = "RESULT_ROLE_"
+
+// role reads what a row was measured for; unspecified where it does not say.
+func (p *pasted) role(row block.Row) (pb.ResultRole, *trouble) {
+	text := p.field(row, "role")
+	if text == "" {
+		return 0, nil
 	}
-	return nil
+	role := pb.ResultRole_value[rolePrefix+strings.ToUpper(text)]
+	if role == 0 {
+		return 0, &trouble{row.Number, "role", fmt.Sprintf("%q: want ROUTINE, REPEAT, OVERLAP or SETUP", clip(text))}
+	}
+	return pb.ResultRole(role), nil
 }

@@ -57,21 +57,29 @@
 // begin with "limitary_"; those that an earlier answer added are replaced.
 //
 //	/sheet/judge/{chart}    adds standing, rules, version, note. Rows are judged in their order as the next points of the
-//	                        stored track, or alone=1. Nothing is stored.
+//	                        stored track, or alone=1. Nothing is stored. A row with the role REPEAT, or voided, is no point
+//	                        and says so in its note; other roles than ROUTINE are judged, and named there.
 //	/sheet/results/{chart}  stores the rows and adds outcome, standing, rules, version, track_state, note. Role: poster. Posting the
 //	                        same block again changes nothing and says DUPLICATE. Rows are stored all or none: one bad row
 //	                        is named by row and column with status 422, and nothing is stored; all_or_nothing=0 stores
-//	                        the good rows. preview=1 stores nothing and shows what would be stored.
+//	                        the good rows. preview=1 stores nothing and shows what would be stored, if nothing else is
+//	                        stored under the same ids: it does not look at what is. A row with the id and the content of
+//	                        an earlier row is DUPLICATE; one with other content is refused and names that row. Rows that
+//	                        an exported table marks as voided are refused.
 //
 // Columns are found by name, or named by the caller: values=COLUMN,COLUMN (else value, reading or result, with a number after
-// it where there are several, or nonconforming; else the only column), id=COLUMN (else id or source_id), time=COLUMN (else time or
+// it where there are several, or nonconforming; else the only column; names of different words, such as value and result, or
+// the same number twice are refused), id=COLUMN (else id or source_id), time=COLUMN (else time or
 // measured_at), source= the system the results come from (else a column source). lot, run_id, position, replicate, role,
-// repeat_of, unit, material, inspected, analyst and instrument are columns where they are there; lot=, material= and
-// inspected= serve where there is none. A row in which inspected is not blank holds a count: how many of so many do not
-// conform. refusals=text answers a refused block with status 200 and one line that begins "refused: ", for macro languages
+// repeat_of, unit, material, inspected, analyst, instrument, chart and voided are columns where they are there; lot=, material=
+// and inspected= serve where there is none and where a cell of it is blank. A row whose chart, lot or material is not what the
+// address says is refused, and so is one in another unit than the chart's. Columns that hold something and are not read are
+// named in the note of the first row. A row in which inspected is not blank holds a count: how many of so many do not
+// conform. Three digits after the only mark of a count ("1.000") are refused unless decimal= is said, here and in addresses.
+// refusals=text answers a refused block with status 200 and one line that begins "refused: ", for macro languages
 // that show no body beside another status; faults keep theirs.
 // decimal=point|comma, delimiter=tab|comma|semicolon|none, dates=iso|dmy|mdy|serial-1900|serial-1904 and zone= (an offset
-// or a name such as Europe/London) say what the block does not. Without a header columns are column_1, column_2 and so on.
+// or a name such as Europe/London) say what the block does not; a workbook's own date system cannot be said otherwise. Without a header columns are column_1, column_2 and so on.
 //
 // # The kit
 //

@@ -15,6 +15,7 @@ import (
 	"google.golang.org/grpc/status"
 
 	pb "limitary/api/limitary/v1"
+	"limitary/internal/sheet/book"
 )
 
 // TestAddressesAsSpreadsheetsWriteThem reads queries with what formulas put into them.
@@ -191,6 +192,42 @@ func TestTheManualNamesEveryPathAndParameter(t *testing.T) {
 			if !strings.Contains(manual, name+"=") {
 				t.Errorf("the manual has no %s=", name)
 			}
+		}
+	}
+}
+
+// TestUsesOfColumns tells what columns of a workbook are for.
+func TestUsesOfColumns(t *testing.T) {
+	for _, c := range []struct {
+		query string
+		want  map[string]book.Use
+	}{
+		{"", map[string]book.Use{"Value": book.Reading, "reading_2": book.Reading, "nonconforming": book.Reading, "inspected": book.Reading, "id": book.Text,
+			"measured_at": book.Any, "Lot": book.Text, "chart": book.Text, "source": book.Text, "nitrate": book.Any}},
+		{"values=nitrate,%20nitrite&id=sample&time=when", map[string]book.Use{"value": book.Other, "Nitrate": book.Reading, "nitrite": book.Reading, "id": book.Other,
+			"sample": book.Text, "time": book.Other, "when": book.Any, "lot": book.Text, "note": book.Other, "inspected": book.Reading}},
+	} {
+		query, err := parseQuery(c.query, []string{"values", "id", "time"})
+		if err != nil {
+			t.Fatal(err)
+		}
+		for name, want := range c.want {
+			if got := (&request{query: query}).use(name); got != want {
+				t.Errorf("%q, column %s: got %d, want %d", c.query, name, got, want)
+			}
+		}
+	}
+}
+
+// TestWhatMayBeATokenIsRedacted keeps ordinary texts.
+func TestWhatMayBeATokenIsRedacted(t *testing.T) {
+	token := "lim_" + strings.Repeat("a", 16) + "_" + strings.Repeat("7", 52)
+	for text, want := range map[string]string{
+		"there is no /sheet/" + token + "/x": "there is no /sheet/lim_(redacted)/x", strings.ToUpper(token): "lim_(redacted)", token[:12] + "...": "lim_(redacted)...",
+		"slim_chart and lim_a": "slim_chart and lim_a", "limitary_standing": "limitary_standing",
+	} {
+		if got := redact(text); got != want {
+			t.Errorf("%s: got %s, want %s", text, got, want)
 		}
 	}
 }

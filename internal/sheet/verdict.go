@@ -17,11 +17,11 @@ func (h *Handler) verdict(r *request) (*answer, error) {
 	if t.version, err = r.version(); err != nil {
 		return nil, err
 	}
-	groups, err := r.groups()
+	inspected, err := r.inspected()
 	if err != nil {
 		return nil, err
 	}
-	inspected, err := r.inspected()
+	groups, err := r.groups(inspected != "")
 	if err != nil {
 		return nil, err
 	}
@@ -61,8 +61,8 @@ func (j judged) line(alone bool) string {
 	return strings.Join(parts, "; ")
 }
 
-// groups reads value= or values= as decimal texts with a point, one group a result.
-func (r *request) groups() ([][]string, error) {
+// groups reads value= or values= as decimal texts with a point, one group a result; counts says what the numbers are.
+func (r *request) groups(counts bool) ([][]string, error) {
 	one, many := r.query.Get("value"), r.query.Get("values")
 	var texts [][]string
 	switch {
@@ -85,7 +85,7 @@ func (r *request) groups() ([][]string, error) {
 	if len(texts) > ValuesMax {
 		return nil, refuse("values=: %d results, the limit is %d; POST them to /sheet/judge/", len(texts), ValuesMax)
 	}
-	return texts, r.normalise(texts)
+	return texts, r.normalise(texts, counts)
 }
 
 // inspected is how much was inspected for the counts, "" where the values are readings.
@@ -95,12 +95,12 @@ func (r *request) inspected() (string, error) {
 		return "", nil
 	}
 	groups := [][]string{{text}}
-	err := r.normalise(groups)
+	err := r.normalise(groups, true)
 	return groups[0][0], err
 }
 
 // normalise gives the numbers of all groups the decimal point, by one decimal for all.
-func (r *request) normalise(groups [][]string) error {
+func (r *request) normalise(groups [][]string, counts bool) error {
 	decimal, err := r.decimal()
 	if err != nil {
 		return err
@@ -112,7 +112,7 @@ func (r *request) normalise(groups [][]string) error {
 			if strings.TrimSpace(text) == "" {
 				return refuse("a value is empty")
 			}
-			cells = append(cells, block.Cell{Text: text})
+			cells = append(cells, block.Cell{Text: text, Count: counts})
 		}
 	}
 	if err := d.SettleDecimal(cells); err != nil {

@@ -13,9 +13,9 @@
 // refused unless decimal= or delimiter= settles it.
 //
 // Numbers stay the text that was written; only a decimal comma becomes a point. "1,234" alone may be 1.234 or 1234 and is
-// refused; one value that can be read one way only ("0,98", "12,5") settles the block. A point before three digits is
-// taken for a thousands separator only in blocks separated by semicolons, where the comma is the usual decimal (common
-// practice, no source). Thousands separators themselves are never read.
+// refused; one value that can be read one way only ("0,98", "12,5") settles the block, and only a number does. A point
+// before three digits ("1.234") is as doubtful, except where commas separate the cells, so that the decimal is a point.
+// In a count, which has no decimal, either is refused unless decimal= is said. Thousands separators are never read.
 //
 // # Times
 //

@@ -134,7 +134,7 @@ func TestLimitsAreTaken(t *testing.T) {
 func TestDecimals(t *testing.T) {
 	for _, c := range []struct {
 		delimiter, given byte
-		texts            string // separated by spaces
+		texts            string // separated by spaces; "#" begins a count
 		want             string // the numbers, or what the error must say
 	}{
 		{block.Tab, 0, "1.5 2.25 3", "1.5 2.25 3"},
@@ -144,7 +144,18 @@ func TestDecimals(t *testing.T) {
 		{block.Tab, 0, "1,234 0,98", "1.234 0.98"},
 		{block.Tab, 0, "0,234", "0.234"},
 		{block.Tab, 0, "1,2345", "1.2345"},
-		{block.Tab, 0, "1.234", "1.234"},
+		{block.Tab, 0, "1.234", `"1.234" may be 1.234 or 1234; say decimal=point or decimal=comma`},
+		{block.None, 0, "1.234", `"1.234" may be 1.234 or 1234`},
+		{block.Comma, 0, "1.234", "1.234"},
+		{block.Tab, '.', "1.234", "1.234"},
+		{block.Tab, 0, "1.234 0.5", "1.234 0.5"},
+		{block.Tab, 0, "1,234 n/a,late", `"1,234" may be 1.234 or 1234`},
+		{block.Tab, 0, "1,234 p.3", `"1,234" may be 1.234 or 1234`},
+		{block.Tab, 0, "1,234 \u22120,5", `"1,234" may be 1.234 or 1234`},
+		{block.Comma, 0, "#1.000", `"1.000" may be 1.000 or 1000; a count has no decimal`},
+		{block.Semicolon, 0, "#1,000 0,5", `"1,000" may be 1.000 or 1000; a count has no decimal`},
+		{block.Tab, '.', "#1.000", "1.000"},
+		{block.Tab, 0, "#2.5 #100", "2.5 100"},
 		{block.Semicolon, 0, "1.234", `"1.234" may be 1.234 or 1234; say decimal=point or decimal=comma`},
 		{block.Semicolon, '.', "1.234", "1.234"},
 		{block.Semicolon, 0, "1.234 0.5", "1.234 0.5"},
@@ -172,7 +183,9 @@ func TestDecimals(t *testing.T) {
 func normalised(d block.Dialect, texts []string) string {
 	var cells []block.Cell
 	for i, text := range texts {
-		cells = append(cells, block.Cell{Row: i + 1, Text: text})
+		number, count := strings.CutPrefix(text, "#")
+		texts[i] = number
+		cells = append(cells, block.Cell{Row: i + 1, Text: number, Count: count})
 	}
 	if err := d.SettleDecimal(cells); err != nil {
 		return err.Error()

@@ -198,6 +198,9 @@ func (c Clock) local(wall time.Time, as string) (time.Time, error) {
 	y, mo, d := wall.Date()
 	h, mi, s := wall.Clock()
 	t := time.Date(y, mo, d, h, mi, s, wall.Nanosecond(), c.Zone)
+	if t.Format(time.DateOnly) != wall.Format(time.DateOnly) {
+		return time.Time{}, fmt.Errorf("%q does not exist in %s, which left out that day or hour; write it with its offset", clip(as), c.Zone)
+	}
 	if th, tm, _ := t.Clock(); th != h || tm != mi {
 		return time.Time{}, fmt.Errorf("%q does not exist in %s, where the clock was put forward; write it with its offset", clip(as), c.Zone)
 	}

@@ -19,6 +19,8 @@ func TestTimes(t *testing.T) {
 		{"", " 01:00", "2026-03-02T09:30", "2026-03-02T09:30:00+01:00"}, // as an address delivers a plus sign
 		{"", "Europe/London", "2026-07-02T09:30", "2026-07-02T09:30:00+01:00"},
 		{"", "Z", "2026-03-02", "2026-03-02T00:00:00Z"},
+		{"", "Pacific/Apia", "2011-12-29T10:00", "2011-12-29T10:00:00-10:00"},
+		{"", "Pacific/Apia", "2011-12-31T10:00", "2011-12-31T10:00:00+14:00"},
 		{"", "+01:00", "2026-03-02T09:30:00Z", "2026-03-02T09:30:00Z"},
 		{"dmy", "Z", "03/04/2026", "2026-04-03T00:00:00Z"},
 		{"mdy", "Z", "03/04/2026 9:30", "2026-03-04T09:30:00Z"},
@@ -63,6 +65,8 @@ func TestTimesThatAreRefused(t *testing.T) {
 		{"serial-1900", "", "46083", "no offset"},
 		{"", "Europe/London", "2026-03-29T01:30", "does not exist"},
 		{"", "Europe/London", "2026-10-25T01:30", "twice"},
+		{"", "Pacific/Apia", "2011-12-30T10:00", "left out that day"}, // Samoa went over the date line from 29 to 31 December 2011
+		{"dmy", "Pacific/Apia", "30.12.2011", "left out that day"},
 		{"", "", "2026-03-02T09:30:00.1234567Z", "microsecond"},
 	} {
 		if got, err := readTime(t, c.dates, c.zone, c.text); err == nil || !strings.Contains(err.Error(), c.want) {

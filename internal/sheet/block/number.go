@@ -23,10 +23,13 @@ type Cell struct {
 	Row    int
 	Column string
 	Text   string
+	// Count marks a number of pieces, which has no decimal: a mark before three digits in it is likely to group them.
+	Count bool
 }
 
 // SettleDecimal finds the decimal of a block from all cells that are to be numbers, where the caller has not said it. A
-// cell that cannot be read either way is left to Number.
+// cell that cannot be read either way is left to Number, and no text beside a number settles anything. A count with three
+// digits after its one mark is refused, whatever the other numbers have.
 func (d *Dialect) SettleDecimal(cells []Cell) error {
 	if d.Decimal != 0 {
 		return nil
@@ -37,6 +40,9 @@ func (d *Dialect) SettleDecimal(cells []Cell) error {
 		at, mark := decimalMark(c.Text)
 		if mark == 0 {
 			continue
+		}
+		if c.Count && isGrouped(c.Text) {
+			return doubt(c, "a count has no decimal; write it without its mark, or say decimal=point or decimal=comma")
 		}
 		if d.doubtful(c.Text, mark) {
 			if doubtful[at] == nil {
@@ -52,6 +58,9 @@ func (d *Dialect) SettleDecimal(cells []Cell) error {
 }
 
 func decimalMark(text string) (at int, mark byte) {
+	if !looksNumeric(text) {
+		return 0, 0
+	}
 	point, comma := strings.Count(text, "."), strings.Count(text, ",")
 	switch {
 	case point == 1 && comma == 0:
@@ -62,9 +71,13 @@ func decimalMark(text string) (at int, mark byte) {
 	return 0, 0
 }
 
-// doubtful reports a number whose mark may separate thousands.
+// doubtful reports a number whose mark may separate thousands. Where commas separate cells, a point is the decimal.
 func (d *Dialect) doubtful(text string, mark byte) bool {
-	return (mark == ',' || d.Delimiter == Semicolon) && grouped.MatchString(strings.TrimSpace(strings.TrimLeft(strings.TrimSpace(text), "<>")))
+	return (mark == ',' || d.Delimiter != Comma) && isGrouped(text)
+}
+
+func isGrouped(text string) bool {
+	return grouped.MatchString(strings.TrimSpace(strings.TrimLeft(strings.TrimSpace(text), "<>")))
 }
 
 func (d *Dialect) settle(found, doubtful [2]*Cell) error {

@@ -14,8 +14,14 @@
 // # In
 //
 // A number cell gives the shortest decimal text of its value, with zeros after it where its format (0, 0.00 and the like)
-// shows more decimals; the workbook keeps no other trace of how a number was typed. A date cell gives its wall-clock time
-// without an offset. A formula gives the value it had when the workbook was saved. Hidden rows are read like others.
+// shows more decimals; the workbook keeps no other trace of how a number was typed. A format that shows another value than
+// the cell holds, such as 0.00% or "<"0.00, is refused; in a column of ids and names, so is every format but General and 0.
+// A date cell gives its wall-clock time without an offset. A formula gives the value it had when the workbook was saved.
+// TRUE and FALSE are texts, and errors are refused. Hidden rows are read like others.
+//
+// What a workbook unpacks to is bounded, and its sheet is walked through once before the library streams it: rows and cells
+// have to be in order, each once, and within the limits of a block. The library's calls for single cells are not used, since
+// they make the whole sheet at once, and every row up to its last column.
 package book
 
 import (
@@ -104,6 +110,9 @@ func (w *writer) table(t *grid.Table) error {
 	}
 	for n, row := range t.Rows {
 		for i, v := range row {
+			if v.Kind == grid.Number && strings.Contains(v.Text, ".") && usualUse(t.Columns[i]) == Text {
+				v.Kind = grid.Text // an id 10.50 has to come back as it is, which a number cell does not promise
+			}
 			if cells[i], err = w.cell(v); err != nil {
 				return err
 			}

@@ -81,7 +81,7 @@ func TestNumbersOfOtherPrograms(t *testing.T) {
 		if err := f.Write(&buf); err != nil {
 			t.Fatal(err)
 		}
-		want := []string{"9.95", "2026-03-02T09:30:00", "10.00", "3.00", "2026-03-02T00:00:00", "1"}
+		want := []string{"9.95", "2026-03-02T09:30:00", "10.00", "3.00", "2026-03-02T00:00:00", "TRUE"}
 		if from1904 { // 1,462 days later
 			want[1], want[4] = "2030-03-03T09:30:00", "2030-03-03T00:00:00"
 		}

@@ -99,15 +99,16 @@ func TestASheetThatClaimsToBeLongIsRefused(t *testing.T) {
 	all := parts(t, data)
 	header := `<row r="1"><c r="A1" t="inlineStr"><is><t>a</t></is></c></row>`
 	for want, rows := range map[string]string{
-		"more than 10000 rows":  header + `<row r="1048576"><c r="A1048576"><v>1</v></c></row>`,
-		"more than 200 columns": `<row r="1"><c r="XFD1" t="inlineStr"><is><t>a</t></is></c></row>`,
-		"no row 1":              ``,
+		"more than 10000 rows":         header + `<row r="1048576"><c r="A1048576"><v>1</v></c></row>`,
+		"more than 200 columns":        `<row r="1"><c r="XFD1" t="inlineStr"><is><t>a</t></is></c></row>`,
+		"row 2: more than 200 columns": header + `<row r="2"><c r="GS2"><v>1</v></c></row>`,
+		"no row 1":                     ``,
 	} {
 		if b, err := book.Read(assembled(t, all, sheetOf(rows)), book.Options{HeaderRow: 1}); err == nil || !strings.Contains(err.Error(), want) {
 			t.Errorf("got %v, %v, want an error that says %q", b, err, want)
 		}
 	}
-	beside := header + `<row r="2"><c r="A2"><v>1</v></c><c r="ZZ2"><v>2</v></c></row>`
+	beside := header + `<row r="2"><c r="A2"><v>1</v></c><c r="GR2"><v>2</v></c></row>`
 	if b, err := book.Read(assembled(t, all, sheetOf(beside)), book.Options{HeaderRow: 1}); err != nil || len(b.Rows) != 1 || b.Rows[0].Cells[0] != "1" {
 		t.Errorf("a cell beside the table: %v, %v", b, err)
 	}

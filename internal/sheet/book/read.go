@@ -3,7 +3,6 @@ package book
 import (
 	"bytes"
 	"fmt"
-	"regexp"
 	"strconv"
 	"strings"
 	"time"
@@ -11,11 +10,7 @@ import (
 	"github.com/xuri/excelize/v2"
 
 	"limitary/internal/sheet/block"
-	"limitary/internal/sheet/grid"
 )
-
-// unpackedBytesMax bounds a workbook once unpacked.
-const unpackedBytesMax = 64 << 20
 
 // Options say what to read.
 type Options struct {
@@ -25,6 +20,10 @@ type Options struct {
 	HeaderRow int
 	// RawDates gives date cells as the serial numbers they are.
 	RawDates bool
+	// Dates is what the caller says of serial numbers. One that contradicts the workbook is refused; empty says nothing.
+	Dates block.Dates
+	// Use tells what the column of a name is for; nil goes by the usual names, and takes other columns for Any.
+	Use func(name string) Use
 }
 
 // Looks reports whether data begin as a workbook does.
@@ -36,9 +35,15 @@ func Read(data []byte, o Options) (*block.Block, error) {
 	if len(data) > block.BytesMax {
 		return nil, &block.Error{Problem: fmt.Sprintf("the workbook has %d bytes, the limit is %d", len(data), block.BytesMax), Advice: "send the sheet alone, or in parts"}
 	}
+	if o.HeaderRow > headerRowMax {
+		return nil, &block.Error{Problem: fmt.Sprintf("header_row=%d: the limit is %d", o.HeaderRow, headerRowMax)}
+	}
+	if err := checkZip(data); err != nil {
+		return nil, err
+	}
 	f, err := excelize.OpenReader(bytes.NewReader(data), excelize.Options{UnzipSizeLimit: unpackedBytesMax, UnzipXMLSizeLimit: unpackedBytesMax})
 	if err != nil {
-		return nil, &block.Error{Problem: "the workbook cannot be read", Advice: "save it as .xlsx without a password"}
+		return nil, unreadable()
 	}
 	defer f.Close()
 	name, err := sheetName(f, o.Sheet)
@@ -50,6 +55,20 @@ func Read(data []byte, o Options) (*block.Block, error) {
 		return nil, &block.Error{Problem: "the workbook's properties cannot be read", Advice: "save it as .xlsx again"}
 	}
 	r := reader{file: f, sheet: name, options: o, from1904: props.Date1904 != nil && *props.Date1904, formats: map[int]format{}}
+	if err := o.checkDates(r.from1904); err != nil {
+		return nil, err
+	}
+	stringCount, err := sharedStrings(f)
+	if err != nil {
+		return nil, err
+	}
+	part, err := partOf(f, name)
+	if err != nil {
+		return nil, err
+	}
+	if r.marks, err = walkSheet(part, o.HeaderRow, stringCount); err != nil {
+		return nil, err
+	}
 	return r.block()
 }
 
@@ -76,12 +95,10 @@ type reader struct {
 	options  Options
 	from1904 bool
 	formats  map[int]format
-}
-
-// format is what a cell's number format tells: a date, or how many decimals are shown; -1 where it does not say.
-type format struct {
-	date   bool
-	places int
+	// marks are those of the cells that are still to come.
+	marks []mark
+	// uses are those of the columns, once the header is read.
+	uses []Use
 }
 
 func (r *reader) block() (*block.Block, error) {
@@ -112,6 +129,7 @@ func (r *reader) block() (*block.Block, error) {
 			if err := b.SetHeader(number, cells); err != nil {
 				return nil, err
 			}
+			r.uses = r.options.uses(b.Names)
 			continue
 		}
 		for len(cells) < len(b.Names) {
@@ -140,34 +158,15 @@ func (r *reader) cells(row int, raw []string) ([]string, error) {
 		if err != nil {
 			return nil, err
 		}
-		if out[i], err = r.text(cell, text); err != nil {
-			return nil, &block.Error{Row: row, Problem: fmt.Sprintf("cell %s: %v", cell, err)}
+		use := Other
+		if i < len(r.uses) {
+			use = r.uses[i]
+		}
+		if out[i], err = r.text(cell, text, r.mark(row, i+1), use); err != nil {
+			return nil, &block.Error{Row: row, Problem: err.Error()}
 		}
 	}
 	return out, nil
-}
-
-// text gives what a cell holds as text.
-func (r *reader) text(cell, raw string) (string, error) {
-	kind, err := r.file.GetCellType(r.sheet, cell)
-	if err != nil {
-		return "", err
-	}
-	if kind != excelize.CellTypeNumber && kind != excelize.CellTypeUnset && kind != excelize.CellTypeDate {
-		return block.Unguard(raw), nil
-	}
-	x, err := strconv.ParseFloat(raw, 64)
-	if err != nil {
-		return block.Unguard(raw), nil // a date as text, or a kind of cell that is not known
-	}
-	f, err := r.format(cell)
-	if err != nil {
-		return "", err
-	}
-	if f.date && !r.options.RawDates {
-		return r.wallClock(raw)
-	}
-	return padded(grid.Shortest(x), f.places), nil
 }
 
 // wallClock gives the time of a date cell, without an offset.
@@ -192,42 +191,15 @@ func padded(s string, places int) string {
 	return whole + "." + fraction + strings.Repeat("0", places-len(fraction))
 }
 
-var (
-	plainFormat = regexp.MustCompile(`^0(?:\.(0+))?$`)
-	notLetters  = regexp.MustCompile(`"[^"]*"|\\.|\[[^\]]*\]`)
-)
-
-func (r *reader) format(cell string) (format, error) {
-	id, err := r.file.GetCellStyle(r.sheet, cell)
-	if err != nil {
-		return format{}, err
-	}
+// format gives the number format of a style.
+func (r *reader) format(cell string, id int) (format, error) {
 	if f, known := r.formats[id]; known {
 		return f, nil
 	}
-	f := format{places: -1}
-	if style, err := r.file.GetStyle(id); err == nil && style != nil {
-		f = formatOf(style)
+	style, err := r.file.GetStyle(id)
+	if err != nil {
+		return format{}, fmt.Errorf("cell %s has a format that the workbook does not hold; save it as .xlsx again", cell)
 	}
-	r.formats[id] = f
-	return f, nil
-}
-
-// formatOf reads a number format. The numbers of built-in formats for dates and times are 14 to 22, 27 to 36, 45 to 47 and 50
-// to 58; 2 is 0.00 (ECMA-376 part 1, 18.8.30; from memory).
-func formatOf(style *excelize.Style) format {
-	n := style.NumFmt
-	switch {
-	case style.CustomNumFmt != nil:
-		code := *style.CustomNumFmt
-		if m := plainFormat.FindStringSubmatch(code); m != nil {
-			return format{places: len(m[1])}
-		}
-		return format{date: strings.ContainsAny(strings.ToLower(notLetters.ReplaceAllString(code, "")), "ydhs"), places: -1}
-	case n >= 14 && n <= 22, n >= 27 && n <= 36, n >= 45 && n <= 47, n >= 50 && n <= 58:
-		return format{date: true, places: -1}
-	case n == 2:
-		return format{places: 2}
-	}
-	return format{places: -1}
+	r.formats[id] = formatOf(style)
+	return r.formats[id], nil
 }
