@@ -114,21 +114,14 @@ func (b *basisData) inBasisOf(v definition.Content, i int) bool {
 
 // onScale gives a group with its readings on the judged scale. One with a reading that has no place there is left out.
 func onScale(g limits.Group, m *chart.Model) limits.Group {
-	if m == nil || m.Transform.Kind == chart.Identity && len(m.Levels) == 0 {
+	if m == nil || !m.Scaled() {
 		return g
 	}
-	level, placed := m.LevelOf(g.Material)
-	placed = placed || len(m.Levels) == 0
-	readings := make([]float64, len(g.Readings))
+	readings, placed := make([]float64, len(g.Readings)), true
 	for i, x := range g.Readings {
-		switch {
-		case len(m.Levels) == 0:
-			var ok bool
-			readings[i], ok = m.Transform.Apply(x)
-			placed = placed && ok
-		case placed:
-			readings[i] = level.Standardise(x)
-		}
+		var ok bool
+		readings[i], ok = m.OnScale(x, g.Material)
+		placed = placed && ok
 	}
 	g.Readings, g.Decimals = readings, limits.DecimalsUnknown
 	if !placed && !g.Excluded {

@@ -119,7 +119,7 @@ func (e *explainer) duplicateScale(t store.TraceVerdict, n int) string {
 // scaled reports whether readings are judged on another scale than they are measured on.
 func (e *explainer) scaled() bool {
 	m := e.judge.Limits().Model
-	return len(m.Levels) > 0 || m.Transform.Kind != chart.Identity
+	return m.Scaled()
 }
 
 // scaledStatistic tells how a statistic came from readings on another scale.

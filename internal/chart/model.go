@@ -177,6 +177,21 @@ func (m *Model) LevelOf(material string) (Level, bool) {
 	return Level{}, false
 }
 
+// Scaled reports whether readings are judged on another scale than the chart's unit.
+func (m *Model) Scaled() bool { return m.Transform.Kind != Identity || len(m.Levels) > 0 }
+
+// OnScale gives a reading of a material on the judged scale; ok is false where it has no place there.
+func (m *Model) OnScale(x float64, material string) (y float64, ok bool) {
+	if len(m.Levels) == 0 {
+		return m.Transform.Apply(x)
+	}
+	level, ok := m.LevelOf(material)
+	if !ok || !(level.Sigma > 0) {
+		return 0, false
+	}
+	return level.Standardise(x), true
+}
+
 // LevelsMax bounds the materials of one standardised track.
 const LevelsMax = 100
 

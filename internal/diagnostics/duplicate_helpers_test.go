@@ -26,9 +26,8 @@ type duplicateBasis struct {
 	spoil func(r *rand.Rand, sets [][]float64)
 }
 
-func pairsOnly(int) int          { return 2 }
-func twoToFive(i int) int        { return 2 + i%4 }
-func always(n int) func(int) int { return func(int) int { return n } }
+func pairsOnly(int) int   { return 2 }
+func twoToFive(i int) int { return 2 + i%4 }
 
 func constantly(sigma float64) func(float64) float64 {
 	return func(float64) float64 { return sigma }

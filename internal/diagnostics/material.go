@@ -63,35 +63,21 @@ func groupOf(req *limits.Request, source *limits.Group) (g group, ok bool) {
 	}
 	model := chart.Model{Transform: req.Transform, Levels: req.Levels}
 	g.readings, g.judged = source.Readings, source.Readings
-	plain := req.Transform.Kind == chart.Identity && len(req.Levels) == 0
-	if !plain {
+	if model.Scaled() {
 		g.judged = make([]float64, len(g.readings))
 	}
 	for i, x := range g.readings {
 		if !(math.Abs(x) <= limits.MagnitudeMax) {
 			return group{}, false
 		}
-		if plain {
+		if !model.Scaled() {
 			continue
 		}
-		if g.judged[i], ok = judgedValue(&model, source.Material, x); !ok {
+		if g.judged[i], ok = model.OnScale(x, source.Material); !ok || !(math.Abs(g.judged[i]) <= limits.MagnitudeMax) {
 			return group{}, false
 		}
 	}
 	return g, len(g.readings) > 0 && (req.Kind != chart.Individuals || len(g.readings) == 1)
-}
-
-// judgedValue transforms or standardises a reading as the chart judges it.
-func judgedValue(model *chart.Model, name string, x float64) (float64, bool) {
-	if len(model.Levels) > 0 {
-		level, ok := model.LevelOf(name)
-		if !ok || !(level.Sigma > 0) {
-			return 0, false
-		}
-		z := level.Standardise(x)
-		return z, math.Abs(z) <= limits.MagnitudeMax
-	}
-	return model.Transform.Apply(x)
 }
 
 func finite(x float64) bool { return !math.IsNaN(x) && !math.IsInf(x, 0) }

@@ -82,7 +82,7 @@ func New(l Limits) (*Judge, error) {
 	if err := l.checkModel(); err != nil {
 		return nil, err
 	}
-	j.straight = l.Model.Transform.Kind == chart.Identity && len(l.Model.Levels) == 0 && !l.Kind.Counts()
+	j.straight = !l.Model.Scaled() && !l.Kind.Counts()
 	for role, t := range l.Traces {
 		if t == nil {
 			continue

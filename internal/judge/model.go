@@ -40,6 +40,34 @@ func (j *Judge) checkCountTrace(t *Trace) *Error {
 	if t.Sigma != nil && !(math.Abs(*t.Sigma-sigma) <= sigmaSlack*sigma) {
 		return &Error{"sigma", fmt.Sprintf("%v: follows from the centre and is %v for samples of %v; leave it so", *t.Sigma, sigma, m.Inspected)}
 	}
+	return j.checkCountLines(t)
+}
+
+// checkCountLines refuses a line by its probability that does not lie where the exact count is. Where no count of the
+// published size is beyond it, the place says nothing.
+func (j *Judge) checkCountLines(t *Trace) *Error {
+	for _, n := range []struct {
+		field string
+		line  chart.Line
+		z     float64
+	}{
+		{"lower_action", t.LowerAction, -chart.ActionMultiple}, {"upper_action", t.UpperAction, chart.ActionMultiple},
+		{"lower_warning", t.LowerWarning, -chart.WarningMultiple}, {"upper_warning", t.UpperWarning, chart.WarningMultiple},
+	} {
+		if n.line.Basis != chart.TailProbability {
+			continue
+		}
+		if j.limits.Model.CountMethod != chart.Exact {
+			return &Error{n.field, "lies by its probability, which goes with exact lines of counts"}
+		}
+		at := limits.ExactCountLine(j.limits.Kind, *t.Centre, j.limits.Model.Inspected, n.z)
+		if math.IsInf(at, 0) {
+			continue
+		}
+		if at = decimal.Round(at, j.limits.Places); math.Abs(at-n.line.Value) > 1e-9*max(1, at) {
+			return &Error{n.field, fmt.Sprintf("value %v: the exact line lies at %v", n.line.Value, at)}
+		}
+	}
 	return nil
 }
 

@@ -10,6 +10,7 @@ import (
 	"limitary/internal/chart"
 	"limitary/internal/decimal"
 	"limitary/internal/judge"
+	"limitary/internal/limits"
 	"limitary/internal/rules"
 )
 
@@ -129,7 +130,12 @@ func TestExactCountsFollowTheirDefinition(t *testing.T) {
 	for _, mean := range []float64{0.2, 1, 4.5, 8.9, 30} {
 		l := judge.Limits{Kind: chart.C, SubgroupSize: 1, Places: 6, Model: chart.Model{CountMethod: chart.Exact, Inspected: 1}}
 		l.Traces[chart.Location] = trace(mean, math.Sqrt(mean), beyond(1, 1, 3), rules.Spec{Kind: rules.BeyondLine, Line: rules.WarningLine})
-		l.Traces[chart.Location].LowerWarning.Basis, l.Traces[chart.Location].UpperWarning.Basis = chart.TailProbability, chart.TailProbability
+		for z, line := range map[float64]*chart.Line{-2: &l.Traces[chart.Location].LowerWarning, 2: &l.Traces[chart.Location].UpperWarning} {
+			line.Basis, line.Value = chart.TailProbability, limits.ExactCountLine(chart.C, mean, 1, z)
+			if math.IsInf(line.Value, 0) {
+				line.Value = 0 // no count is beyond it
+			}
+		}
 		j := mustNew(t, l)
 		for x := 0.0; x < 100; x++ {
 			// P(X >= x) and P(X <= x), from the largest term of the tail on.
@@ -287,14 +293,21 @@ func TestDuplicatesWatchTheUpperSide(t *testing.T) {
 
 func TestModelsAreChecked(t *testing.T) {
 	for name, change := range map[string]func(l *judge.Limits){
-		"dispersion of counts":   func(l *judge.Limits) { l.Traces[chart.Dispersion] = trace(1, 1, beyond(1, 1, 3)) },
-		"no method":              func(l *judge.Limits) { l.Model.CountMethod = 0 },
-		"no size":                func(l *judge.Limits) { l.Model.Inspected = 0 },
-		"exact with inflation":   func(l *judge.Limits) { l.Model.Inflation = 1.2 },
-		"transformed counts":     func(l *judge.Limits) { l.Model.Transform.Kind = chart.Log },
-		"levels of counts":       func(l *judge.Limits) { l.Model.Levels = []chart.Level{{Material: "a", Reference: 1, Sigma: 1}} },
-		"spread of counts":       func(l *judge.Limits) { l.Model.Spread = &chart.Spread{} },
-		"a NaN between samples":  func(l *judge.Limits) { l.Model.BetweenSigma = math.NaN() },
+		"dispersion of counts":  func(l *judge.Limits) { l.Traces[chart.Dispersion] = trace(1, 1, beyond(1, 1, 3)) },
+		"no method":             func(l *judge.Limits) { l.Model.CountMethod = 0 },
+		"no size":               func(l *judge.Limits) { l.Model.Inspected = 0 },
+		"exact with inflation":  func(l *judge.Limits) { l.Model.Inflation = 1.2 },
+		"transformed counts":    func(l *judge.Limits) { l.Model.Transform.Kind = chart.Log },
+		"levels of counts":      func(l *judge.Limits) { l.Model.Levels = []chart.Level{{Material: "a", Reference: 1, Sigma: 1}} },
+		"spread of counts":      func(l *judge.Limits) { l.Model.Spread = &chart.Spread{} },
+		"a NaN between samples": func(l *judge.Limits) { l.Model.BetweenSigma = math.NaN() },
+		"an exact line elsewhere": func(l *judge.Limits) {
+			l.Traces[chart.Location].UpperAction = chart.Line{Basis: chart.TailProbability, Value: 0.9, Tail: 0.001}
+		},
+		"a probability with normal lines": func(l *judge.Limits) {
+			l.Model.CountMethod = chart.Normal
+			l.Traces[chart.Location].UpperAction = chart.Line{Basis: chart.TailProbability, Value: 0.11, Tail: 0.001}
+		},
 		"a size that is not one": func(l *judge.Limits) { l.SubgroupSize = 5 },
 	} {
 		l := kindsWithModels()["p exact"].limits

@@ -90,7 +90,7 @@ func (t *Text) totals(c *Computed) {
 		size += " to " + Shortest(s.largest)
 	}
 	t.Pairs(
-		Pair{thing, Shortest(s.total)}, Pair{looked, Shortest(s.inspected)}, Pair{looked + " a sample", size},
+		Pair{thing, Shortest(s.total)}, Pair{looked, Significant(s.inspected, certifiedDigits)}, Pair{looked + " a sample", size},
 		Pair{"least, greatest", Shortest(s.least) + ", " + Shortest(s.most)},
 	)
 }

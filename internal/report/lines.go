@@ -155,7 +155,7 @@ func (c *Computed) countedMean() string {
 	case chart.P:
 		return fmt.Sprintf("%s of %s items", Shortest(s.total), Shortest(s.inspected))
 	case chart.U:
-		return fmt.Sprintf("%s in %s inspection units", Shortest(s.total), Shortest(s.inspected))
+		return fmt.Sprintf("%s in %s inspection units", Shortest(s.total), Significant(s.inspected, certifiedDigits))
 	}
 	return fmt.Sprintf("%s in %s", Shortest(s.total), Count(s.samples, "sample"))
 }

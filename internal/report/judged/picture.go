@@ -104,15 +104,8 @@ func (p *Picture) keepInSight(pt *plot.Point, at rules.Scale) {
 func (p *Picture) unproven(row int) (at float64, missing bool) {
 	l := p.judge.Limits()
 	at = decimal.Mean(p.table.Figures(row), l.Places)
-	switch m := &l.Model; {
-	case len(m.Levels) > 0:
-		level, ok := m.LevelOf(p.table.Material(row))
-		return level.Standardise(at), !ok
-	case m.Transform.Kind != chart.Identity:
-		y, ok := m.Transform.Apply(at)
-		return y, !ok
-	}
-	return at, false
+	y, ok := l.Model.OnScale(at, p.table.Material(row))
+	return y, !ok
 }
 
 // Exclude marks rows that were left out of the estimate, beside those the table marks.
