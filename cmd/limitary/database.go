@@ -4,8 +4,6 @@ import (
 	"context"
 	"errors"
 	"fmt"
-	"os"
-	"path/filepath"
 
 	"limitary/internal/postgres"
 	"limitary/internal/store"
@@ -27,16 +25,10 @@ func (d *databaseFlags) add(f *flagSet) {
 	f.StringVar(&d.data, "data", "", "`DIR` of a private PostgreSQL, made if need be, where no URL is given (default: "+defaultDataDir(f.env)+")")
 }
 
-// defaultDataDir is where the private database lives. Root's is below /var/lib, because PostgreSQL runs as another
-// account then, which cannot enter root's home.
+// defaultDataDir is where the private database lives; empty where the environment leaves no place for it.
 func defaultDataDir(env *environment) string {
-	if os.Geteuid() == 0 {
-		return "/var/lib/limitary"
-	}
-	if state := env.Getenv("XDG_STATE_HOME"); filepath.IsAbs(state) {
-		return filepath.Join(state, "limitary")
-	}
-	return filepath.Join(env.Getenv("HOME"), ".local", "state", "limitary")
+	dir, _ := postgres.DefaultDir(env.Getenv) // open says what is wrong
+	return dir
 }
 
 // database is one that is there to be used until close.
@@ -63,7 +55,10 @@ func (d *databaseFlags) open(ctx context.Context, env *environment) (*database, 
 	}
 	dir := d.data
 	if dir == "" {
-		dir = defaultDataDir(env)
+		var err error
+		if dir, err = postgres.DefaultDir(env.Getenv); err != nil {
+			return nil, fmt.Errorf("%w with --data", err)
+		}
 	}
 	if at, running, err := postgres.Running(ctx, dir); err != nil {
 		return nil, err

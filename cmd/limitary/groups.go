@@ -4,7 +4,6 @@ import (
 	"errors"
 	"fmt"
 
-	pb "limitary/api/limitary/v1"
 	"limitary/internal/chart"
 	"limitary/internal/decimal"
 	"limitary/internal/diagnostics"
@@ -169,24 +168,4 @@ func (b *basisOf) used() (readings []float64) {
 		}
 	}
 	return readings
-}
-
-// message gives the basis as points of the contract.
-func (b *basisOf) message() (*pb.Points, []*pb.Exclusion) {
-	points := &pb.Points{Points: make([]*pb.Point, len(b.groups))}
-	var exclusions []*pb.Exclusion
-	for i, g := range b.groups {
-		p := &pb.Point{BreakBefore: g.BreakBefore, Material: g.Material}
-		switch {
-		case g.Count != nil:
-			p.Value = &pb.Point_Count{Count: &pb.Count{Nonconforming: g.Count.Nonconforming, Inspected: g.Count.Inspected}}
-		case len(g.Readings) > 0:
-			p.Value = &pb.Point_Readings{Readings: &pb.Readings{Values: g.Readings}}
-		}
-		points.Points[i] = p
-		if g.Excluded && p.Value != nil {
-			exclusions = append(exclusions, &pb.Exclusion{Point: int32(i), Reason: g.ExclusionReason})
-		}
-	}
-	return points, exclusions
 }

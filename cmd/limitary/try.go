@@ -69,7 +69,12 @@ func tryFlags(f *flagSet, env *environment) *serveFlags {
 	return s
 }
 
-func tryDataDir(env *environment) string { return defaultDataDir(env) + "-try" }
+func tryDataDir(env *environment) string {
+	if dir := defaultDataDir(env); dir != "" {
+		return dir + "-try"
+	}
+	return ""
+}
 
 // portsAreFree finds out before anything is started whether both addresses can be listened on.
 func portsAreFree(httpAddress, grpcAddress string) error {

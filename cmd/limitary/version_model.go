@@ -31,6 +31,17 @@ func showModel(out io.Writer, v *pb.Version) error {
 	return t.Flush()
 }
 
+// sigmaUnit is the unit of process sigma: that of the chart, but for relative ranges and other scales.
+func sigmaUnit(v *pb.Version) string {
+	switch m := modelOf(v.Model); {
+	case v.Kind == pb.ChartKind_CHART_KIND_RELATIVE_RANGE:
+		return "% of the mean"
+	case m.Scaled():
+		return "on the scale that is judged"
+	}
+	return v.Unit
+}
+
 // modelOf reads a model of the contract.
 func modelOf(in *pb.Model) chart.Model {
 	var m chart.Model

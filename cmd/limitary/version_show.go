@@ -45,7 +45,7 @@ func showVersion(env *environment, v *pb.Version) int {
 	}
 	row("rests on", "%s%s", restsOnText(v), provisional)
 	if v.ProcessSigma > 0 {
-		row("process sigma", "%s %s", decimals(v.ProcessSigma, v.PublishedDecimals), v.Unit)
+		row("process sigma", "%s %s", decimals(v.ProcessSigma, v.PublishedDecimals), sigmaUnit(v))
 	}
 	row("digest", "%s", v.Digest)
 	row("judge number", "%d", v.Judge)

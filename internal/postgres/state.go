@@ -28,7 +28,7 @@ const (
 
 // DefaultDir is the state directory where none is given: under /var/lib for root, whose
 // home is usually closed to the account that PostgreSQL runs as, else the user's own.
-func DefaultDir() (string, error) { return defaultDir(os.Geteuid(), os.Getenv) }
+func DefaultDir(getenv func(string) string) (string, error) { return defaultDir(os.Geteuid(), getenv) }
 
 func defaultDir(uid int, getenv func(string) string) (string, error) {
 	if uid == 0 {

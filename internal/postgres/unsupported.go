@@ -32,7 +32,7 @@ func Running(context.Context, string) (url func(database, user string) string, o
 }
 
 // DefaultDir always fails here.
-func DefaultDir() (string, error) { return "", errUnsupported }
+func DefaultDir(func(string) string) (string, error) { return "", errUnsupported }
 
 // URL is never reached.
 func (*Cluster) URL(string, string) string { return "" }
