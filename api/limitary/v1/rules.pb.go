@@ -1083,7 +1083,8 @@ func (x *RuleSpec_Ewma) GetAsymptotic() bool {
 	return false
 }
 
-// Tabular cumulative sum: reference value k, decision interval h, head start, all in sigmas.
+// Tabular cumulative sum: reference value k, decision interval h, head start, all in sigmas. A sum begins at its head start
+// where a version begins and after a mark that restarts it, hence in EvaluateBatch only where a stored track is continued.
 type RuleSpec_Cusum struct {
 	state         protoimpl.MessageState `protogen:"open.v1"`
 	K             float64                `protobuf:"fixed64,1,opt,name=k,proto3" json:"k,omitempty"`
